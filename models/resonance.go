@@ -1,7 +1,9 @@
 package models
 
 import (
+	"fmt"
 	"math"
+	"math/cmplx"
 	"slices"
 )
 
@@ -21,87 +23,158 @@ const (
 // For a lossy parallel circuit this is neither 1/(2π√(LC)) nor the frequency
 // of the largest |Z| exactly.
 type Resonance struct {
-	Freq      float64 // Hz
-	Kind      ResonanceKind
-	Impedance float64 // real part of Z there, Ω
+	Freq float64 // Hz
+	Kind ResonanceKind
+	// Impedance is Z there, in Ω, which is real. For a parallel circuit
+	// without any loss, where Z has a pole, it is |Z| as near to the pole as a
+	// float64 comes.
+	Impedance float64
 }
 
 // pointsPerDecade of the grid on which sign changes of the reactance are
-// looked for, beside the frequencies at which elements can resonate.
-const pointsPerDecade = 60
+// looked for, beside the frequencies at which elements can resonate. An
+// interval is halved, at most maxHalvings times, while Z turns or changes by
+// more than steepestTurn in it.
+const (
+	pointsPerDecade = 60
+	steepestTurn    = 0.3
+	maxHalvings     = 48
+)
 
 // Resonances returns all zeros of Im Z between two frequencies in Hz, in
 // rising order, each refined until the bracket is two neighbouring float64.
+// It panics unless 0 < from < to < ∞.
 //
 // Sign changes are looked for on a logarithmic grid to which the resonance
 // frequencies of all pairs of L and C are added, alone and with the other
-// elements of their kind in series and in parallel; between two grid points
-// the search goes on where the phase turns fast. A resonance narrower than
-// the grid can therefore not hide between its points: it is always near the
-// resonance of some inductance with some capacitance.
+// elements of their kind in series and in parallel. An interval is halved
+// while its ends differ much in phase or, by their derivative ∂ln Z/∂ln f,
+// would differ much. The derivative is what finds a crystal: the phase is next
+// to zero, with the same sign, at its series and at its parallel resonance,
+// and all that happens lies between.
 func (c *Circuit) Resonances(values []float64, from, to float64) []Resonance {
-	e := c.NewEvaluator([]float64{from})
-	var buffer [1]complex128
-	at := func(f float64) complex128 {
-		e.SetFrequencies([]float64{f})
-		e.Impedance(buffer[:], values)
-		return buffer[0]
+	if !(from > 0 && from < to) || math.IsInf(to, 1) {
+		panic(fmt.Sprintf("models: resonances between %v Hz and %v Hz: the range is not positive, finite and rising", from, to))
 	}
-	type point struct {
-		f float64
-		z complex128
-	}
+	probe := newProbe(c, values)
 	var found []Resonance
-	bisect := func(a, b point) {
-		sign := math.Signbit(imag(a.z))
-		for {
-			mid := math.Sqrt(a.f) * math.Sqrt(b.f)
-			if !(mid > a.f && mid < b.f) {
-				mid = a.f + (b.f-a.f)/2
-			}
-			if !(mid > a.f && mid < b.f) {
-				break
-			}
-			m := point{mid, at(mid)}
-			if math.Signbit(imag(m.z)) == sign {
-				a = m
-			} else {
-				b = m
-			}
-		}
-		kind := ParallelResonance
-		if sign { // negative below: rising
-			kind = SeriesResonance
-		}
-		root := a
-		if math.Abs(imag(b.z)) < math.Abs(imag(a.z)) {
-			root = b
-		}
-		found = append(found, Resonance{Freq: root.f, Kind: kind, Impedance: real(root.z)})
-	}
-	var search func(a, b point, depth int)
-	search = func(a, b point, depth int) {
-		if turn := math.Abs(phaseBetween(a.z, b.z)); turn > 0.3 && depth > 0 {
-			mid := math.Sqrt(a.f) * math.Sqrt(b.f)
-			if mid > a.f && mid < b.f {
-				m := point{mid, at(mid)}
-				search(a, m, depth-1)
-				search(m, b, depth-1)
+	var search func(a, b point, halvings int)
+	search = func(a, b point, halvings int) {
+		// Negated, so that the NaN of ∂Z/Z at Z = 0 is steep.
+		if !(turn(a, b) <= steepestTurn) && halvings > 0 {
+			if mid, ok := between(a.f, b.f); ok {
+				m := probe.at(mid)
+				search(a, m, halvings-1)
+				search(m, b, halvings-1)
 				return
 			}
 		}
 		if math.Signbit(imag(a.z)) != math.Signbit(imag(b.z)) {
-			bisect(a, b)
+			found = append(found, probe.refine(a, b))
 		}
 	}
 	grid := c.resonanceGrid(values, from, to)
-	last := point{grid[0], at(grid[0])}
+	last := probe.at(grid[0])
 	for _, f := range grid[1:] {
-		next := point{f, at(f)}
-		search(last, next, 12)
+		next := probe.at(f)
+		search(last, next, maxHalvings)
 		last = next
 	}
 	return found
+}
+
+// point is the impedance at a frequency, and |∂ln Z/∂ln f|.
+type point struct {
+	f     float64
+	z     complex128
+	slope float64
+}
+
+// probe evaluates a circuit at one frequency after the other.
+type probe struct {
+	evaluator *Evaluator
+	values    []float64
+	z         []complex128
+	columns   [][]complex128
+	row       []complex128
+}
+
+func newProbe(c *Circuit, values []float64) *probe {
+	n := len(c.parameters)
+	p := &probe{
+		evaluator: c.NewEvaluator([]float64{1}),
+		values:    values,
+		z:         make([]complex128, 1),
+		columns:   make([][]complex128, n),
+		row:       make([]complex128, n),
+	}
+	for i := range p.columns {
+		p.columns[i] = make([]complex128, 1)
+	}
+	return p
+}
+
+func (p *probe) impedance(f float64) complex128 {
+	p.evaluator.SetFrequencies([]float64{f})
+	p.evaluator.Impedance(p.z, p.values)
+	return p.z[0]
+}
+
+func (p *probe) at(f float64) point {
+	p.evaluator.SetFrequencies([]float64{f})
+	p.evaluator.Jacobian(p.z, p.columns, p.values)
+	for i, column := range p.columns {
+		p.row[i] = column[0]
+	}
+	dz := p.evaluator.circuit.FrequencyDerivative(p.row, p.values)
+	return point{f, p.z[0], cmplx.Abs(dz) / cmplx.Abs(p.z[0])}
+}
+
+// refine narrows a sign change of Im Z to two neighbouring float64.
+func (p *probe) refine(a, b point) Resonance {
+	rising := math.Signbit(imag(a.z))
+	for {
+		mid, ok := between(a.f, b.f)
+		if !ok {
+			break
+		}
+		m := point{f: mid, z: p.impedance(mid)}
+		if math.Signbit(imag(m.z)) == rising {
+			a = m
+		} else {
+			b = m
+		}
+	}
+	root := a
+	if math.Abs(imag(b.z)) < math.Abs(imag(a.z)) {
+		root = b
+	}
+	if rising {
+		return Resonance{root.f, SeriesResonance, real(root.z)}
+	}
+	r := real(root.z)
+	if math.Abs(imag(root.z)) > math.Abs(r) {
+		// A pole on the axis, to within the rounding of f: Re Z is no more
+		// than what loss is left beside it, while |Z| peaks.
+		r = cmplx.Abs(root.z)
+	}
+	return Resonance{root.f, ParallelResonance, r}
+}
+
+// between returns a frequency between two others, their geometric mean as far
+// as rounding allows, and false if they are neighbours.
+func between(a, b float64) (float64, bool) {
+	mid := math.Sqrt(a) * math.Sqrt(b)
+	if !(mid > a && mid < b) {
+		mid = a + (b-a)/2
+	}
+	return mid, mid > a && mid < b
+}
+
+// turn returns by how much Z turns between two points, in radians, or would
+// turn or change by the slope at either of them.
+func turn(a, b point) float64 {
+	return max(math.Abs(phaseBetween(a.z, b.z)), max(a.slope, b.slope)*math.Log(b.f/a.f))
 }
 
 func phaseBetween(a, b complex128) float64 {

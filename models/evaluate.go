@@ -105,12 +105,14 @@ func (e *Evaluator) SetFrequencies(freq []float64) {
 		*e = *e.circuit.NewEvaluator(freq)
 		return
 	}
-	e.freq = append(e.freq[:0], freq...)
-	e.omega, e.logOmega, e.rootOmega = e.omega[:0], e.logOmega[:0], e.rootOmega[:0]
 	for _, f := range freq {
 		if !(f > 0) || math.IsInf(f, 1) {
 			panic(fmt.Sprintf("models: frequency %v Hz is not positive and finite", f))
 		}
+	}
+	e.freq = append(e.freq[:0], freq...)
+	e.omega, e.logOmega, e.rootOmega = e.omega[:0], e.logOmega[:0], e.rootOmega[:0]
+	for _, f := range e.freq {
 		omega := 2 * math.Pi * f
 		e.omega = append(e.omega, omega)
 		if e.needsLog {
@@ -149,6 +151,11 @@ func (e *Evaluator) Jacobian(dst []complex128, derivatives [][]complex128, value
 	e.check(dst, values)
 	if len(derivatives) != len(values) {
 		panic(fmt.Sprintf("models: %d derivative columns for %d parameters", len(derivatives), len(values)))
+	}
+	for k, column := range derivatives {
+		if column != nil && len(column) != len(e.omega) {
+			panic(fmt.Sprintf("models: %d derivatives by %s for %d frequencies", len(column), e.circuit.parameters[k].Name, len(e.omega)))
+		}
 	}
 	for from := 0; from < len(e.omega); from += blockSize {
 		to := min(from+blockSize, len(e.omega))
@@ -321,10 +328,16 @@ func product(dst []complex128, from int, a, b []complex128, sign float64) {
 	}
 }
 
+// beyondAnyPart stands for 1/0: more than any impedance or admittance within
+// [MinValue] and [MaxValue] (up to 1e82 for the impedance of a lossy
+// capacitor, 1e52 for an admittance), and so little that its square times
+// that of an admittance, as [Evaluator.Jacobian] forms, is a float64.
+const beyondAnyPart = 1e90
+
 // reciprocal returns 1/z. Go's complex division takes care of infinities at
 // the cost of a call; here only magnitudes whose square leaves the range of
-// a float64 need care, and 1/0 becomes a finite number beyond any part, so
-// that an ideal parallel resonance stays computable.
+// a float64 need care, and 1/0 becomes beyondAnyPart, so that an ideal
+// parallel resonance stays computable.
 func reciprocal(z complex128) complex128 {
 	re, im := real(z), imag(z)
 	if d := re*re + im*im; d > 1e-290 && d < 1e290 {
@@ -333,7 +346,7 @@ func reciprocal(z complex128) complex128 {
 	}
 	s := max(math.Abs(re), math.Abs(im))
 	if s == 0 {
-		return 1e150
+		return beyondAnyPart
 	}
 	re /= s
 	im /= s

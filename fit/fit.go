@@ -1,0 +1,449 @@
+package fit
+
+import (
+	"errors"
+	"fmt"
+	"math"
+	"slices"
+	"strings"
+
+	"gonum.org/v1/gonum/mat"
+
+	"realpart/fit/lm"
+	"realpart/fit/residual"
+	"realpart/models"
+)
+
+// Interval is a closed range of values.
+type Interval struct{ Low, High float64 }
+
+// Settings steer a fit. The zero value, and a nil pointer, mean the defaults.
+type Settings struct {
+	// Weight says what is minimised; "" means [Relative].
+	Weight Weight
+	// Accuracy is the meter's stated accuracy. It is needed by the weight
+	// [Accuracy] and gives the meter's part of the uncertainty; nil: none
+	// was stated.
+	Accuracy MeterAccuracy
+	// Reference in Ω and Connection tell how S-parameters were measured;
+	// needed by the weight [SParameter]. S holds the measured values; nil:
+	// they are computed from the impedance.
+	Reference  float64
+	Connection Connection
+	S          []complex128
+	// Fixed holds parameters that are not fitted, by name.
+	Fixed map[string]float64
+	// Start holds starting values by name; those of other parameters are
+	// found from the sweep.
+	Start map[string]float64
+	// Bounds holds the ranges that parameters are kept in, by name.
+	Bounds map[string]Interval
+	// Robust fits with a soft-L1 loss whose scale is the noise, so that
+	// single wild points lose their pull.
+	Robust bool
+	// Seed of the search for starting values. Two fits with the same input
+	// and the same seed agree to the bit.
+	Seed uint64
+}
+
+// Parameter is one fitted value with its uncertainty.
+type Parameter struct {
+	models.Parameter
+	Value float64
+	Fixed bool
+	// StdError is the standard uncertainty from the scatter of the points,
+	// in the unit of the value; NaN where the sweep does not determine it.
+	StdError float64
+	// MeterError is the standard uncertainty from the meter's stated
+	// accuracy; NaN where none was stated.
+	MeterError float64
+	// Low95 and High95 bound the 95 % interval from both; NaN on an open
+	// side.
+	Low95, High95 float64
+	// Determined is false where the sweep does not tell the value.
+	Determined bool
+	// AtBound tells that the value ended at a bound the user gave, or where
+	// its element has vanished from the sweep.
+	AtBound bool
+}
+
+// Result is a fitted circuit.
+type Result struct {
+	Circuit *models.Circuit
+	Weight  Weight
+	Robust  bool
+	// Parameters are in the order of the circuit's expression.
+	Parameters []Parameter
+	// Free holds the indices of the parameters that were fitted.
+	Free []int
+	// Covariance is that of the unknowns x (ln p, logit n) of the free
+	// parameters from scatter alone, MeterCovariance that from the meter;
+	// the latter is nil where no accuracy was stated. Rows and columns of
+	// parameters that are not determined are zero.
+	Covariance, MeterCovariance *mat.SymDense
+	// Correlation is that of the free parameters from scatter.
+	Correlation *mat.SymDense
+	// DegreesOfFreedom is 2·points − free parameters.
+	DegreesOfFreedom int
+	// Sigma is the standard deviation s of the weighted residuals:
+	// s² = Σr²/DegreesOfFreedom.
+	Sigma float64
+	// Cost is ½Σr² of the weighted residuals (of the loss, for Robust).
+	Cost float64
+
+	Freq     []float64
+	Measured []complex128
+	Model    []complex128
+	// Residuals are ρ = ln(Z_model/Z_measured), whatever the weight.
+	Residuals []complex128
+	// RMSRelative is √(mean |ρ|²), MaxRelative the largest |ρ|, at MaxAtHz.
+	RMSRelative, MaxRelative, MaxAtHz float64
+	// Lag1 is the lag-1 correlation of the residuals over frequency, the
+	// mean of those of real and imaginary part.
+	Lag1 float64
+	// Structured tells that the residuals are more alike from point to
+	// point than chance explains: the circuit does not describe the part
+	// to the accuracy of the points.
+	Structured bool
+
+	Status lm.Status
+	// Reason says why the solver stopped, with the value and the threshold.
+	Reason      string
+	Iterations  int
+	Evaluations int // of the model on the whole sweep
+
+	problem *problem
+	x       []float64
+}
+
+// Values returns the fitted values in the order of the circuit.
+func (r *Result) Values() []float64 {
+	v := make([]float64, len(r.Parameters))
+	for i, p := range r.Parameters {
+		v[i] = p.Value
+	}
+	return v
+}
+
+// InputError is a fault of what a fit was asked for.
+type InputError struct {
+	Flag     string // the command-line flag that carries the fault, such as "--fix"; "" for the sweep
+	Found    string
+	Expected string
+	Hint     string
+}
+
+// Error gives one line.
+func (e *InputError) Error() string {
+	s := fmt.Sprintf("expected %s, found %s", e.Expected, e.Found)
+	if e.Flag != "" {
+		s = e.Flag + ": " + s
+	}
+	if e.Hint != "" {
+		s += "; " + e.Hint
+	}
+	return s
+}
+
+// Fit fits a circuit to an impedance sweep: frequencies in Hz, positive and
+// rising, and impedances in Ω, finite and not zero. It minimises Σ|r|² of the
+// weighted residual over the unknowns ln p (logit n for an exponent) and gives
+// each value with its uncertainty.
+//
+// The error is an [*InputError] for wishes that can't be met: an unknown
+// parameter, fewer data than unknowns. A fit that did not converge comes back
+// with a [lm.Status] that says so. Neither slice is changed. It panics if the
+// slices differ in length.
+func Fit(freq []float64, z []complex128, c *models.Circuit, settings *Settings) (*Result, error) {
+	if len(freq) != len(z) {
+		panic(fmt.Sprintf("fit: %d frequencies for %d impedances", len(freq), len(z)))
+	}
+	var s Settings
+	if settings != nil {
+		s = *settings
+	}
+	if s.Weight == "" {
+		s.Weight = Relative
+	}
+	if err := s.check(freq, c); err != nil {
+		return nil, err
+	}
+	pts, err := s.points(freq, z)
+	if err != nil {
+		return nil, err
+	}
+	p := newProblem(c, pts, s.Weight, &s)
+	if len(p.free) == 0 {
+		return evaluate(p, &s, nil, &lm.Result{Status: lm.GradientConvergence, Reason: "all parameters are fixed"}), nil
+	}
+	x, err := p.search(&s)
+	if err != nil {
+		return nil, err
+	}
+	lower, upper := p.bounds(&s)
+	solution, err := p.polish(x, lower, upper, s.Robust)
+	if err != nil {
+		return nil, err
+	}
+	return evaluate(p, &s, solution.X, solution), nil
+}
+
+// check finds faults of the settings before anything is computed.
+func (s *Settings) check(freq []float64, c *models.Circuit) error {
+	names := func() string {
+		var names []string
+		for _, p := range c.Parameters() {
+			names = append(names, p.Name)
+		}
+		return strings.Join(names, ", ")
+	}
+	value := func(flag, name string, v float64) error {
+		i, ok := c.Index(name)
+		if !ok {
+			return &InputError{Flag: flag, Found: fmt.Sprintf("%q", name),
+				Expected: "a parameter of the circuit " + c.String() + " (" + names() + ")"}
+		}
+		if err := c.Parameters()[i].CheckValue(v); err != nil {
+			return &InputError{Flag: flag, Found: fmt.Sprintf("%s=%v", name, v), Expected: "a possible value", Hint: err.Error()}
+		}
+		return nil
+	}
+	// Sorted, so that of two faults the same one is told each time.
+	for _, name := range sortedKeys(s.Fixed) {
+		if err := value("--fix", name, s.Fixed[name]); err != nil {
+			return err
+		}
+	}
+	for _, name := range sortedKeys(s.Start) {
+		if err := value("--start", name, s.Start[name]); err != nil {
+			return err
+		}
+	}
+	for _, name := range sortedKeys(s.Bounds) {
+		b := s.Bounds[name]
+		if err := errors.Join(value("--bounds", name, b.Low)); err != nil {
+			return err
+		}
+		if err := value("--bounds", name, b.High); err != nil {
+			return err
+		}
+		if !(b.Low <= b.High) {
+			return &InputError{Flag: "--bounds", Found: fmt.Sprintf("%s=%v..%v", name, b.Low, b.High), Expected: "LOW..HIGH with LOW not above HIGH"}
+		}
+		for _, other := range []struct {
+			flag   string
+			values map[string]float64
+		}{{"--fix", s.Fixed}, {"--start", s.Start}} {
+			if v, ok := other.values[name]; ok && !(v >= b.Low && v <= b.High) {
+				return &InputError{Flag: other.flag, Found: fmt.Sprintf("%s=%v", name, v),
+					Expected: fmt.Sprintf("a value inside --bounds %s=%v..%v", name, b.Low, b.High)}
+			}
+		}
+	}
+	free := len(c.Parameters()) - len(s.Fixed)
+	if 2*len(freq) < free || len(freq) == 0 {
+		return &InputError{Found: fmt.Sprintf("%d points", len(freq)),
+			Expected: fmt.Sprintf("at least %d for the %d unknowns of %s", max(1, (free+1)/2), free, c),
+			Hint:     "widen --from/--to, fix a parameter with --fix or choose a simpler circuit"}
+	}
+	for i := 1; i < len(freq); i++ {
+		if !(freq[i] > freq[i-1]) {
+			return &InputError{Found: fmt.Sprintf("%v Hz after %v Hz", freq[i], freq[i-1]), Expected: "rising frequencies"}
+		}
+	}
+	if s.Weight == SParameter && !(s.Reference > 0) {
+		return &InputError{Flag: "--weight", Found: "s-parameter", Expected: "relative, uniform or accuracy for a sweep that was not measured as S-parameters"}
+	}
+	if s.Weight == Accuracy && s.Accuracy == nil {
+		return &InputError{Flag: "--weight", Found: "accuracy without --accuracy", Expected: "the meter's stated accuracy", Hint: "add --accuracy 0.1%,0.05deg with your meter's numbers"}
+	}
+	return nil
+}
+
+func sortedKeys[V any](m map[string]V) []string {
+	keys := make([]string, 0, len(m))
+	for k := range m {
+		keys = append(keys, k)
+	}
+	slices.Sort(keys)
+	return keys
+}
+
+// points prepares a sweep for the problem.
+func (s *Settings) points(freq []float64, z []complex128) (points, error) {
+	pts := points{freq: freq, measured: z, inverse: make([]complex128, len(z))}
+	for i, v := range z {
+		a := abs(v)
+		if !(a > 0) || math.IsInf(a, 1) {
+			return pts, &InputError{Found: fmt.Sprintf("Z = %v at %v Hz", v, freq[i]), Expected: "a finite impedance that is not zero"}
+		}
+		pts.inverse[i] = 1 / v
+	}
+	if s.Weight == SParameter {
+		pts.s = s.S
+		if pts.s == nil {
+			for _, v := range z {
+				m, _ := s.Connection.sParameter(v, s.Reference)
+				pts.s = append(pts.s, m)
+			}
+		}
+		if len(pts.s) != len(z) {
+			panic(fmt.Sprintf("fit: %d S-parameters for %d impedances", len(pts.s), len(z)))
+		}
+	}
+	if s.Accuracy != nil {
+		pts.magnitude, pts.phase = make([]float64, len(z)), make([]float64, len(z))
+		for i, v := range z {
+			m, ph, ok := s.Accuracy(freq[i], abs(v))
+			if !ok || !(m > 0) || !(ph > 0) {
+				return pts, &InputError{Flag: "--accuracy", Found: fmt.Sprintf("none for %v Hz and %.4g Ω", freq[i], abs(v)),
+					Expected: "a positive accuracy at every point of the sweep", Hint: "extend the table, or cut the sweep with --from and --to"}
+			}
+			pts.magnitude[i], pts.phase[i] = m, ph
+		}
+	}
+	return pts, nil
+}
+
+// bounds returns the box of the problem, narrowed to the user's bounds, and
+// widened to the user's starting values.
+func (p *problem) bounds(s *Settings) (lower, upper []float64) {
+	lower, upper = p.box()
+	for k, i := range p.free {
+		parameter := p.parameters[i]
+		if b, ok := s.Bounds[parameter.Name]; ok {
+			lower[k], upper[k] = parameter.Scale.Unknown(b.Low), parameter.Scale.Unknown(b.High)
+		} else if v, ok := s.Start[parameter.Name]; ok {
+			x := parameter.Scale.Unknown(v)
+			lower[k], upper[k] = min(lower[k], x), max(upper[k], x)
+		}
+	}
+	return lower, upper
+}
+
+// The solver's settings: unknowns are logarithms, so that they share a scale,
+// and a step changes no value by more than a factor e².
+const (
+	maxStep         = 2
+	searchPoints    = 32
+	searchSteps     = 60
+	polishSteps     = 300
+	searchTolerance = 1e-6
+)
+
+// search finds starting values on a thinned sweep with the relative residual,
+// whose basin is the widest: the user's where given, else the best of a
+// seeded sequence of draws, each improved by the solver.
+func (p *problem) search(s *Settings) ([]float64, error) {
+	f := newFeatures(p.points, searchPoints)
+	thinned := newProblem(p.circuit, f.points, Relative, s)
+	lower, upper := p.bounds(s)
+	copy(thinned.values, p.values)
+	for name, v := range s.Fixed {
+		i, _ := p.circuit.Index(name)
+		p.values[i], thinned.values[i] = v, v
+	}
+	noise := pointNoise(p.freq, p.measured)
+	goal := 1.5 * 1.5 * noise * noise * float64(len(f.freq)) // of the cost ½Σr²: 2·points residuals of variance noise²
+	sampler := newSampler(f, s.Seed)
+	values := make([]float64, len(p.values))
+	given := 0
+	for _, i := range p.free {
+		if _, ok := s.Start[p.parameters[i].Name]; ok {
+			given++
+		}
+	}
+	settings := lm.Settings{UnitScaling: true, MaxStep: maxStep, MaxIterations: searchSteps,
+		GradientTolerance: searchTolerance, StepTolerance: searchTolerance, CostTolerance: searchTolerance,
+		Lower: lower, Upper: upper, Workspace: new(lm.Workspace)}
+	const kept = 3
+	var best []candidate
+	var failure error
+	repeats := 0
+	draws := draws(len(p.free) - given)
+	for draw := range draws {
+		sampler.draw(p.circuit, values)
+		x := make([]float64, len(p.free))
+		for k, i := range p.free {
+			v := values[i]
+			if given, ok := s.Start[p.parameters[i].Name]; ok {
+				v = given
+			}
+			x[k] = p.parameters[i].Scale.Unknown(v)
+			if math.IsNaN(x[k]) {
+				x[k] = (lower[k] + upper[k]) / 2
+			}
+		}
+		clamp(x, lower, upper)
+		if 2*len(f.freq) < len(x) {
+			return x, nil
+		}
+		r, err := lm.Solve(thinned.lm(), x, &settings)
+		if err != nil {
+			failure = err
+			continue
+		}
+		if len(best) > 0 && math.Abs(r.Cost-best[0].cost) <= 1e-3*best[0].cost {
+			repeats++
+		} else if len(best) == 0 || r.Cost < best[0].cost {
+			repeats = 0
+		}
+		best = keep(best, candidate{x: r.X, cost: r.Cost}, kept)
+		if best[0].cost <= goal || repeats >= 4 && draw >= draws/3 {
+			break
+		}
+	}
+	if len(best) == 0 {
+		return nil, fmt.Errorf("no starting values found: %w", failure)
+	}
+	return best[0].x, nil
+}
+
+// draws returns how many sets of starting values are tried at most.
+func draws(unknowns int) int {
+	if unknowns <= 0 {
+		return 1
+	}
+	return 8 * unknowns
+}
+
+// pointNoise estimates the relative standard deviation of real and imaginary
+// part of ln Z from third differences over neighbouring points, which a
+// smooth sweep does not contribute to.
+func pointNoise(freq []float64, z []complex128) float64 {
+	if len(z) < 8 {
+		return 0
+	}
+	var d []float64
+	for i := 3; i < len(z); i++ {
+		a, b := logRatio(z[i] / z[i-1] * (z[i-2] / z[i-1]) / (z[i-1] / z[i-2] * (z[i-3] / z[i-2])))
+		d = append(d, a/math.Sqrt(20), b/math.Sqrt(20)) // 1 + 9 + 9 + 1
+	}
+	return residual.MAD(d)
+}
+
+// polish minimises over the whole sweep: first the relative residual, whose
+// basin is wide, then the one asked for.
+func (p *problem) polish(x, lower, upper []float64, robust bool) (*lm.Result, error) {
+	settings := lm.Settings{UnitScaling: true, MaxStep: maxStep, MaxIterations: polishSteps,
+		Lower: lower, Upper: upper, Workspace: new(lm.Workspace)}
+	wanted := p.weight
+	p.weight = Relative
+	r, err := lm.Solve(p.lm(), x, &settings)
+	p.weight = wanted
+	if err != nil {
+		return nil, err
+	}
+	if wanted != Relative {
+		if r, err = lm.Solve(p.lm(), r.X, &settings); err != nil {
+			return nil, err
+		}
+	}
+	if robust {
+		p.scale = residual.MAD(r.Residuals)
+		if p.scale > 0 {
+			return lm.Solve(p.lm(), r.X, &settings)
+		}
+	}
+	return r, nil
+}

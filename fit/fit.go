@@ -176,14 +176,18 @@ func Fit(freq []float64, z []complex128, c *models.Circuit, settings *Settings) 
 	if len(p.free) == 0 {
 		return evaluate(p, &s, nil, &lm.Result{Status: lm.GradientConvergence, Reason: "all parameters are fixed"}), nil
 	}
-	x, err := p.search(&s)
+	solution, err := p.solve(&s)
 	if err != nil {
 		return nil, err
 	}
-	lower, upper := p.bounds(&s)
-	solution, err := p.polish(x, lower, upper, s.Robust)
-	if err != nil {
-		return nil, err
+	p.set(solution.X)
+	if order(c, p.values, &s) {
+		// Once more from the reordered values, which is a solution: the
+		// Jacobian's columns change places with it.
+		lower, upper := p.bounds(&s)
+		if solution, err = p.polish(p.unknowns(), lower, upper, s.Robust); err != nil {
+			return nil, err
+		}
 	}
 	return evaluate(p, &s, solution.X, solution), nil
 }
@@ -331,42 +335,96 @@ const (
 	searchTolerance = 1e-6
 )
 
-// search finds starting values on a thinned sweep with the relative residual,
-// whose basin is the widest: the user's where given, else the best of a
-// seeded sequence of draws, each improved by the solver.
-func (p *problem) search(s *Settings) ([]float64, error) {
-	f := newFeatures(p.points, searchPoints)
-	thinned := newProblem(p.circuit, f.points, Relative, s)
-	lower, upper := p.bounds(s)
-	copy(thinned.values, p.values)
+// solve finds the best solution it can. The search for starting values stops
+// at once where the sweep is described to its noise. Where it isn't, because
+// the circuit is not the part's or a minimum is not the lowest, the search
+// goes through all its draws, and its best minima are compared on the whole
+// sweep.
+func (p *problem) solve(s *Settings) (*lm.Result, error) {
 	for name, v := range s.Fixed {
 		i, _ := p.circuit.Index(name)
-		p.values[i], thinned.values[i] = v, v
+		p.values[i] = v
 	}
+	lower, upper := p.bounds(s)
+	search := p.newSearch(s, lower, upper)
 	noise := pointNoise(p.freq, p.measured)
-	goal := 1.5 * 1.5 * noise * noise * float64(len(f.freq)) // of the cost ½Σr²: 2·points residuals of variance noise²
-	sampler := newSampler(f, s.Seed)
-	values := make([]float64, len(p.values))
-	given := 0
-	for _, i := range p.free {
-		if _, ok := s.Start[p.parameters[i].Name]; ok {
-			given++
+	// ½Σr² is about noise² per point, give or take a relative 1/√points.
+	goal := func(n int) float64 {
+		return noise * noise * float64(n) * (1 + 5/math.Sqrt(float64(n)))
+	}
+	search.run(goal(len(search.thinned.freq)))
+	if len(search.best) == 0 {
+		return nil, fmt.Errorf("no starting values found: %w", search.failure)
+	}
+	best, err := p.polish(search.best[0].x, lower, upper, s.Robust)
+	if err != nil {
+		return nil, err
+	}
+	if p.weight == Relative && best.Cost <= goal(len(p.freq)) && best.Status.Converged() {
+		return best, nil
+	}
+	search.run(0)
+	for _, c := range search.best {
+		r, err := p.polish(c.x, lower, upper, s.Robust)
+		if err == nil && r.Cost < best.Cost {
+			best = r
 		}
 	}
-	settings := lm.Settings{UnitScaling: true, MaxStep: maxStep, MaxIterations: searchSteps,
-		GradientTolerance: searchTolerance, StepTolerance: searchTolerance, CostTolerance: searchTolerance,
-		Lower: lower, Upper: upper, Workspace: new(lm.Workspace)}
-	const kept = 3
-	var best []candidate
-	var failure error
-	repeats := 0
-	draws := draws(len(p.free) - given)
-	for draw := range draws {
-		sampler.draw(p.circuit, values)
+	return best, nil
+}
+
+// search is a search for starting values on a thinned sweep with the relative
+// residual, whose basin is the widest: the user's values where given, else a
+// seeded sequence of draws, each improved by the solver.
+type search struct {
+	whole, thinned *problem
+	settings       *Settings
+	sampler        *sampler
+	solver         lm.Settings
+	values         []float64
+	draw, draws    int
+	repeats        int
+	best           []candidate
+	failure        error
+}
+
+// kept is how many minima of the search are remembered.
+const kept = 4
+
+func (p *problem) newSearch(s *Settings, lower, upper []float64) *search {
+	f := newFeatures(p.points, searchPoints)
+	q := &search{
+		whole: p, thinned: newProblem(p.circuit, f.points, Relative, s), settings: s, sampler: newSampler(f, s.Seed),
+		values: make([]float64, len(p.values)),
+		solver: lm.Settings{UnitScaling: true, MaxStep: maxStep, MaxIterations: searchSteps,
+			GradientTolerance: searchTolerance, StepTolerance: searchTolerance, CostTolerance: searchTolerance,
+			Lower: lower, Upper: upper, Workspace: new(lm.Workspace)},
+	}
+	copy(q.thinned.values, p.values)
+	unknowns := len(p.free)
+	for _, i := range p.free {
+		if _, ok := s.Start[p.parameters[i].Name]; ok {
+			unknowns--
+		}
+	}
+	q.draws = draws(unknowns)
+	return q
+}
+
+// run draws until the cost reaches the goal, the draws are used up, or the
+// same minimum has come back so often that there is hardly a lower one.
+func (q *search) run(goal float64) {
+	p := q.whole
+	lower, upper := q.solver.Lower, q.solver.Upper
+	for ; q.draw < q.draws; q.draw++ {
+		if len(q.best) > 0 && (q.best[0].cost <= goal || q.repeats >= 5 && q.draw >= q.draws/2) {
+			return
+		}
+		q.sampler.draw(p.circuit, q.values)
 		x := make([]float64, len(p.free))
 		for k, i := range p.free {
-			v := values[i]
-			if given, ok := s.Start[p.parameters[i].Name]; ok {
+			v := q.values[i]
+			if given, ok := q.settings.Start[p.parameters[i].Name]; ok {
 				v = given
 			}
 			x[k] = p.parameters[i].Scale.Unknown(v)
@@ -375,28 +433,22 @@ func (p *problem) search(s *Settings) ([]float64, error) {
 			}
 		}
 		clamp(x, lower, upper)
-		if 2*len(f.freq) < len(x) {
-			return x, nil
+		if 2*len(q.thinned.freq) < len(x) {
+			q.best = []candidate{{x: x}}
+			return
 		}
-		r, err := lm.Solve(thinned.lm(), x, &settings)
+		r, err := lm.Solve(q.thinned.lm(), x, &q.solver)
 		if err != nil {
-			failure = err
+			q.failure = err
 			continue
 		}
-		if len(best) > 0 && math.Abs(r.Cost-best[0].cost) <= 1e-3*best[0].cost {
-			repeats++
-		} else if len(best) == 0 || r.Cost < best[0].cost {
-			repeats = 0
+		if len(q.best) > 0 && math.Abs(r.Cost-q.best[0].cost) <= 1e-3*q.best[0].cost {
+			q.repeats++
+		} else if len(q.best) == 0 || r.Cost < q.best[0].cost {
+			q.repeats = 0
 		}
-		best = keep(best, candidate{x: r.X, cost: r.Cost}, kept)
-		if best[0].cost <= goal || repeats >= 4 && draw >= draws/3 {
-			break
-		}
+		q.best = keep(q.best, candidate{x: r.X, cost: r.Cost}, kept)
 	}
-	if len(best) == 0 {
-		return nil, fmt.Errorf("no starting values found: %w", failure)
-	}
-	return best[0].x, nil
 }
 
 // draws returns how many sets of starting values are tried at most.
@@ -404,7 +456,7 @@ func draws(unknowns int) int {
 	if unknowns <= 0 {
 		return 1
 	}
-	return 8 * unknowns
+	return 4 * unknowns * (1 + unknowns/2)
 }
 
 // pointNoise estimates the relative standard deviation of real and imaginary

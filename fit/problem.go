@@ -87,6 +87,15 @@ func (p *problem) set(x []float64) {
 	}
 }
 
+// unknowns returns the unknowns of the free parameters' present values.
+func (p *problem) unknowns() []float64 {
+	x := make([]float64, len(p.free))
+	for k, i := range p.free {
+		x[k] = p.parameters[i].Scale.Unknown(p.values[i])
+	}
+	return x
+}
+
 func (p *problem) residual(dst, x []float64) {
 	p.set(x)
 	p.evaluator.Impedance(p.z, p.values)

@@ -1,0 +1,115 @@
+package report
+
+import (
+	"math"
+	"strconv"
+	"strings"
+
+	"realpart/models"
+	"realpart/models/quantity"
+)
+
+// valueText gives a value and its interval, rounded to the place of the
+// second significant digit of the interval's half-width (GUM 7.2.6), with one
+// prefix: "9.873 µF" and "9.851 … 9.895". Without an interval the value has
+// four digits and the second text is empty.
+func valueText(value float64, low, high *float64, unit string) (string, string) {
+	if low == nil || high == nil || !(*low < *high) {
+		return quantity.Format(value, unit, 4), ""
+	}
+	text := quantity.FormatInterval(value, *low, *high, unit)
+	number, interval, _ := strings.Cut(text, " (")
+	return number, strings.TrimSuffix(interval, ")")
+}
+
+// widest is the ratio of the ends of an interval above which a figure is
+// given by its interval alone, as a parameter is (design: not determined).
+const widest = 4
+
+// figureText gives a figure like [valueText]; one whose interval spans more
+// than a factor of widest is "not determined".
+func figureText(v Figure) (string, string) {
+	positive := v.Name == models.ESR || v.Name == models.D || v.Name == models.Q || v.Name == models.Zabs
+	if positive && v.Value > 0 {
+		switch {
+		case v.Low95 == nil && v.High95 == nil:
+		case v.Low95 == nil, v.High95 == nil, *v.High95 > widest**v.Low95:
+			return "not determined", boundText(v.Low95, v.High95, v.Unit)
+		}
+	}
+	return valueText(v.Value, v.Low95, v.High95, v.Unit)
+}
+
+// boundText says what is known of a parameter that is not determined: "< 0.3
+// nH", "> 12 MΩ", "1.1 … 9.2 nH", or "" for nothing. Bounds are rounded
+// outwards to two digits.
+func boundText(low, high *float64, unit string) string {
+	switch {
+	case low != nil && high != nil:
+		return quantity.Format(outward(*low, false), unit, 2) + " … " + quantity.Format(outward(*high, true), unit, 2)
+	case high != nil:
+		return "< " + quantity.Format(outward(*high, true), unit, 2)
+	case low != nil:
+		return "> " + quantity.Format(outward(*low, false), unit, 2)
+	}
+	return ""
+}
+
+// outward rounds to two significant digits, up or down.
+func outward(v float64, up bool) float64 {
+	nearest, _ := strconv.ParseFloat(strconv.FormatFloat(v, 'e', 1, 64), 64)
+	if nearest == v || nearest > v == up {
+		return nearest
+	}
+	text := strconv.FormatFloat(v, 'e', 1, 64)
+	exponent, _ := strconv.Atoi(text[strings.IndexByte(text, 'e')+1:])
+	step := math.Pow10(exponent - 1)
+	if !up {
+		step = -step
+	}
+	return nearest + step
+}
+
+// relativeText gives the half-width of an interval relative to its value:
+// "± 0.22 %". A percentage below a thousandth is not worth digits.
+func relativeText(value float64, low, high *float64) string {
+	if low == nil || high == nil || value == 0 {
+		return ""
+	}
+	half := max(*high-value, value-*low) / math.Abs(value)
+	if !(half > 0) {
+		return ""
+	}
+	return "± " + percent(half)
+}
+
+// percent gives a fraction with two significant digits in percent, or as a
+// power of ten where it is very small.
+func percent(v float64) string {
+	switch {
+	case v == 0:
+		return "0 %"
+	case v < 1e-6:
+		return strconv.FormatFloat(v, 'e', 1, 64)
+	}
+	return quantity.Format(100*v, "%", 2)
+}
+
+// frequency gives a frequency with the digits it needs, four at most.
+func frequency(f float64) string {
+	for digits := 1; digits < 4; digits++ {
+		rounded, _ := strconv.ParseFloat(strconv.FormatFloat(f, 'e', digits-1, 64), 64)
+		if math.Abs(rounded-f) <= 1e-12*f {
+			return quantity.Format(f, "Hz", max(digits, integerDigits(f)))
+		}
+	}
+	return quantity.Format(f, "Hz", 4)
+}
+
+// integerDigits is how many digits stand before the point once the SI prefix
+// is chosen: 3 for 100 kHz.
+func integerDigits(f float64) int {
+	text := strconv.FormatFloat(f, 'e', 2, 64)
+	exponent, _ := strconv.Atoi(text[strings.IndexByte(text, 'e')+1:])
+	return ((exponent%3)+3)%3 + 1
+}

@@ -1,6 +1,12 @@
 package fit
 
 import (
+	"errors"
+	"fmt"
+	"math"
+	"slices"
+	"strings"
+
 	"realpart/models"
 )
 
@@ -18,20 +24,240 @@ type Candidate struct {
 	Circuit *models.Circuit
 	Result  *Result // nil if the fit was not possible
 	// AICc is Akaike's information criterion with the correction for small
-	// samples; smaller is better.
+	// samples (Hurvich and Tsai 1989); smaller is better. NaN without a
+	// result.
+	//
+	//	AICc = n·ln(Σr²/n) + 2k + 2k(k+1)/(n−k−1),  n = 2·points, k = free + 1
 	AICc float64
 	// Chosen marks the one candidate that the analysis goes on with; Reason
 	// says why, or why not.
 	Chosen bool
 	Reason string
+	// sound tells that the fit converged with every parameter determined.
+	sound bool
 }
 
 // Analysis is what is said of one sweep: the kind of part, the circuit
 // chosen, its fit, and the candidates that were not chosen.
 type Analysis struct {
 	Kind       models.Kind
+	KindReason string // "" where the user or the circuit said the kind
 	Name       string // of the circuit in the library; "" for a user's own
 	Result     *Result
 	Candidates []Candidate
 	Warnings   []Warning
+}
+
+// Request says how to analyse a sweep.
+type Request struct {
+	// Kind of part; "" lets the sweep tell.
+	Kind models.Kind
+	// Circuit to fit, and its name if it is one of the library; nil lets
+	// the sweep choose among the circuits of the kind.
+	Circuit *models.Circuit
+	Name    string
+	// Settings of each fit; nil means the defaults.
+	Settings *Settings
+	// Profile replaces the intervals of all parameters by those of the
+	// profile likelihood.
+	Profile bool
+}
+
+// Analyse tells the kind of part, chooses the circuit, fits it and says what
+// the sweep cannot tell. freq in Hz, z in Ω, as in [Fit].
+func Analyse(freq []float64, z []complex128, request Request) (*Analysis, error) {
+	settings := request.Settings
+	if settings == nil {
+		settings = &Settings{}
+	}
+	if len(freq) == 0 {
+		return nil, &InputError{Found: "no points", Expected: "a sweep", Hint: "widen --from and --to"}
+	}
+	a := &Analysis{Kind: request.Kind, Name: request.Name}
+	if m, ok := models.Lookup(request.Name); ok && a.Kind == "" && m.Kind != models.AnyPart {
+		a.Kind = m.Kind
+	}
+	if a.Kind == "" {
+		a.Kind, a.KindReason = TellKind(freq, z)
+	}
+	var tried []models.Model
+	if request.Circuit != nil {
+		tried = []models.Model{{Name: request.Name, Circuit: request.Circuit}}
+	} else {
+		tried = models.OfKind(a.Kind)
+	}
+	if err := a.fitAll(freq, z, tried, settings); err != nil {
+		return nil, err
+	}
+	chosen := a.choose(settings, request.Circuit != nil)
+	a.Name, a.Result = a.Candidates[chosen].Name, a.Candidates[chosen].Result
+	if err := a.Result.bound(); err != nil {
+		return nil, err
+	}
+	if request.Profile {
+		if err := a.Result.ProfileIntervals(); err != nil {
+			return nil, err
+		}
+	}
+	a.warn(freq, z, settings)
+	a.Warnings = sortedWarnings(a.Warnings)
+	return a, nil
+}
+
+// fitAll fits the circuits. It fails only if none could be fitted.
+func (a *Analysis) fitAll(freq []float64, z []complex128, tried []models.Model, settings *Settings) error {
+	var first error
+	for _, m := range tried {
+		c := Candidate{Name: m.Name, Circuit: m.Circuit, AICc: math.NaN()}
+		r, err := Fit(freq, z, m.Circuit, settings)
+		switch {
+		case err != nil:
+			var input *InputError
+			if !errors.As(err, &input) {
+				return err
+			}
+			if first == nil {
+				first = err
+			}
+			c.Reason = "not fitted: " + err.Error()
+		default:
+			c.Result = r
+			c.AICc = r.AICc()
+			c.Reason, c.sound = r.soundness()
+		}
+		a.Candidates = append(a.Candidates, c)
+	}
+	if !slices.ContainsFunc(a.Candidates, func(c Candidate) bool { return c.Result != nil }) {
+		return first
+	}
+	return nil
+}
+
+// roundingFloor is the relative rms below which residuals are the rounding of
+// the numbers in a file, and no reason to prefer one circuit to another.
+const roundingFloor = 1e-8
+
+// AICc returns Akaike's information criterion, see [Candidate].
+func (r *Result) AICc() float64 {
+	n := float64(2 * len(r.Freq))
+	k := float64(len(r.Free) + 1)
+	variance := 2 * r.Cost / n
+	if r.Weight == Relative {
+		variance = max(variance, roundingFloor*roundingFloor)
+	}
+	correction := math.Inf(1)
+	if n-k-1 > 0 {
+		correction = 2 * k * (k + 1) / (n - k - 1)
+	}
+	return n*math.Log(variance) + 2*k + correction
+}
+
+// soundness reports whether every parameter is determined, and if not, why
+// not.
+func (r *Result) soundness() (string, bool) {
+	if !r.Status.Converged() {
+		return fmt.Sprintf("did not converge (%s)", r.Reason), false
+	}
+	r.testElements()
+	for _, p := range r.Parameters {
+		if p.Determined {
+			continue
+		}
+		return p.Name + " is not determined: " + p.Why, false
+	}
+	return "", true
+}
+
+// similarAICc is the difference of the criterion below which two circuits
+// explain a sweep equally well, so that the simpler is preferred (Burnham and
+// Anderson 2002, Model Selection and Multimodel Inference, 2.6).
+const similarAICc = 2
+
+// choose marks one candidate and gives the others their reasons.
+func (a *Analysis) choose(s *Settings, byUser bool) int {
+	if byUser {
+		a.Candidates[0].Chosen = true
+		if a.Candidates[0].sound {
+			a.Candidates[0].Reason = "asked for"
+		} else {
+			a.Candidates[0].Reason = "asked for; " + a.Candidates[0].Reason
+		}
+		return 0
+	}
+	best := a.least(func(c *Candidate) bool { return c.sound })
+	none := best < 0
+	if none {
+		best = a.least(func(c *Candidate) bool { return c.Result != nil && c.Result.Status.Converged() })
+	}
+	if best < 0 {
+		best = a.least(func(c *Candidate) bool { return c.Result != nil })
+	}
+	why := "smallest AICc of the circuits with every parameter determined"
+	if none {
+		why = "smallest AICc, though " + a.Candidates[best].Reason
+		a.Warnings = append(a.Warnings, Warning{"no-candidate-determined",
+			"No circuit of this kind has all its parameters determined by this sweep; the best by AICc is given. Widen the sweep, or name the circuit with --circuit."})
+	} else {
+		least := a.Candidates[best]
+		for i, c := range a.Candidates { // simplest first
+			if c.sound && len(c.Result.Free) < len(a.Candidates[best].Result.Free) && c.AICc <= least.AICc+similarAICc {
+				best = i
+				why = fmt.Sprintf("as good as %s (AICc within %d) and simpler", least.Name, similarAICc)
+			}
+		}
+		for i, c := range a.Candidates {
+			if c.sound && len(c.Result.Free) < len(a.Candidates[best].Result.Free) && c.Result.insideAccuracy() {
+				why = fmt.Sprintf("the simplest whose residual is inside the meter's stated accuracy; what %s would add is not the part's for certain", a.Candidates[best].Name)
+				best = i
+				break
+			}
+		}
+	}
+	for i := range a.Candidates {
+		c := &a.Candidates[i]
+		switch {
+		case i == best:
+			c.Chosen, c.Reason = true, why
+		case c.sound:
+			c.Reason = fmt.Sprintf("AICc %+.1f against %s", c.AICc-a.Candidates[best].AICc, a.Candidates[best].Name)
+		}
+	}
+	return best
+}
+
+// least returns the eligible candidate with the smallest AICc, the first of
+// equals, −1 if there is none.
+func (a *Analysis) least(eligible func(*Candidate) bool) int {
+	best := -1
+	for i := range a.Candidates {
+		c := &a.Candidates[i]
+		if eligible(c) && (best < 0 || c.AICc < a.Candidates[best].AICc) {
+			best = i
+		}
+	}
+	return best
+}
+
+// insideAccuracy reports whether the rms residuals of magnitude and of phase
+// are both inside the stated accuracy; false where none was stated.
+func (r *Result) insideAccuracy() bool {
+	p := r.problem
+	if p.magnitude == nil {
+		return false
+	}
+	var m, ph float64
+	for i, rho := range r.Residuals {
+		m += math.Pow(real(rho)/p.magnitude[i], 2)
+		ph += math.Pow(imag(rho)/p.phase[i], 2)
+	}
+	n := float64(len(r.Residuals))
+	return m <= n && ph <= n
+}
+
+// listed joins names in a sentence.
+func listed(names []string) string {
+	if len(names) < 2 {
+		return strings.Join(names, "")
+	}
+	return strings.Join(names[:len(names)-1], ", ") + " and " + names[len(names)-1]
 }

@@ -60,8 +60,10 @@ type Parameter struct {
 	// Low95 and High95 bound the 95 % interval from both; NaN on an open
 	// side.
 	Low95, High95 float64
-	// Determined is false where the sweep does not tell the value.
+	// Determined is false where the sweep does not tell the value; Why then
+	// says why.
 	Determined bool
+	Why        string
 	// AtBound tells that the value ended at a bound the user gave, or where
 	// its element has vanished from the sweep.
 	AtBound bool

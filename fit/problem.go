@@ -15,6 +15,7 @@ import (
 type problem struct {
 	circuit    *models.Circuit
 	parameters []models.Parameter
+	settings   *Settings
 	evaluator  *models.Evaluator
 	points
 	weight     Weight
@@ -58,7 +59,7 @@ func (p *points) pick(index []int) points {
 
 func newProblem(c *models.Circuit, pts points, weight Weight, s *Settings) *problem {
 	p := &problem{
-		circuit: c, parameters: c.Parameters(), points: pts, weight: weight,
+		circuit: c, parameters: c.Parameters(), settings: s, points: pts, weight: weight,
 		reference: s.Reference, connection: s.Connection,
 		evaluator: c.NewEvaluator(pts.freq),
 		values:    make([]float64, len(c.Parameters())),

@@ -2,7 +2,9 @@ package fit
 
 import (
 	"errors"
+	"fmt"
 	"math"
+	"slices"
 
 	"gonum.org/v1/gonum/mat"
 	"gonum.org/v1/gonum/stat/distuv"
@@ -117,11 +119,17 @@ func (r *Result) uncertainty(solution *lm.Result) {
 	for c, i := range p.free {
 		if r.Parameters[i].AtBound {
 			r.Parameters[i].Determined = false
+			r.Parameters[i].Why = "it ran off to where its element has vanished, or to a bound that was given"
 			continue
 		}
 		determined = append(determined, c)
 	}
-	covariance, determined := regularCovariance(solution.Jacobian, determined, 1)
+	covariance, determined, vague := regularCovariance(solution.Jacobian, determined, 1)
+	for _, c := range vague {
+		q := &r.Parameters[p.free[c]]
+		q.Determined = false
+		q.Why = "the sweep cannot tell it from other parameters"
+	}
 	response := r.meterResponse(solution.Jacobian, covariance, determined)
 	if response != nil {
 		r.MeterCovariance = mat.NewSymDense(k, nil)
@@ -141,9 +149,12 @@ func (r *Result) uncertainty(solution *lm.Result) {
 	for c, i := range p.free {
 		q := &r.Parameters[i]
 		if !inside[c] {
-			q.Determined = false
 			q.StdError, q.Low95, q.High95 = math.NaN(), math.NaN(), math.NaN()
 			r.Correlation.SetSym(c, c, 1)
+			continue
+		}
+		if !q.Determined {
+			q.StdError, q.Low95, q.High95 = math.NaN(), math.NaN(), math.NaN()
 			continue
 		}
 		scatter := r.Covariance.At(c, c)
@@ -158,10 +169,16 @@ func (r *Result) uncertainty(solution *lm.Result) {
 		if q.Scale == models.LogitScale {
 			u *= slope
 			q.Low95, q.High95 = math.Max(q.Value-u, 0), math.Min(q.Value+u, 1)
-			q.Determined = q.High95-q.Low95 <= determinedExponent
+			if !(q.High95-q.Low95 <= determinedExponent) {
+				q.Determined = false
+				q.Why = fmt.Sprintf("its 95 %% interval spans %.2g", q.High95-q.Low95)
+			}
 		} else {
 			q.Low95, q.High95 = q.Value*math.Exp(-u), q.Value*math.Exp(u)
-			q.Determined = 2*u <= math.Log(determinedFactor)
+			if !(2*u <= math.Log(determinedFactor)) {
+				q.Determined = false
+				q.Why = fmt.Sprintf("its 95 %% interval spans a factor of %.3g", math.Exp(2*u))
+			}
 		}
 	}
 }
@@ -196,9 +213,10 @@ func studentQuantile(p, nu float64) float64 {
 }
 
 // regularCovariance returns the covariance of the given columns of a
-// Jacobian, and the columns left after those that cannot be told apart were
-// taken away.
-func regularCovariance(j *mat.Dense, columns []int, variance float64) (*mat.SymDense, []int) {
+// Jacobian. Of columns that cannot be told apart, all are vague, and one
+// after the other is taken away until the rest can: what the rest then says
+// of the impedance, which is their sum in effect, stays right.
+func regularCovariance(j *mat.Dense, columns []int, variance float64) (covariance *mat.SymDense, rest, vague []int) {
 	for len(columns) > 0 {
 		rows, _ := j.Dims()
 		part := mat.NewDense(rows, len(columns), nil)
@@ -209,25 +227,19 @@ func regularCovariance(j *mat.Dense, columns []int, variance float64) (*mat.SymD
 		}
 		covariance, err := lm.Covariance(part, variance)
 		if err == nil {
-			return covariance, columns
+			return covariance, columns, vague
 		}
 		var singular *lm.SingularError
 		if !errors.As(err, &singular) || len(singular.Columns) == 0 {
-			return nil, nil
+			return nil, nil, append(vague, columns...)
 		}
-		drop := make(map[int]bool)
 		for _, k := range singular.Columns {
-			drop[k] = true
+			vague = append(vague, columns[k])
 		}
-		var rest []int
-		for k, c := range columns {
-			if !drop[k] {
-				rest = append(rest, c)
-			}
-		}
-		columns = rest
+		last := singular.Columns[len(singular.Columns)-1]
+		columns = slices.Delete(slices.Clone(columns), last, last+1)
 	}
-	return nil, nil
+	return nil, nil, vague
 }
 
 // meterResponse returns the change of the unknowns of the determined columns

@@ -16,6 +16,8 @@ const (
 	// and not the customary 0.5, because growing and shrinking must not cancel: in a narrow curved valley the radius would swing
 	// between two values and every second step would be refused. It saves a sixth of the evaluations on the NIST problems.
 	growth, leastShrink, mostShrink = 2, 0.4, 0.1
+	// Residuals are computed with a few roundings more than that of x.
+	evaluation = 10
 	// A step that the bounds reduce to nothing is tried with this many ever smaller radii.
 	maxBarren = 100
 )
@@ -279,8 +281,13 @@ func (s *state) advance() {
 			actual += (r - s.trialR[i]) * (r + s.trialR[i])
 		}
 		actual /= 2
-		// Where rounding hides the decrease, the ratio tends to 1 and the prediction is trusted (Conn, Gould and Toint, Trust-Region Methods, 2000, section 17.4.2).
-		noise := epsilon*s.cost + s.rounding*math.Sqrt(2*s.cost)
+		// Where rounding hides the decrease, the ratio tends to 1 and the prediction is trusted (Conn, Gould and Toint,
+		// Trust-Region Methods, 2000, section 17.4.2). Note: only for a full step, the last ones of a good solve. With a
+		// wrong Jacobian the radius shrinks until all steps are lost in rounding, and those must not be taken for success.
+		var noise float64
+		if full {
+			noise = evaluation * (epsilon*s.cost + s.rounding*math.Sqrt(2*s.cost))
+		}
 		ratio := (actual + noise) / (predicted + noise)
 		s.resize(ratio, actual)
 		if !(ratio >= acceptable) {

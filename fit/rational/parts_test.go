@@ -20,10 +20,14 @@ func par(zs ...complex128) complex128 {
 	return 1 / y
 }
 
-func resistor(r float64) impedance    { return func(float64) complex128 { return re(r) } }
-func inductance(l float64) impedance  { return func(f float64) complex128 { return jw(f) * re(l) } }
-func capacitance(c float64) impedance { return func(f float64) complex128 { return 1 / (jw(f) * re(c)) } }
-func skin(k float64) impedance        { return func(f float64) complex128 { return re(k) * cmplx.Sqrt(jw(f)) } }
+func resistor(r float64) impedance   { return func(float64) complex128 { return re(r) } }
+func inductance(l float64) impedance { return func(f float64) complex128 { return jw(f) * re(l) } }
+func capacitance(c float64) impedance {
+	return func(f float64) complex128 { return 1 / (jw(f) * re(c)) }
+}
+func skin(k float64) impedance {
+	return func(f float64) complex128 { return re(k) * cmplx.Sqrt(jw(f)) }
+}
 func cpe(q, n float64) impedance {
 	return func(f float64) complex128 { return 1 / (re(q) * cmplx.Pow(jw(f), re(n))) }
 }
@@ -169,3 +173,39 @@ func noisy(z []complex128, sigma float64, src *rand.Rand) []complex128 {
 }
 
 func seeded(seed int) *rand.Rand { return rand.New(rand.NewPCG(uint64(seed), 20)) }
+
+// A drifting part has one element that its maker multiplies by scale.
+var drifting = []struct {
+	name string
+	make func(src *rand.Rand, scale float64) impedance
+}{
+	{"resistor, R", func(s *rand.Rand, k float64) impedance {
+		return parallel(series(resistor(k*draw(s, 10, 1e4)), inductance(draw(s, 1e-9, 1e-8))), capacitance(draw(s, 1e-13, 1e-12)))
+	}},
+	{"capacitor, ESR", func(s *rand.Rand, k float64) impedance {
+		return series(resistor(k*draw(s, 0.1, 1)), inductance(draw(s, 5e-9, 3e-8)), capacitance(draw(s, 1e-5, 1e-3)))
+	}},
+	{"film capacitor, C", func(s *rand.Rand, k float64) impedance {
+		return series(resistor(draw(s, 1e-2, 0.1)), inductance(draw(s, 5e-9, 3e-8)), capacitance(k*draw(s, 1e-9, 1e-8)))
+	}},
+	{"ceramic, loss and C", func(s *rand.Rand, k float64) impedance {
+		return series(inductance(draw(s, 1e-9, 3e-9)), lossy(k*draw(s, 1e-10, 1e-9), draw(s, 1e-3, 0.05)))
+	}},
+	{"choke, L", func(s *rand.Rand, k float64) impedance {
+		return series(resistor(draw(s, 1e-2, 1)), parallel(inductance(k*draw(s, 1e-5, 1e-4)), capacitance(draw(s, 5e-12, 2e-11)), resistor(draw(s, 1e4, 1e5))))
+	}},
+	{"choke, core loss", func(s *rand.Rand, k float64) impedance {
+		return series(resistor(draw(s, 1e-2, 1)), parallel(inductance(draw(s, 1e-4, 1e-3)), capacitance(draw(s, 5e-12, 5e-11)), resistor(k*draw(s, 1e3, 1e4))))
+	}},
+}
+
+// drifted samples a part whose element grows by size along a raised cosine over the last third of the sweep.
+func drifted(make_ func(*rand.Rand, float64) impedance, seed uint64, f []float64, size float64) []complex128 {
+	z := make([]complex128, len(f))
+	for i := range f {
+		u := max(0, 3*float64(i)/float64(len(f)-1)-2)
+		p := make_(rand.New(rand.NewPCG(seed, 3)), 1+size*(1-math.Cos(math.Pi*u))/2)
+		z[i] = p(f[i])
+	}
+	return z
+}

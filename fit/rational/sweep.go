@@ -8,11 +8,11 @@ import (
 
 // sweep is the data in normalised frequency x = ω/w0.
 type sweep struct {
-	x      []float64
-	z      []complex128
-	w0     float64
-	band   band
-	free   ends
+	x    []float64
+	z    []complex128
+	w0   float64
+	band band
+	free ends
 }
 
 // ends says which of the terms s·e and q/s the model has.

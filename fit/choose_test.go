@@ -1,0 +1,49 @@
+package fit
+
+import (
+	"fmt"
+	"math/rand/v2"
+	"slices"
+	"strings"
+	"testing"
+
+	"realpart/models"
+)
+
+// Simulated parts whose every element is clearly visible: the true circuit is
+// chosen in at least 98 % of seeded cases over all kinds, with nothing given.
+func TestChoice(t *testing.T) {
+	const cases = 1000
+	var names []string
+	for _, kind := range models.Kinds() {
+		for _, m := range models.OfKind(kind) {
+			names = append(names, m.Name)
+		}
+	}
+	type outcome struct{ truth, chosen string }
+	confusion := map[outcome]int{}
+	right := 0
+	for i := range cases {
+		r := rand.New(rand.NewPCG(uint64(i), 2))
+		p := simulatePart(r, names[i%len(names)], 201, 0.001)
+		a, err := Analyse(p.freq, p.z, Request{})
+		if err != nil {
+			t.Fatalf("%s, seed %d: %v", p.name, i, err)
+		}
+		if a.Name == p.name {
+			right++
+		} else {
+			t.Logf("seed %d: %s taken for %s (%s)", i, p.name, a.Name, a.KindReason)
+		}
+		confusion[outcome{p.name, a.Name}]++
+	}
+	var rows []string
+	for o, n := range confusion {
+		rows = append(rows, fmt.Sprintf("%-15s chosen %-15s %4d", o.truth, o.chosen, n))
+	}
+	slices.Sort(rows)
+	t.Logf("confusion table, %d cases:\n%s", cases, strings.Join(rows, "\n"))
+	if share := float64(right) / cases; !(share >= 0.98) {
+		t.Errorf("true circuit chosen in %.1f %% of cases, want at least 98 %%", 100*share)
+	}
+}

@@ -1,0 +1,93 @@
+package fit
+
+import (
+	"fmt"
+	"math"
+
+	"gonum.org/v1/gonum/stat/distuv"
+
+	"realpart/fit/lm"
+	"realpart/models"
+)
+
+// significance of the F test for the circuit without an element.
+const significance = 0.01
+
+// clearlySeen is the standard uncertainty of ln p below which an element is
+// seen so clearly that the circuit need not be fitted without it: it is ten
+// standard uncertainties away from vanishing.
+const clearlySeen = 0.1
+
+// testElements fits the circuit again without each element whose parameter
+// is not clearly seen. An element without which the circuit is not worse by
+// an F test at 1 % is not determined.
+func (r *Result) testElements() {
+	for c, i := range r.Free {
+		q := &r.Parameters[i]
+		if !q.Determined || q.Scale != models.LogScale || math.Sqrt(r.Covariance.At(c, c)) < clearlySeen {
+			continue
+		}
+		if p, ok := r.withoutElement(i); ok && !(p < significance) {
+			q.Determined = false
+			q.Why = fmt.Sprintf("the circuit without it fits as well (F test, p = %.2g)", p)
+		}
+	}
+}
+
+// withoutElement returns the probability, by the F test of nested models,
+// that the circuit without the element of parameter i would be worse by
+// chance as much as it is.
+//
+//	F = ((S₀ − S)/(k − k₀))/(S/ν)
+func (r *Result) withoutElement(i int) (probability float64, ok bool) {
+	if r.DegreesOfFreedom < 1 {
+		return 0, false
+	}
+	reduced, kept := r.Circuit.Without(i)
+	if reduced == nil {
+		return 0, false
+	}
+	s := r.problem.settings
+	var rest Settings
+	rest = *s
+	rest.Fixed, rest.Start, rest.Bounds = map[string]float64{}, nil, map[string]Interval{}
+	for _, k := range kept {
+		name := r.Parameters[k].Name
+		if v, ok := s.Fixed[name]; ok {
+			rest.Fixed[name] = v
+		}
+		if b, ok := s.Bounds[name]; ok {
+			rest.Bounds[name] = b
+		}
+	}
+	p := newProblem(reduced, r.problem.points, r.problem.weight, &rest)
+	p.scale = r.problem.scale
+	for k, from := range kept {
+		p.values[k] = r.Parameters[from].Value
+	}
+	lost := len(r.Free) - len(p.free)
+	if lost < 1 {
+		return 0, false
+	}
+	cost := 0.0
+	if len(p.free) > 0 {
+		lower, upper := p.bounds(&rest)
+		x := p.unknowns()
+		clamp(x, lower, upper)
+		solution, err := lm.Solve(p.lm(), x, &lm.Settings{UnitScaling: true, MaxStep: maxStep, MaxIterations: polishSteps,
+			Lower: lower, Upper: upper, Workspace: new(lm.Workspace)})
+		if err != nil {
+			return 0, false
+		}
+		cost = solution.Cost
+	} else {
+		residuals := make([]float64, 2*len(p.freq))
+		p.residual(residuals, nil)
+		for _, v := range residuals {
+			cost += v * v / 2
+		}
+	}
+	nu := float64(r.DegreesOfFreedom)
+	f := (cost - r.Cost) / float64(lost) / (max(r.Cost, 1e-300) / nu)
+	return distuv.F{D1: float64(lost), D2: nu}.Survival(max(f, 0)), true
+}

@@ -4,7 +4,6 @@ import (
 	"math"
 
 	"gonum.org/v1/gonum/blas/blas64"
-	"gonum.org/v1/gonum/lapack/lapack64"
 	"gonum.org/v1/gonum/mat"
 )
 
@@ -19,37 +18,52 @@ const maxSweeps = 60
 //
 //	‖r + J·p‖² = ‖Qᵀr + R·p‖² + const
 type triangle struct {
-	n     int
+	n, m  int
 	data  []float64 // (n+1)×m, see factorise
-	m     int
-	tau   []float64
-	work  []float64
 	norms []float64 // ‖J_j‖, Euclidean norm of each column
 }
 
-// factorise forms R and Qᵀr from J (m×n) and r (m). It returns the first column that is not finite, or -1.
+// factorise forms R and Qᵀr from J (m×n) and r (m) by Householder reflections. It returns the first column whose norm
+// is not finite, or -1.
 //
-// Note: the factorisation is made as an LQ of the transposed, augmented matrix [J r]ᵀ. gonum stores by rows, and
-// the rows of this matrix are long and contiguous, which makes it a quarter faster than QR of the tall one; the last
-// row of L is Qᵀr, so Q itself is never needed.
+// Note: the factors are those of [J r]. It is kept transposed, because gonum stores by rows and reflections work on columns, which
+// are long and contiguous this way; r being reflected with the columns, Q is never needed. LAPACK's Gelqf would do the
+// same, four times slower: it guards every norm against overflow. A column that overflows here, above 10¹⁵⁴, is refused instead.
 func (t *triangle) factorise(j *mat.Dense, r []float64) (bad int) {
 	n, m := t.n, t.m
 	raw := j.RawMatrix()
 	for i := range m {
-		row := raw.Data[i*raw.Stride : i*raw.Stride+n]
-		for k, v := range row {
+		for k, v := range raw.Data[i*raw.Stride : i*raw.Stride+n] {
 			t.data[k*m+i] = v
 		}
 	}
 	copy(t.data[n*m:(n+1)*m], r)
 	for k := range n {
-		t.norms[k] = blas64.Nrm2(blas64.Vector{N: m, Inc: 1, Data: t.data[k*m : (k+1)*m]})
-		if math.IsNaN(t.norms[k]) || math.IsInf(t.norms[k], 0) {
+		v := t.vector(k, k)
+		size := math.Sqrt(blas64.Dot(v, v))
+		// With Q·R = J the columns of R are as long as those of J.
+		t.norms[k] = math.Hypot(norm(t.data[k*m:k*m+k]), size)
+		if !isFinite(t.norms[k]) {
 			return k
 		}
+		if size == 0 {
+			continue
+		}
+		// v = x − β·e with |β| = ‖x‖ and the sign that does not cancel; then I + v·vᵀ/(β·v_0) reflects x onto β·e.
+		beta := -math.Copysign(size, v.Data[0])
+		v.Data[0] -= beta
+		for l := k + 1; l <= n; l++ {
+			w := t.vector(l, k)
+			blas64.Axpy(blas64.Dot(v, w)/(beta*v.Data[0]), v, w)
+		}
+		v.Data[0] = beta
 	}
-	lapack64.Gelqf(blas64.General{Rows: n + 1, Cols: m, Stride: m, Data: t.data}, t.tau, t.work, len(t.work))
 	return -1
+}
+
+// vector returns column l of [J r] from row k on.
+func (t *triangle) vector(l, k int) blas64.Vector {
+	return blas64.Vector{N: t.m - k, Inc: 1, Data: t.data[l*t.m+k : (l+1)*t.m]}
 }
 
 // column returns the non-zero part of column k of R, its first k+1 elements.

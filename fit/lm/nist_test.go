@@ -91,12 +91,12 @@ func TestNIST(t *testing.T) {
 	for _, c := range []struct {
 		name     string
 		analytic bool
-		// Least digits of agreement. With differences the columns of J carry about 1e-10 of the model's, not of the residuals',
+		// Least digits of agreement. The sum of squares keeps ten where the residuals are 1e-6 of the data (Lanczos2). With differences the columns of J carry about 1e-10 of the model's, not of the residuals',
 		// size; where the residuals are small beside the model (Lanczos3 by 1e5, Eckerle4's peak) or the columns nearly dependent (Bennett5), the standard deviations keep 6 to 7 digits.
 		parameters, deviations, rss float64
 	}{
-		{"analytic", true, 8, 8.5, 10},
-		{"differences", false, 7, 6, 10},
+		{"analytic", true, 8, 8.5, 9.5},
+		{"differences", false, 7, 6, 9.5},
 	} {
 		t.Run(c.name, func(t *testing.T) {
 			t.Logf("%-9s %5s %10s %10s %6s  %5s %9s %9s  %s", "", "start", "parameters", "deviations", "rss", "steps", "residuals", "Jacobians", "status")

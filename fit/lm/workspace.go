@@ -21,7 +21,7 @@ type Workspace struct {
 // prepare cuts the memory for m residuals and n variables.
 func (w *Workspace) prepare(m, n int) *state {
 	const vectors = 14 // of length n, counted below
-	size := 4*m + vectors*n + 2*m*n + (n+1)*m + 2*n*n + 2*(n+1)
+	size := 4*m + vectors*n + 2*m*n + (n+1)*m + 2*n*n
 	if len(w.floats) < size {
 		w.floats = make([]float64, size)
 	}
@@ -53,7 +53,6 @@ func (w *Workspace) prepare(m, n int) *state {
 	s.tri.n, s.tri.m = n, m
 	s.tri.data = take((n + 1) * m)
 	s.b, s.v = take(n*n), take(n*n)
-	s.tri.tau, s.tri.work = take(n+1), take(n+1)
 	s.free, s.onto = w.ints[:0:n], w.bools[:n]
 	return s
 }

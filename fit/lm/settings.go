@@ -13,8 +13,13 @@ const (
 	DefaultMaxIterations     = 1000
 )
 
+// differenceEase multiplies the default tolerances of gradient and step, and its square that of the cost, if the Jacobian comes from
+// differences: its relative error of ε^⅔, 4e-11, is then what the tests see.
+const differenceEase = 10
+
 // Settings steer a solve. The zero value, and a nil pointer, mean the defaults. They ask for all the digits that float64
-// holds in the residuals, which costs one or two steps more than a statistician would need.
+// holds in the residuals, which costs one or two steps more than a statistician would need. Without an analytic Jacobian
+// the defaults of the gradient and the step tolerance are 10 times, that of the cost 100 times larger.
 type Settings struct {
 	// GradientTolerance leads to GradientConvergence. It bounds the cosine of the angle between r and what the free
 	// columns of the Jacobian span: the relative offset of Bates and Watts (Technometrics 23 (1981) 179) but for a
@@ -59,7 +64,7 @@ func (s *Settings) bounds(k int) (low, high float64) {
 }
 
 // resolve checks the settings against the start and fills in the defaults.
-func (s *Settings) resolve(start []float64) (o Settings, err error) {
+func (s *Settings) resolve(start []float64, differences bool) (o Settings, err error) {
 	if s != nil {
 		o = *s
 	}
@@ -71,9 +76,13 @@ func (s *Settings) resolve(start []float64) (o Settings, err error) {
 			*v = standard
 		}
 	}
-	fill("GradientTolerance", &o.GradientTolerance, DefaultGradientTolerance)
-	fill("StepTolerance", &o.StepTolerance, DefaultStepTolerance)
-	fill("CostTolerance", &o.CostTolerance, DefaultCostTolerance)
+	ease := 1.0
+	if differences {
+		ease = differenceEase
+	}
+	fill("GradientTolerance", &o.GradientTolerance, DefaultGradientTolerance*ease)
+	fill("StepTolerance", &o.StepTolerance, DefaultStepTolerance*ease)
+	fill("CostTolerance", &o.CostTolerance, DefaultCostTolerance*ease*ease)
 	switch {
 	case err != nil:
 		return o, err

@@ -81,7 +81,7 @@ func (e *NonFiniteError) Error() string {
 // The same arguments give the same bits, on one kind of processor.
 func Solve(p Problem, start []float64, settings *Settings) (*Result, error) {
 	checkLengths(p, start, settings)
-	o, err := settings.resolve(start)
+	o, err := settings.resolve(start, p.Jacobian == nil)
 	if err != nil {
 		return nil, err
 	}

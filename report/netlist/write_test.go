@@ -25,7 +25,7 @@ func TestWrite(t *testing.T) {
 	heron.Sweep.File = "lot-heron/c017.csv\n.END"
 	heron.Parameters[1].Determined, heron.Parameters[1].Low95 = false, nil
 	heron.Parameters[3].Fixed = true
-	otter := record(t, "C017", "", "loss(C1, D) + Rx + rp + RP", []float64{1e-8, 0.01, 1, 2, 3}, 100, 1e5)
+	otter := record(t, "C017", "", "loss(C1, D) + Rx + Rp + RP", []float64{1e-8, 0.01, 1, 2, 3}, 100, 1e5)
 	otter.Status = report.NotConverged
 	odd := record(t, "7 µH <x>\r\n.end", "", "L || R", []float64{7e-6, 1e3}, 100, 1e5)
 	failed := report.Failed(report.Sweep{File: "x.csv", Part: "x"}, report.Error{Line: 3, Text: "expected a number\n.END"})

@@ -74,8 +74,8 @@ func (r *Result) withoutElement(i int) (probability float64, ok bool) {
 		lower, upper := p.bounds(&rest)
 		x := p.unknowns()
 		clamp(x, lower, upper)
-		solution, err := lm.Solve(p.lm(), x, &lm.Settings{UnitScaling: true, MaxStep: maxStep, MaxIterations: polishSteps,
-			Lower: lower, Upper: upper, Workspace: new(lm.Workspace)})
+		settings := solver(lower, upper)
+		solution, err := lm.Solve(p.lm(), x, &settings)
 		if err != nil {
 			return 0, false
 		}

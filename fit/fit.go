@@ -362,11 +362,14 @@ func (p *problem) solve(s *Settings) (*lm.Result, error) {
 	if err != nil {
 		return nil, err
 	}
-	if p.weight == Relative && best.Cost <= goal(len(p.freq)) && best.Status.Converged() {
+	if p.weight == Relative && best.Cost <= goal(len(p.freq)) {
 		return best, nil
 	}
 	search.run(0)
 	for _, c := range search.best {
+		if c.cost > 2*search.best[0].cost {
+			break // on the thinned sweep already much worse
+		}
 		r, err := p.polish(c.x, lower, upper, s.Robust)
 		if err == nil && r.Cost < best.Cost {
 			best = r
@@ -376,89 +379,129 @@ func (p *problem) solve(s *Settings) (*lm.Result, error) {
 }
 
 // search is a search for starting values on a thinned sweep with the relative
-// residual, whose basin is the widest: the user's values where given, else a
-// seeded sequence of draws, each improved by the solver.
+// residual, whose basin is the widest. In each round many sets of values are
+// drawn, the user's own kept, and the few that come nearest to the sweep are
+// improved by the solver: few good starts beat many blind ones.
 type search struct {
 	whole, thinned *problem
 	settings       *Settings
 	sampler        *sampler
 	solver         lm.Settings
-	values         []float64
-	draw, draws    int
+	round          int
 	repeats        int
 	best           []candidate
 	failure        error
 }
 
-// kept is how many minima of the search are remembered.
-const kept = 4
+const (
+	kept           = 4 // minima that are remembered
+	drawsPerRound  = 24
+	solvesPerRound = 3
+)
 
 func (p *problem) newSearch(s *Settings, lower, upper []float64) *search {
 	f := newFeatures(p.points, searchPoints)
 	q := &search{
 		whole: p, thinned: newProblem(p.circuit, f.points, Relative, s), settings: s, sampler: newSampler(f, s.Seed),
-		values: make([]float64, len(p.values)),
 		solver: lm.Settings{UnitScaling: true, MaxStep: maxStep, MaxIterations: searchSteps,
 			GradientTolerance: searchTolerance, StepTolerance: searchTolerance, CostTolerance: searchTolerance,
 			Lower: lower, Upper: upper, Workspace: new(lm.Workspace)},
 	}
 	copy(q.thinned.values, p.values)
-	unknowns := len(p.free)
-	for _, i := range p.free {
-		if _, ok := s.Start[p.parameters[i].Name]; ok {
-			unknowns--
-		}
-	}
-	q.draws = draws(unknowns)
 	return q
 }
 
-// run draws until the cost reaches the goal, the draws are used up, or the
+// rounds returns how many rounds a search of so many unknowns goes through at
+// most.
+func rounds(unknowns int) int { return 2 + unknowns*unknowns/2 }
+
+// run goes on until the cost reaches the goal, the rounds are used up, or the
 // same minimum has come back so often that there is hardly a lower one.
 func (q *search) run(goal float64) {
-	p := q.whole
-	lower, upper := q.solver.Lower, q.solver.Upper
-	for ; q.draw < q.draws; q.draw++ {
-		if len(q.best) > 0 && (q.best[0].cost <= goal || q.repeats >= 5 && q.draw >= q.draws/2) {
+	for ; q.round < rounds(len(q.whole.free)); q.round++ {
+		if len(q.best) > 0 && (q.best[0].cost <= goal || q.repeats >= 2*solvesPerRound) {
 			return
 		}
-		q.sampler.draw(p.circuit, q.values)
+		starts := q.draw()
+		if 2*len(q.thinned.freq) < len(starts[0].x) {
+			q.best = starts[:1] // too few points for the solver
+			return
+		}
+		for _, start := range starts {
+			r, err := lm.Solve(q.thinned.lm(), start.x, &q.solver)
+			if err != nil {
+				q.failure = err
+				continue
+			}
+			if len(q.best) > 0 && math.Abs(r.Cost-q.best[0].cost) <= 1e-3*q.best[0].cost {
+				q.repeats++
+			} else if len(q.best) == 0 || r.Cost < q.best[0].cost {
+				q.repeats = 0
+			}
+			q.best = keep(q.best, candidate{x: r.X, cost: r.Cost}, kept)
+			if q.best[0].cost <= goal {
+				break
+			}
+		}
+	}
+}
+
+// draw returns random sets of unknowns: the best of a round by its cost on
+// the thinned sweep, and the first ones.
+func (q *search) draw() []candidate {
+	p := q.whole
+	values := make([]float64, len(p.values))
+	residuals := make([]float64, 2*len(q.thinned.freq))
+	var starts []candidate
+	draws := drawsPerRound
+	if len(q.settings.Start) > 0 {
+		given := 0
+		for _, i := range p.free {
+			if _, ok := q.settings.Start[p.parameters[i].Name]; ok {
+				given++
+			}
+		}
+		if given == len(p.free) {
+			draws = 1
+		}
+	}
+	for range draws {
+		q.sampler.draw(p.circuit, values)
 		x := make([]float64, len(p.free))
 		for k, i := range p.free {
-			v := q.values[i]
+			v := values[i]
 			if given, ok := q.settings.Start[p.parameters[i].Name]; ok {
 				v = given
 			}
 			x[k] = p.parameters[i].Scale.Unknown(v)
 			if math.IsNaN(x[k]) {
-				x[k] = (lower[k] + upper[k]) / 2
+				x[k] = (q.solver.Lower[k] + q.solver.Upper[k]) / 2
 			}
 		}
-		clamp(x, lower, upper)
-		if 2*len(q.thinned.freq) < len(x) {
-			q.best = []candidate{{x: x}}
-			return
+		clamp(x, q.solver.Lower, q.solver.Upper)
+		q.thinned.residual(residuals, x)
+		cost := 0.0
+		for _, v := range residuals {
+			cost += v * v / 2
 		}
-		r, err := lm.Solve(q.thinned.lm(), x, &q.solver)
-		if err != nil {
-			q.failure = err
+		if !(cost < math.Inf(1)) {
 			continue
 		}
-		if len(q.best) > 0 && math.Abs(r.Cost-q.best[0].cost) <= 1e-3*q.best[0].cost {
-			q.repeats++
-		} else if len(q.best) == 0 || r.Cost < q.best[0].cost {
-			q.repeats = 0
+		switch {
+		case len(starts) < solvesPerRound:
+			starts = append(starts, candidate{x, cost})
+		case cost < starts[0].cost:
+			starts[0] = candidate{x, cost}
 		}
-		q.best = keep(q.best, candidate{x: r.X, cost: r.Cost}, kept)
 	}
-}
-
-// draws returns how many sets of starting values are tried at most.
-func draws(unknowns int) int {
-	if unknowns <= 0 {
-		return 1
+	if len(starts) == 0 {
+		x := make([]float64, len(p.free))
+		for k := range x {
+			x[k] = (q.solver.Lower[k] + q.solver.Upper[k]) / 2
+		}
+		starts = []candidate{{x: x, cost: math.Inf(1)}}
 	}
-	return 4 * unknowns * (1 + unknowns/2)
+	return starts
 }
 
 // pointNoise estimates the relative standard deviation of real and imaginary
@@ -476,11 +519,19 @@ func pointNoise(freq []float64, z []complex128) float64 {
 	return residual.MAD(d)
 }
 
+// solver returns the settings of a fit on the whole sweep. The gradient
+// tolerance is in standard uncertainties of the solution: 1e-7 of them is
+// far below what anybody prints, and above the rounding of the residuals.
+func solver(lower, upper []float64) lm.Settings {
+	return lm.Settings{UnitScaling: true, MaxStep: maxStep, MaxIterations: polishSteps,
+		GradientTolerance: 1e-7, StepTolerance: 1e-9, CostTolerance: 1e-12,
+		Lower: lower, Upper: upper, Workspace: new(lm.Workspace)}
+}
+
 // polish minimises over the whole sweep: first the relative residual, whose
 // basin is wide, then the one asked for.
 func (p *problem) polish(x, lower, upper []float64, robust bool) (*lm.Result, error) {
-	settings := lm.Settings{UnitScaling: true, MaxStep: maxStep, MaxIterations: polishSteps,
-		Lower: lower, Upper: upper, Workspace: new(lm.Workspace)}
+	settings := solver(lower, upper)
 	wanted := p.weight
 	p.weight = Relative
 	r, err := lm.Solve(p.lm(), x, &settings)

@@ -2,6 +2,7 @@ package fit
 
 import (
 	"math"
+	"slices"
 
 	"realpart/fit/lm"
 	"realpart/models"
@@ -27,12 +28,11 @@ func (r *Result) profile(column int, direction, t float64) (x float64, open bool
 	if r.Weight == Relative {
 		sigma = max(sigma, roundingFloor)
 	}
-	settings := lm.Settings{UnitScaling: true, MaxStep: maxStep, MaxIterations: polishSteps, GradientTolerance: 1e-7, StepTolerance: 1e-8, CostTolerance: 1e-10,
-		Lower: append([]float64(nil), lower...), Upper: append([]float64(nil), upper...), Workspace: new(lm.Workspace)}
+	settings := solver(slices.Clone(lower), slices.Clone(upper))
 	// rise returns √(2Δcost)/s at x: it grows about linearly.
 	rise := func(at float64, from []float64) (float64, []float64, error) {
 		settings.Lower[column], settings.Upper[column] = at, at
-		start := append([]float64(nil), from...)
+		start := slices.Clone(from)
 		start[column] = at
 		clamp(start, settings.Lower, settings.Upper)
 		s, err := lm.Solve(p.lm(), start, &settings)
@@ -47,7 +47,7 @@ func (r *Result) profile(column int, direction, t float64) (x float64, open bool
 	}
 	inside, outside := r.x[column], r.x[column]
 	insideRise, outsideRise := 0.0, 0.0
-	state := append([]float64(nil), r.x...)
+	state := slices.Clone(r.x)
 	for {
 		outside += direction * step
 		if direction*(outside-end) >= 0 {

@@ -79,10 +79,21 @@ func (s *sampler) anchor() (omega float64, z, y complex128) {
 // draw fills values (in the order of the circuit's parameters) at random.
 func (s *sampler) draw(c *models.Circuit, values []float64) {
 	var inductors, capacitors []int
+	siblings := map[int]int{} // of an inductance: the capacitance beside it
 	var walk func(n *models.Node)
 	walk = func(n *models.Node) {
+		l, c := -1, -1
 		for _, child := range n.Children {
 			walk(child)
+			if child.Kind == models.Leaf && child.Element == models.Inductor {
+				l = child.Parameters[0]
+			}
+			if child.Kind == models.Leaf && child.Element == models.Capacitor {
+				c = child.Parameters[0]
+			}
+		}
+		if l >= 0 && c >= 0 {
+			siblings[l] = c
 		}
 		if n.Kind != models.Leaf {
 			return
@@ -120,15 +131,21 @@ func (s *sampler) draw(c *models.Circuit, values []float64) {
 		values[p] *= s.spread(0.5)
 	}
 	walk(c.Root())
-	if len(capacitors) == 0 || len(s.resonances) == 0 {
-		return
-	}
 	for _, l := range inductors {
-		if s.random.IntN(2) == 0 {
+		if len(capacitors) == 0 || s.random.IntN(2) == 0 {
 			continue
 		}
-		omega := 2 * math.Pi * s.resonances[s.random.IntN(len(s.resonances))]
 		partner := capacitors[s.random.IntN(len(capacitors))]
+		omega := 0.0
+		if sibling, ok := siblings[l]; ok && s.random.IntN(2) == 0 {
+			// the two of a section resonate somewhere in the sweep
+			partner = sibling
+			omega, _, _ = s.anchor()
+		} else if len(s.resonances) > 0 {
+			omega = 2 * math.Pi * s.resonances[s.random.IntN(len(s.resonances))]
+		} else {
+			continue
+		}
 		values[l] = s.spread(0.1) / (omega * omega * values[partner])
 	}
 }

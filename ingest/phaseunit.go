@@ -1,0 +1,93 @@
+package ingest
+
+import (
+	"fmt"
+	"math"
+)
+
+// angleUnit is the outcome of telling degrees from radians.
+type angleUnit uint8
+
+const (
+	angleUnknown angleUnit = iota
+	angleDegrees
+	angleRadians
+)
+
+func (u angleUnit) dim() string {
+	switch u {
+	case angleDegrees:
+		return "°"
+	case angleRadians:
+		return "rad"
+	}
+	return ""
+}
+
+// phaseUnit tells the unit of phase values from the values alone. Beyond π they
+// are degrees. Else the slope of ln|Z| decides: where the impedance is of
+// minimum phase, Bode's relation gives
+//
+//	φ ≈ 90° · d ln|Z| / d ln ω
+//
+// (H. W. Bode, Network Analysis and Feedback Amplifier Design, 1945, ch. XIV;
+// here from memory), so the values' regression on 90° times the slope is near 1
+// for degrees and near π/180 for radians. The answer is angleUnknown where the
+// slope is too small (a resistor) or the factor fits neither. sign is −1 for the
+// phase of an admittance beside |Y|, which has the same relation, so +1 suits
+// both there; it is the exponent of the magnitude.
+func phaseUnit(freq, mag, phase []float64) (angleUnit, string) {
+	largest := 0.0
+	for _, p := range phase {
+		largest = max(largest, math.Abs(p))
+	}
+	if largest > math.Pi*1.001 {
+		return angleDegrees, fmt.Sprintf("values up to %.4g exceed π", largest)
+	}
+	k, predicted, n := slopeFactor(freq, mag, phase)
+	if n < 3 || predicted < 3 {
+		return angleUnknown, "the magnitude changes too little to tell"
+	}
+	switch {
+	case 0.4 <= k && k <= 2.5:
+		return angleDegrees, fmt.Sprintf("the slope of ln|Z| agrees (factor %.2f)", k)
+	case 0.4 <= k*180/math.Pi && k*180/math.Pi <= 2.5:
+		return angleRadians, fmt.Sprintf("the slope of ln|Z| agrees (factor %.2f)", k*180/math.Pi)
+	}
+	return angleUnknown, fmt.Sprintf("the slope of ln|Z| fits neither (factor %.3g)", k)
+}
+
+// slopeFactor is the regression through the origin of phase on 90°·slope, over
+// pairs of points at least 5 % apart in frequency; predicted is the rms of the
+// latter in degrees.
+func slopeFactor(freq, mag, phase []float64) (k, predicted float64, n int) {
+	var sxy, sxx float64
+	j := 0
+	order := sortedOrder(freq)
+	for _, i := range order {
+		a := order[j]
+		if !(freq[i] > 1.05*freq[a]) {
+			continue
+		}
+		j++
+		for j < len(order) && freq[i] > 1.05*freq[order[j]] {
+			j++
+		}
+		a = order[j-1]
+		if !(freq[a] > 0) || !(mag[a] > 0) || !(mag[i] > 0) {
+			continue
+		}
+		x := 90 * math.Log(mag[i]/mag[a]) / math.Log(freq[i]/freq[a])
+		y := (phase[i] + phase[a]) / 2
+		if math.IsNaN(x) || math.IsInf(x, 0) || math.Abs(x) > 200 {
+			continue // a resonance within the step: no slope
+		}
+		sxy += x * y
+		sxx += x * x
+		n++
+	}
+	if n == 0 || sxx == 0 {
+		return 0, 0, n
+	}
+	return sxy / sxx, math.Sqrt(sxx / float64(n)), n
+}

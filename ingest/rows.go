@@ -1,0 +1,500 @@
+package ingest
+
+import (
+	"fmt"
+	"math"
+	"strings"
+
+	"realpart/models/quantity"
+)
+
+// segment is rows that belong together: below one header, without a break.
+type segment struct {
+	plan  *plan
+	meta  Metadata // of the lines since the segment before
+	line  []int32  // of each row
+	vals  [][]float64
+	cplx  map[int][]complex128 // columns of complex literals
+	slot  []int                // column → index in vals, -1
+	part  []string             // value of the part column of each row, nil without one
+	extra []bool               // per slot: a column that is only compared; its gaps are NaN
+}
+
+// maxFaults and maxDropped bound what is remembered of a bad file.
+const (
+	maxFaults  = 1000
+	maxDropped = 1 << 20
+)
+
+// reader goes through the lines of delimited text.
+type reader struct {
+	*source
+	opt      Options
+	segments []*segment
+	meta     Metadata // of the file: what stands above the first table
+	pending  Metadata // since the last row
+	dropped  []Dropped
+	faults   []*Error
+	more     int // faults beyond maxFaults
+
+	angle angleUnit // of phases without a unit, once told from the values
+
+	// Answers of ahead, valid for lines from aheadFrom−1 up to the nearer one.
+	aheadFrom, aheadHeader, aheadData int
+}
+
+func (r *reader) fault(e *Error) {
+	e.File = r.name
+	if len(r.faults) < maxFaults {
+		r.faults = append(r.faults, e)
+	} else {
+		r.more++
+	}
+}
+
+func (r *reader) drop(l line, reason string) {
+	if len(r.dropped) < maxDropped {
+		r.dropped = append(r.dropped, Dropped{int(l.num), reason})
+	}
+}
+
+// readTables reads all tables of the text into segments.
+func (r *reader) readTables() *Error {
+	t, err := r.findTable(0, r.opt)
+	if err != nil {
+		return err
+	}
+	top := t.first
+	for _, i := range []int{t.head, t.group} {
+		if i >= 0 {
+			top = min(top, i)
+		}
+	}
+	for i := 0; i < top; i++ {
+		r.readMetadata(&r.meta, r.lines[i])
+	}
+	for {
+		p, err := r.plan(t, r.opt, r.pending.merge(r.meta))
+		if err != nil {
+			return err
+		}
+		next, ok := r.readRows(p)
+		if !ok {
+			return nil
+		}
+		t = next
+	}
+}
+
+func (r *reader) readMetadata(m *Metadata, l line) bool {
+	l = r.uncomment(l)
+	text := r.lineText(l)
+	if r.sheet != "" {
+		text = strings.ReplaceAll(text, string(rune(cellMark)), "\t")
+	}
+	return m.read(text)
+}
+
+// newSegment begins a segment for a plan.
+func (r *reader) newSegment(p *plan) *segment {
+	g := &segment{plan: p, meta: r.pending, slot: make([]int, len(p.cols))}
+	r.pending = Metadata{}
+	for i := range g.slot {
+		g.slot[i] = -1
+	}
+	add := func(i int, extra bool) {
+		if g.slot[i] < 0 {
+			g.slot[i] = len(g.vals)
+			g.vals = append(g.vals, nil)
+			g.extra = append(g.extra, extra)
+		}
+		switch p.cols[i].role {
+		case roleZ, roleY, roleS:
+			if g.cplx == nil {
+				g.cplx = map[int][]complex128{}
+			}
+			g.cplx[i] = nil
+		}
+	}
+	for _, q := range p.groups {
+		add(q.freq, false)
+		if q.part >= 0 {
+			g.part = []string{}
+		}
+	}
+	for _, i := range p.need {
+		add(i, false)
+	}
+	for _, i := range p.also {
+		add(i, true)
+	}
+	r.segments = append(r.segments, g)
+	return g
+}
+
+// readRows reads rows until the end or the next header, which it returns.
+func (r *reader) readRows(p *plan) (table, bool) {
+	var cells []span
+	var seg *segment
+	broken := true // something stood between: the next row may start a new part
+	lastNum := int32(-1)
+	freqCol := p.groups[0].freq
+	partCol := p.groups[0].part
+	// One row is read into here and stored when all its cells are good.
+	row := make([]float64, len(p.cols))
+	crow := make([]complex128, len(p.cols))
+
+	needs := append(freqsOf(p), p.need...)
+	simple := len(p.groups) == 1 && partCol < 0 && len(p.also) == 0
+
+	for i := p.first; i < len(r.lines); i++ {
+		l := r.lines[i]
+		if r.isComment(l) {
+			if t, ok := r.headerBelow(i, p); ok {
+				return t, true
+			}
+			if r.readMetadata(&r.pending, l) {
+				broken = true
+			}
+			continue
+		}
+		cells = r.split(l, cells)
+		if lastNum >= 0 && l.num != lastNum+1 {
+			broken = true
+		}
+		lastNum = l.num
+
+		// The frequency tells a row from everything else.
+		var f float64
+		kind := isEmpty
+		if freqCol < len(cells) {
+			f, kind = parseNumber(r.cell(cells[freqCol]), r.decimal)
+			if kind == isNumber {
+				f = scale(f, p.cols[freqCol].unit.exp)
+			} else if kind == isText {
+				f, kind = r.suffixed(r.cell(cells[freqCol]), p.cols[freqCol])
+			}
+		}
+		if kind != isNumber {
+			switch r.structure(i, p, cells, kind) {
+			case lineHeader:
+				t, _ := r.headerBelow(i, p)
+				return t, true
+			case lineBreak:
+				broken = true
+				continue
+			case lineSkip:
+				continue
+			}
+		}
+		good := kind == isNumber
+		if kind == isOverload {
+			r.drop(l, "overload or no number in "+roles[p.cols[freqCol].role].name)
+			continue
+		}
+		if kind == isEmpty {
+			r.drop(l, "empty cell in "+roles[p.cols[freqCol].role].name)
+			continue
+		}
+		if !good {
+			r.badCell(l, cells, freqCol, p)
+			continue
+		}
+		row[freqCol] = f
+		for _, c := range needs {
+			if c == freqCol {
+				continue
+			}
+			if !r.readCell(l, cells, c, p, row, crow) {
+				good = false
+				break
+			}
+		}
+		if !good {
+			continue
+		}
+		if !simple {
+			for _, c := range p.also {
+				row[c] = math.NaN()
+				if c < len(cells) {
+					if v, kind := parseNumber(r.cell(cells[c]), r.decimal); kind == isNumber {
+						row[c] = scale(v, p.cols[c].unit.exp)
+					}
+				}
+			}
+		}
+		if broken {
+			if seg == nil || !seg.continues(f) || r.pending.Part != "" || r.pending.Serial != "" {
+				seg = r.newSegment(p)
+			} else {
+				r.meta = r.meta.merge(r.pending)
+				r.pending = Metadata{}
+			}
+			broken = false
+		}
+		seg.line = append(seg.line, l.num)
+		for c, s := range seg.slot {
+			if s < 0 {
+				continue
+			}
+			if seg.cplx != nil {
+				if z, ok := seg.cplx[c]; ok {
+					seg.cplx[c] = append(z, crow[c])
+					continue
+				}
+			}
+			seg.vals[s] = append(seg.vals[s], row[c])
+		}
+		if partCol >= 0 {
+			name := ""
+			if partCol < len(cells) {
+				name = strings.ReplaceAll(r.cell(cells[partCol]), `""`, `"`)
+			}
+			seg.part = append(seg.part, name)
+		}
+	}
+	return table{}, false
+}
+
+// continues reports whether a frequency goes on where the segment stopped: then
+// a repeated header or a blank line is only a page break.
+func (g *segment) continues(f float64) bool {
+	fs := g.vals[g.slot[g.plan.groups[0].freq]]
+	n := len(fs)
+	if n == 0 {
+		return true
+	}
+	if n == 1 {
+		return f > fs[0]
+	}
+	if fs[n-1] >= fs[0] {
+		return f > fs[n-1]
+	}
+	return f < fs[n-1]
+}
+
+// readCell reads cell c of a row into row or crow; a row that cannot be used
+// for a harmless reason is dropped, anything else is a fault.
+func (r *reader) readCell(l line, cells []span, c int, p *plan, row []float64, crow []complex128) bool {
+	h := &p.cols[c]
+	if c >= len(cells) {
+		if r.sheet != "" {
+			r.drop(l, "empty cell in "+roles[h.role].name)
+			return false
+		}
+		r.fault(&Error{Line: int(l.num), Column: r.column(l, cells, c), bare: true,
+			Found: fmt.Sprintf("a row of %d", len(cells)), Expected: fmt.Sprintf("at least %d cells", c+1), Hint: "complete or remove the row"})
+		return false
+	}
+	text := r.cell(cells[c])
+	if h.role == roleZ || h.role == roleY || h.role == roleS {
+		if z, ok := parseComplex(text); ok {
+			s := math.Pow10(h.unit.exp)
+			crow[c] = complex(real(z)*s, imag(z)*s)
+			return true
+		}
+		if v, kind := parseNumber(text, r.decimal); kind == isNumber && h.role != roleS {
+			crow[c] = complex(scale(v, h.unit.exp), 0)
+			return true
+		} else if kind == isEmpty || kind == isOverload {
+			r.drop(l, "overload or empty cell in "+roles[h.role].name)
+			return false
+		}
+		r.fault(&Error{Line: int(l.num), Column: r.column(l, cells, c), Found: text, Expected: "a complex number such as 1.2-3.4j",
+			Hint: "save real and imaginary part in two columns"})
+		return false
+	}
+	v, kind := parseNumber(text, r.decimal)
+	if kind == isNumber {
+		v = scale(v, h.unit.exp)
+	} else if kind == isText {
+		v, kind = r.suffixed(text, *h)
+	}
+	switch kind {
+	case isNumber:
+		if v < 0 && h.role.neverNegative() {
+			r.fault(&Error{Line: int(l.num), Column: r.column(l, cells, c), Found: text, Expected: "a magnitude that is not negative",
+				Hint: "--columns to name the columns"})
+			return false
+		}
+		row[c] = v
+		return true
+	case isEmpty:
+		r.drop(l, "empty cell in "+columnName(*h))
+	case isOverload:
+		r.drop(l, "overload or no number in "+columnName(*h))
+	default:
+		r.badCell(l, cells, c, p)
+	}
+	return false
+}
+
+func columnName(h heading) string {
+	if h.role == roleNone {
+		return fmt.Sprintf("%q", h.text)
+	}
+	return roles[h.role].name
+}
+
+// badCell is the fault of text in a number cell.
+func (r *reader) badCell(l line, cells []span, c int, p *plan) {
+	text := r.cell(cells[c])
+	e := &Error{Line: int(l.num), Column: r.column(l, cells, c), Found: text, Expected: "a number"}
+	h := p.cols[c]
+	if h.role != roleNone {
+		e.Expected = "a number for " + roles[h.role].name
+		if h.unit.text != "" {
+			e.Expected += " in " + h.unit.text
+		}
+	}
+	switch {
+	case strings.IndexByte(text, ',') >= 0 && strings.IndexByte(text, '.') >= 0, thousands(text):
+		e.Hint, e.Err = "save without thousands separators", ErrAmbiguous
+	case strings.IndexByte(text, ',') >= 0 && r.decimal == '.':
+		e.Hint = "save with a decimal point, or with a decimal comma in all columns"
+	case strings.IndexByte(text, '.') >= 0 && r.decimal == ',':
+		e.Hint = "this file has decimal commas: save all numbers with the same decimal sign"
+	default:
+		e.Hint = "remove the row, or leave the cell empty"
+	}
+	r.fault(e)
+}
+
+// suffixed reads a cell with its own prefix or unit: "4.7k", "1.2 MHz". A
+// prefix alone below a header that has one too could mean either.
+func (r *reader) suffixed(text string, h heading) (float64, cellKind) {
+	dim := roles[h.role].dim
+	if dim == "" || dim == "dB" || text == "" {
+		return 0, isText
+	}
+	if c := text[0]; !('0' <= c && c <= '9' || c == '-' || c == '+' || c == '.' || c >= 0x80) {
+		return 0, isText
+	}
+	if r.decimal == ',' {
+		t, ok := pointForComma(text)
+		if !ok {
+			return 0, isText
+		}
+		text = t
+	}
+	if h.role.isAngle() && h.unit.dim != "" {
+		dim = h.unit.dim
+	}
+	v, err := quantity.Parse(text, dim)
+	if err != nil {
+		return 0, isText
+	}
+	last := strings.TrimRight(text, " ")
+	if _, _, lone := lonePrefix(lastRune(last)); lone && h.unit.exp != 0 {
+		return 0, isText
+	}
+	if h.role.isAngle() && h.unit.dim == "" {
+		// The cell says its unit; the column must then be in it throughout.
+		return 0, isText
+	}
+	if math.Abs(v) >= overload {
+		return 0, isOverload
+	}
+	return v, isNumber
+}
+
+func lastRune(s string) string {
+	for i := len(s) - 1; i >= 0; i-- {
+		if s[i] < 0x80 || s[i] >= 0xc0 {
+			return s[i:]
+		}
+	}
+	return s
+}
+
+// What a line is that does not begin with a frequency.
+type structureKind uint8
+
+const (
+	lineFault  structureKind = iota // a row with text where a number should be, or a gap
+	lineHeader                      // the header of the next table, or words above it
+	lineBreak                       // a blank row, a mark, metadata
+	lineSkip                        // a footer
+)
+
+// structure says what line i is, given that its frequency cell is no number.
+func (r *reader) structure(i int, p *plan, cells []span, kind cellKind) structureKind {
+	l := r.lines[i]
+	k := r.look(cells)
+	if k.cells == 0 {
+		return lineBreak
+	}
+	if k.numbers >= 1 && kind != isText {
+		return lineFault // an empty or overloaded frequency
+	}
+	text := r.lineText(l)
+	if isRule(text) && k.cells <= 1 {
+		return lineBreak
+	}
+	if t, ok := r.tryHeader(i); ok && t.head == i {
+		return lineHeader
+	}
+	first := strings.ToUpper(r.cell(cells[0]))
+	if strings.HasPrefix(first, "BEGIN") || strings.HasPrefix(first, "END") || first == "EOF" || first == "STOP" {
+		return lineBreak
+	}
+	if k.numbers <= 1 && r.readMetadata(&r.pending, l) {
+		return lineBreak
+	}
+	next, data := r.ahead(i)
+	switch {
+	case next >= 0 && (data < 0 || next < data):
+		return lineHeader
+	case k.cells == 1 && k.numbers == 0 && data < 0:
+		r.drop(l, "text below the last row")
+		return lineSkip
+	case k.cells == 1 && k.numbers == 0 && (i == 0 || r.lines[i-1].num != l.num-1 || i+1 < len(r.lines) && r.lines[i+1].num != l.num+1):
+		// A title on its own after a blank line names the block below.
+		r.pending.Part = r.cell(cells[0])
+		return lineBreak
+	}
+	return lineFault
+}
+
+// headerBelow returns the header at line i or, where i is a title, the next one.
+func (r *reader) headerBelow(i int, p *plan) (table, bool) {
+	if t, ok := r.tryHeader(i); ok {
+		return t, true
+	}
+	if r.isComment(r.lines[i]) {
+		return table{}, false
+	}
+	next, _ := r.ahead(i)
+	if next < 0 {
+		return table{}, false
+	}
+	for j := i; j < next; j++ {
+		r.readMetadata(&r.pending, r.lines[j])
+	}
+	return r.tryHeader(next)
+}
+
+// ahead returns the index of the next header and of the next row of numbers
+// after line i, -1 where there is none. The answer holds until one of them is
+// passed, so that going through a file stays linear.
+func (r *reader) ahead(i int) (header, data int) {
+	if r.aheadFrom > 0 && i >= r.aheadFrom-1 && (r.aheadData < 0 || i < r.aheadData) && (r.aheadHeader < 0 || i < r.aheadHeader) {
+		return r.aheadHeader, r.aheadData
+	}
+	r.aheadFrom, r.aheadHeader, r.aheadData = i+1, -1, -1
+	var cells []span
+	for j := i + 1; j < len(r.lines); j++ {
+		if !r.isComment(r.lines[j]) {
+			cells = r.split(r.lines[j], cells)
+			if r.look(cells).isData() {
+				r.aheadData = j
+				break
+			}
+		}
+		if _, ok := r.tryHeader(j); ok {
+			r.aheadHeader = j
+			break
+		}
+	}
+	return r.aheadHeader, r.aheadData
+}

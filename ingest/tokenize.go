@@ -1,0 +1,318 @@
+package ingest
+
+import (
+	"strings"
+	"unicode/utf8"
+)
+
+// source is a text cut into lines, with the delimiter that cuts lines into
+// cells. Cells are parts of the text; nothing is copied.
+type source struct {
+	name     string
+	text     string
+	encoding string
+	lines    []line // those that are not blank
+
+	delim   byte // ',' ';' '\t' '|', blanks for runs of blanks, or cellMark in a spreadsheet
+	decimal byte // '.' or ','
+	sheet   string
+}
+
+const (
+	blanks   = ' '
+	cellMark = '\x1f' // between the cells of a spreadsheet
+)
+
+// line is text[start:end], without the line's end; num counts from 1 and jumps
+// where blank lines were.
+type line struct {
+	start, end int32
+	num        int32
+}
+
+// span is a cell: text[start:end], without the blanks and quotes around it.
+type span struct{ start, end int32 }
+
+// newSource cuts text at LF, CR LF, or CR alone where the text has no LF.
+func newSource(name, text, enc string) *source {
+	s := &source{name: name, text: text, encoding: enc, decimal: '.'}
+	end := byte('\n')
+	if strings.IndexByte(text, '\n') < 0 {
+		end = '\r'
+	}
+	// Most lines of a sweep are about this long; append corrects the guess.
+	s.lines = make([]line, 0, len(text)/32+1)
+	num := int32(0)
+	for start := 0; start < len(text); {
+		stop := strings.IndexByte(text[start:], end)
+		next := start + stop + 1
+		if stop < 0 {
+			stop, next = len(text)-start, len(text)
+		}
+		num++
+		from, to := start, start+stop
+		for to > from && (text[to-1] == '\r' || isBlank(text[to-1])) {
+			to--
+		}
+		if to > from && !allBlank(text[from:to]) {
+			s.lines = append(s.lines, line{int32(from), int32(to), num})
+		}
+		start = next
+	}
+	return s
+}
+
+func isBlank(c byte) bool { return c == ' ' || c == '\t' || c == '\v' || c == '\f' }
+
+func allBlank(s string) bool {
+	for i := 0; i < len(s); i++ {
+		if !isBlank(s[i]) {
+			return false
+		}
+	}
+	return true
+}
+
+func (s *source) lineText(l line) string { return s.text[l.start:l.end] }
+
+func (s *source) cell(c span) string { return s.text[c.start:c.end] }
+
+// column is the place of a cell for a message: characters from the line's
+// start, or the number of the cell in a spreadsheet.
+func (s *source) column(l line, cells []span, i int) int {
+	if s.sheet != "" {
+		return i + 1
+	}
+	if i >= len(cells) {
+		return utf8.RuneCountInString(s.lineText(l)) + 1
+	}
+	return utf8.RuneCountInString(s.text[l.start:cells[i].start]) + 1
+}
+
+// split cuts a line into cells, in the given slice's memory.
+func (s *source) split(l line, cells []span) []span {
+	return s.splitRange(l.start, l.end, cells[:0])
+}
+
+func (s *source) splitRange(start, end int32, cells []span) []span {
+	text := s.text
+	if s.delim == blanks {
+		return splitBlanks(text, start, end, cells)
+	}
+	delim := s.delim
+	for i := start; ; {
+		for i < end && text[i] != delim && isBlank(text[i]) {
+			i++
+		}
+		from := i
+		if i < end && text[i] == '"' && delim != cellMark {
+			if stop, next, ok := quoted(text, i, end, delim); ok {
+				cells = append(cells, span{i + 1, stop})
+				if next > end {
+					return cells
+				}
+				i = next
+				continue
+			}
+		}
+		for i < end && text[i] != delim {
+			i++
+		}
+		to := i
+		for to > from && isBlank(text[to-1]) {
+			to--
+		}
+		cells = append(cells, span{from, to})
+		if i >= end {
+			return cells
+		}
+		i++
+	}
+}
+
+func splitBlanks(text string, start, end int32, cells []span) []span {
+	for i := start; i < end; {
+		for i < end && isBlank(text[i]) {
+			i++
+		}
+		if i >= end {
+			break
+		}
+		if text[i] == '"' {
+			if stop, next, ok := quoted(text, i, end, blanks); ok {
+				cells = append(cells, span{i + 1, stop})
+				i = next
+				continue
+			}
+		}
+		from := i
+		for i < end && !isBlank(text[i]) {
+			i++
+		}
+		cells = append(cells, span{from, i})
+	}
+	return cells
+}
+
+// quoted finds the end of the quoted cell that opens at i: its closing quote
+// must stand before a delimiter or the line's end; a doubled quote is part of
+// it. next is where the following cell starts, beyond end if there is none. A
+// cell does not run over lines: a lone quote is then text.
+func quoted(text string, i, end int32, delim byte) (stop, next int32, ok bool) {
+	for j := i + 1; j < end; j++ {
+		if text[j] != '"' {
+			continue
+		}
+		if j+1 < end && text[j+1] == '"' {
+			j++
+			continue
+		}
+		k := j + 1
+		for k < end && isBlank(text[k]) && text[k] != delim {
+			k++
+		}
+		if k >= end {
+			return j, end + 1, true
+		}
+		if text[k] == delim || delim == blanks && isBlank(text[k]) || delim == blanks && k > j+1 {
+			return j, k + 1 - b2i(delim == blanks), true
+		}
+		return 0, 0, false
+	}
+	return 0, 0, false
+}
+
+func b2i(b bool) int32 {
+	if b {
+		return 1
+	}
+	return 0
+}
+
+// commentSigns start a line that is no data. A semicolon does too where it is
+// not the delimiter.
+func (s *source) isComment(l line) bool {
+	if s.sheet != "" {
+		return false
+	}
+	i := l.start
+	for i < l.end && isBlank(s.text[i]) {
+		i++
+	}
+	if i >= l.end {
+		return false
+	}
+	switch s.text[i] {
+	case '#', '%', '!':
+		return true
+	case ';':
+		return s.delim != ';'
+	case '/':
+		return i+1 < l.end && s.text[i+1] == '/'
+	}
+	return false
+}
+
+// uncomment returns the line without its comment signs.
+func (s *source) uncomment(l line) line {
+	if !s.isComment(l) {
+		return l
+	}
+	for l.start < l.end && strings.IndexByte("#%!;/ \t", s.text[l.start]) >= 0 {
+		l.start++
+	}
+	return l
+}
+
+// sniffLines is how many lines, evenly spread, the choice of the delimiter looks at.
+const sniffLines = 48
+
+// detectDelimiter chooses delimiter and decimal sign: those under which the
+// most cells of the lines looked at are numbers. A line counts for the square
+// of its numbers over its cells, at least two of them numbers, so that cutting
+// at a decimal comma loses.
+func (s *source) detectDelimiter() {
+	type choice struct{ delim, decimal byte }
+	choices := [...]choice{{',', '.'}, {';', '.'}, {';', ','}, {'\t', '.'}, {'\t', ','}, {'|', '.'}, {'|', ','}, {blanks, '.'}, {blanks, ','}}
+	var score [len(choices)]float64
+	var cells []span
+	n := len(s.lines)
+	looked := 0
+	look := func(l line) {
+		if s.isComment(l) {
+			return
+		}
+		text := s.lineText(l)
+		looked++
+		for i, c := range choices {
+			if c.delim == blanks && strings.IndexByte(text, ' ') < 0 && strings.IndexByte(text, '\t') < 0 ||
+				c.delim != blanks && strings.IndexByte(text, c.delim) < 0 ||
+				c.decimal == ',' && strings.IndexByte(text, ',') < 0 {
+				continue
+			}
+			s.delim = c.delim
+			cells = s.split(l, cells)
+			numbers := 0
+			total := 0
+			for _, cell := range cells {
+				t := s.cell(cell)
+				if t == "" {
+					continue
+				}
+				total++
+				if looksNumber(t, c.decimal) {
+					numbers++
+				}
+			}
+			if numbers >= 2 {
+				score[i] += float64(numbers*numbers) / float64(total)
+			}
+		}
+	}
+	step := max(1, n/sniffLines)
+	for i := n - 1; i >= 0; i -= step {
+		look(s.lines[i])
+	}
+	best := 0
+	for i := range choices {
+		if score[i] > score[best] {
+			best = i
+		}
+	}
+	s.delim, s.decimal = choices[best].delim, choices[best].decimal
+	if score[best] == 0 {
+		// No rows of numbers: only the wording of an error depends on it.
+		for _, c := range []byte{',', ';', '\t', blanks} {
+			for _, l := range s.lines {
+				if strings.IndexByte(s.lineText(l), c) >= 0 {
+					s.delim, s.decimal = c, '.'
+					return
+				}
+			}
+		}
+	}
+}
+
+// delimiterName is for Reading.
+func (s *source) delimiterName() string {
+	switch s.delim {
+	case ',':
+		return "comma"
+	case ';':
+		return "semicolon"
+	case '\t':
+		return "tab"
+	case '|':
+		return "vertical bar"
+	case blanks:
+		return "blanks"
+	}
+	return "cells"
+}
+
+func (s *source) decimalName() string {
+	if s.decimal == ',' {
+		return "comma"
+	}
+	return "point"
+}

@@ -7,11 +7,12 @@ import (
 	"gonum.org/v1/gonum/mat"
 )
 
-// A column takes part in a singularity when its share in the vanishing direction, a unit vector in the scaled variables, is at
-// least this. Smaller shares are rounding or hardly matter.
+// A column takes part in a singularity when its share in the vanishing direction, a unit vector in the scaled
+// variables, is at least this. Smaller shares are rounding or hardly matter.
 const share = 0.1
 
-// SingularError says which columns of a Jacobian are zero or linearly dependent, so that the data do not determine their variables.
+// SingularError says which columns of a Jacobian are zero or linearly dependent, so that the data do not determine
+// their variables.
 type SingularError struct {
 	Columns   []int   // ascending
 	Condition float64 // of the Jacobian with its columns scaled to length 1; +Inf for a zero column
@@ -28,13 +29,13 @@ func (e *SingularError) Error() string {
 // from the m×n Jacobian there and the variance s² of one residual, 1 if the residuals are divided by their standard
 // uncertainty, ‖r‖²/(m−n) if they are all alike and their scatter is the only clue.
 //
-// It is computed from the QR decomposition of J with columns scaled to length 1, so that the units of the variables do not
-// matter, and without forming JᵀJ, which would halve the digits. For variables at a bound, leave their columns out: the formula does not hold for
-// them.
+// It is computed from the QR decomposition of J with columns scaled to length 1, so that the units of the variables do
+// not matter, and without forming JᵀJ, which would halve the digits. For variables at a bound, leave their columns out:
+// the formula does not hold for them.
 //
-// If the scaled columns are dependent to working precision, their smallest singular value being at most max(m, n)·ε times the
-// largest, the error is a *SingularError and there is no matrix. A Jacobian that is not finite or has fewer rows than
-// columns, and a variance that is negative or not finite, are errors, too.
+// If the scaled columns are dependent to working precision, their smallest singular value being at most max(m, n)·ε
+// times the largest, the error is a *SingularError and there is no matrix. A Jacobian that is not finite or has fewer
+// rows than columns, and a variance that is negative or not finite, are errors, too.
 func Covariance(j mat.Matrix, variance float64) (*mat.SymDense, error) {
 	m, n := j.Dims()
 	if !(variance >= 0) || math.IsInf(variance, 1) {

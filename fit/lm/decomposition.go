@@ -26,9 +26,10 @@ type triangle struct {
 // factorise forms R and Qᵀr from J (m×n) and r (m) by Householder reflections. It returns the first column whose norm
 // is not finite, or -1.
 //
-// Note: the factors are those of [J r]. It is kept transposed, because gonum stores by rows and reflections work on columns, which
-// are long and contiguous this way; r being reflected with the columns, Q is never needed. LAPACK's Gelqf would do the
-// same, four times slower: it guards every norm against overflow. A column that overflows here, above 10¹⁵⁴, is refused instead.
+// Note: the factors are those of [J r]. It is kept transposed, because gonum stores by rows and reflections work on
+// columns, which are long and contiguous this way; r being reflected with the columns, Q is never needed. LAPACK's
+// Gelqf would do the same, four times slower: it guards every norm against overflow. A column that overflows here,
+// above 10¹⁵⁴, is refused instead.
 func (t *triangle) factorise(j *mat.Dense, r []float64) (bad int) {
 	n, m := t.n, t.m
 	raw := j.RawMatrix()

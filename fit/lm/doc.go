@@ -24,6 +24,7 @@
 // determine.
 //
 // The method finds a minimum, not the lowest one, and may end in a valley that runs to infinity: starts matter. The 27
-// problems of the NIST Statistical Reference Datasets are solved from both published starts with the defaults, to 8 digits or more;
-// but from the far start of one of them, MGH10, at which the model is 10⁸ times too large, other first radii can lead away.
+// problems of the NIST Statistical Reference Datasets are solved from both published starts with the defaults, to 8
+// digits or more; but from the far start of one of them, MGH10, at which the model is 10⁸ times too large, other first
+// radii can lead away.
 package lm

@@ -54,8 +54,8 @@ func linear(a *mat.Dense, y []float64) Problem {
 	}
 }
 
-// rosenbrock is the valley of J. J. Moré, B. S. Garbow, K. E. Hillstrom, ACM Trans. Math. Software 7 (1981) 17, problem 1: zero
-// residuals at (1, 1).
+// rosenbrock is the valley of J. J. Moré, B. S. Garbow, K. E. Hillstrom, ACM Trans. Math. Software 7 (1981) 17, problem
+// 1: zero residuals at (1, 1).
 func rosenbrock() Problem {
 	return Problem{
 		Size: 2,
@@ -119,6 +119,7 @@ func problems(t *testing.T) map[string]struct {
 		"decay exact":       {p: decay(50, []float64{3, 2, 1}, 0), start: []float64{1, 0.3, 0}},
 		"decay unit":        {p: decay(50, []float64{3, 2, 1}, 0.01), start: []float64{1, 0.3, 0}, s: Settings{UnitScaling: true, MaxStep: 0.5}},
 		"decay bounded":     {p: decay(50, []float64{3, 2, 1}, 0.01), start: []float64{1, 0.3, 0}, s: Settings{Lower: []float64{0, 0, 0}, Upper: []float64{2.5, math.Inf(1), 2}}},
+		"decay to a step":   {p: decay(50, []float64{3, 2, 1}, 0.01), start: []float64{1, 0.3, 0}, s: Settings{GradientTolerance: 1e-99, CostTolerance: 1e-99, StepTolerance: 1e-4}},
 		"rosenbrock":        {p: rosenbrock(), start: []float64{-1.2, 1}},
 		"few iterations":    {p: rosenbrock(), start: []float64{-1.2, 1}, s: Settings{MaxIterations: 5}},
 	}
@@ -225,8 +226,8 @@ func TestInvariants(t *testing.T) {
 	}
 }
 
-// TestScaleInvariance multiplies variables and residuals by constants. With powers of two that is exact in float64, so the
-// answers must agree to the bit; with powers of ten, to rounding. An absolute tolerance anywhere fails this.
+// TestScaleInvariance multiplies variables and residuals by constants. With powers of two that is exact in float64, so
+// the answers must agree to the bit; with powers of ten, to rounding. An absolute tolerance anywhere fails this.
 func TestScaleInvariance(t *testing.T) {
 	for name, c := range problems(t) {
 		if c.s.UnitScaling {
@@ -399,6 +400,17 @@ func boxed(t *testing.T, a *mat.Dense, y, low, high []float64) []float64 {
 	}
 }
 
+// TestBoundsOneStep: a linear problem with an active bound takes one step, the others being solved for with the
+// variable at its bound. min (x_0 + x_1 − 4)² + (x_0 − 3)² + (x_1)² with x_0 ≤ 1 is at x_1 = 3/2.
+func TestBoundsOneStep(t *testing.T) {
+	a := mat.NewDense(3, 2, []float64{1, 1, 1, 0, 0, 1})
+	r := solve(t, linear(a, []float64{4, 3, 0}), []float64{-5, -5}, &Settings{Upper: []float64{1, math.Inf(1)}, InitialRadius: 1e6})
+	checkClose(t, "x", r.X, []float64{1, 1.5}, 1e-14)
+	if r.Iterations != 1 || !slices.Equal(r.AtBound, []bool{true, false}) {
+		t.Errorf("%d steps, want 1; AtBound %v", r.Iterations, r.AtBound)
+	}
+}
+
 func TestBoundsNonlinear(t *testing.T) {
 	p := decay(50, []float64{3, 2, 1}, 0.01)
 	start := []float64{1, 0.3, 0}
@@ -500,11 +512,19 @@ func TestStep(t *testing.T) {
 		if !(math.Abs(s.predicted()-want) <= 1e-12*mat.Dot(r, r)) {
 			t.Errorf("trial %d: predicted %v, want %v", trial, s.predicted(), want)
 		}
+
+		// A step above MaxStep is bent, not only cut.
+		s.step(math.Inf(1), math.Inf(1))
+		most := largest(s.p) / 10
+		s.step(math.Inf(1), most)
+		if !s.cut || !(s.lambda > 0) || !(largest(s.p) <= most*(1+1e-12)) || !(largest(s.p) > most/100) {
+			t.Errorf("trial %d: λ %v, largest change %v of %v", trial, s.lambda, largest(s.p), most)
+		}
 	}
 }
 
-// TestRightSingular compares with the singular values of gonum, and looks at a matrix whose columns differ by 2⁹⁰: its small
-// singular values must not drown.
+// TestRightSingular compares with the singular values of gonum, and looks at a matrix whose columns differ by 2⁹⁰: its
+// small singular values must not drown.
 func TestRightSingular(t *testing.T) {
 	random := rand.New(rand.NewPCG(5, 6))
 	for n := 1; n <= 9; n++ {
@@ -605,12 +625,27 @@ func TestNonFinite(t *testing.T) {
 	}
 	want := []float64{math.Exp(1.5)}
 	wide := &Settings{InitialRadius: 100}
-	for name, p := range map[string]Problem{
-		"residuals":   log(0),
-		"Jacobian":    log(4),
-		"differences": {Size: 2, Residual: log(0).Residual},
+	for name, c := range map[string]struct {
+		p       Problem
+		start   float64
+		refused float64 // where the first full step leads
+	}{
+		"residuals":   {log(0), 50, -70.6},
+		"Jacobian":    {log(4), 9, 2.73},
+		"differences": {Problem{Size: 2, Residual: log(0).Residual}, 50, -70.6},
 	} {
-		r := solve(t, p, []float64{50}, wide)
+		first := math.NaN()
+		p := c.p
+		p.Residual = func(dst, x []float64) {
+			if math.IsNaN(first) && math.Abs(x[0]-c.start) > 1e-3*c.start {
+				first = x[0]
+			}
+			c.p.Residual(dst, x)
+		}
+		r := solve(t, p, []float64{c.start}, wide)
+		if !(math.Abs(first-c.refused) <= 0.1) {
+			t.Errorf("%s: the first step led to %v, expected %v", name, first, c.refused)
+		}
 		if !r.Status.Converged() {
 			t.Errorf("%s: %v, %s", name, r.Status, r.Reason)
 		}
@@ -650,8 +685,8 @@ func TestNonFinite(t *testing.T) {
 	}
 }
 
-// TestDifferences checks the three stencils on r = exp(x) − exp(start), which ends at once, at a point with room and at bounds on either
-// side, and that bounds are kept.
+// TestDifferences checks the three stencils on r = exp(x) − exp(start), which ends at once, at a point with room and at
+// bounds on either side, and that bounds are kept.
 func TestDifferences(t *testing.T) {
 	for _, c := range []struct{ x, low, high float64 }{
 		{1, 0, 2}, {1, 1, 2}, {1, 0, 1}, {0, -1, 1}, {0, 0, 1}, {0, -1, 0}, {1, math.Inf(-1), math.Inf(1)},
@@ -751,6 +786,7 @@ func TestSettingsErrors(t *testing.T) {
 		{Settings{}, []float64{1, nan}, "lm: start[1] is NaN, must be finite"},
 		{Settings{}, []float64{inf, 1}, "lm: start[0] is +Inf, must be finite"},
 		{Settings{Lower: []float64{0, 2}}, ok, "lm: start[1] is 1, must lie within its bounds 2 and +Inf"},
+		{Settings{Upper: []float64{0.5, 2}}, ok, "lm: start[0] is 1, must lie within its bounds -Inf and 0.5"},
 		{Settings{Lower: []float64{0, 2}, Upper: []float64{2, 1}}, ok, "lm: Lower[1] is 2 and Upper[1] is 1, must be numbers in ascending order"},
 		{Settings{Upper: []float64{nan, 1}}, ok, "lm: Lower[0] is -Inf and Upper[0] is NaN, must be numbers in ascending order"},
 	} {

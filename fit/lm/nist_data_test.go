@@ -15,7 +15,8 @@ import (
 
 const nistFolder = "../../testdata/nist-strd"
 
-// nistProblem is one file of the NIST Statistical Reference Datasets, nonlinear regression (see the README beside the files).
+// nistProblem is one file of the NIST Statistical Reference Datasets, nonlinear regression (see the README beside the
+// files).
 type nistProblem struct {
 	name      string
 	model     nistModel

@@ -13,8 +13,8 @@ const (
 	DefaultMaxIterations     = 1000
 )
 
-// differenceEase multiplies the default tolerances of gradient and step, and its square that of the cost, if the Jacobian comes from
-// differences: its relative error of ε^⅔, 4e-11, is then what the tests see.
+// differenceEase multiplies the default tolerances of gradient and step, and its square that of the cost, if the
+// Jacobian comes from differences: its relative error of ε^⅔, 4e-11, is then what the tests see.
 const differenceEase = 10
 
 // Settings steer a solve. The zero value, and a nil pointer, mean the defaults. They ask for all the digits that float64

@@ -10,11 +10,13 @@ import (
 const (
 	// A step is taken when it lowers the cost by at least this fraction of the prediction (Moré 1978, section 4).
 	acceptable = 1e-4
-	// Below the first ratio the linear model is poor and the region shrinks, above the second it is good and the region grows.
+	// Below the first ratio the linear model is poor and the region shrinks, above the second it is good and the region
+	// grows.
 	poor, good = 0.25, 0.75
-	// The region grows to twice the step, and shrinks to between 0.1 and 0.4 of it, by a parabola through the costs. Note: 0.4
-	// and not the customary 0.5, because growing and shrinking must not cancel: in a narrow curved valley the radius would swing
-	// between two values and every second step would be refused. It saves a sixth of the evaluations on the NIST problems.
+	// The region grows to twice the step, and shrinks to between 0.1 and 0.4 of it, by a parabola through the costs.
+	// Note: 0.4 and not the customary 0.5, because growing and shrinking must not cancel: in a narrow curved valley the
+	// radius would swing between two values and every second step would be refused. It saves a sixth of the evaluations
+	// on the NIST problems.
 	growth, leastShrink, mostShrink = 2, 0.4, 0.1
 	// Residuals are computed with a few roundings more than that of x.
 	evaluation = 10
@@ -26,12 +28,13 @@ const (
 type Problem struct {
 	// Size is m, the number of residuals, at least the number of variables.
 	Size int
-	// Residual fills dst, of length m, with r(x). It must overwrite every element, must not keep or change x, and must give the
-	// same bits for the same x. An x for which there are no residuals is answered with NaN or ±Inf in any element.
+	// Residual fills dst, of length m, with r(x). It must overwrite every element, must not keep or change x, and must
+	// give the same bits for the same x. An x for which there are no residuals is answered with NaN or ±Inf in any
+	// element.
 	Residual func(dst, x []float64)
-	// Jacobian fills dst, m×n, with dst_{ij} = ∂r_i/∂x_j. It overwrites every element and does not keep or change x, which is always the point for
-	// which Residual was called last, so that common terms may be kept from there. Nil: central differences with
-	// relative steps, 2n evaluations of Residual.
+	// Jacobian fills dst, m×n, with dst_{ij} = ∂r_i/∂x_j. It overwrites every element and does not keep or change x,
+	// which is always the point for which Residual was called last, so that common terms may be kept from there. Nil:
+	// central differences with relative steps, 2n evaluations of Residual.
 	Jacobian func(dst *mat.Dense, x []float64)
 }
 
@@ -69,12 +72,13 @@ func (e *NonFiniteError) Error() string {
 
 // Solve minimises the problem's cost from start, which it does not change. Nil settings mean the defaults.
 //
-// The first radius is, unless given, ‖D·start‖: the first step may be as long as the start itself. If that is zero it is ‖r‖, which has the
-// same unit. With UnitScaling it is 1, a factor of e for a logarithm.
+// The first radius is, unless given, ‖D·start‖: the first step may be as long as the start itself. If that is zero it
+// is ‖r‖, which has the same unit. With UnitScaling it is 1, a factor of e for a logarithm.
 //
-// Where the residuals at a trial point, or the Jacobian there, are not finite the step is refused and the region shrinks.
-// At the start they are a *NonFiniteError, and the result holds only the Status. Settings, a start that is not finite or out of its bounds, and
-// fewer residuals than variables are errors with a nil result. A solve that ends without convergence is not an error: see Status.
+// Where the residuals at a trial point, or the Jacobian there, are not finite the step is refused and the region
+// shrinks. At the start they are a *NonFiniteError, and the result holds only the Status. Settings, a start that is not
+// finite or out of its bounds, and fewer residuals than variables are errors with a nil result. A solve that ends
+// without convergence is not an error: see Status.
 //
 // Solve panics on a Problem without Residual or Size, an empty start, and bounds of another length than start.
 //
@@ -162,8 +166,8 @@ func (s *state) residual(dst, x []float64) {
 	s.residuals++
 }
 
-// linearise computes the Jacobian at x into spare, exchanges it with jac and factorises it. It returns the first column that is
-// not finite, or -1; then the former Jacobian is in spare.
+// linearise computes the Jacobian at x into spare, exchanges it with jac and factorises it. It returns the first column
+// that is not finite, or -1; then the former Jacobian is in spare.
 func (s *state) linearise() (bad int) {
 	s.jac, s.spare = s.spare, s.jac
 	if s.problem.Jacobian == nil {
@@ -250,7 +254,8 @@ func (s *state) advance() {
 		s.step(s.radius, o.MaxStep)
 		predicted := s.predicted()
 		if !(predicted > 0) {
-			// The bounds took away all that was to be gained. A smaller step is closer to the gradient, which points inside.
+			// The bounds took away all that was to be gained. A smaller step is closer to the gradient, which points
+			// inside.
 			s.radius /= 4
 			if barren++; barren > maxBarren {
 				s.stop(Stalled, s.length, s.radius)
@@ -282,8 +287,9 @@ func (s *state) advance() {
 		}
 		actual /= 2
 		// Where rounding hides the decrease, the ratio tends to 1 and the prediction is trusted (Conn, Gould and Toint,
-		// Trust-Region Methods, 2000, section 17.4.2). Note: only for a full step, the last ones of a good solve. With a
-		// wrong Jacobian the radius shrinks until all steps are lost in rounding, and those must not be taken for success.
+		// Trust-Region Methods, 2000, section 17.4.2). Note: only for a full step, the last ones of a good solve. With
+		// a wrong Jacobian the radius shrinks until all steps are lost in rounding, and those must not be taken for
+		// success.
 		var noise float64
 		if full {
 			noise = evaluation * (epsilon*s.cost + s.rounding*math.Sqrt(2*s.cost))
@@ -351,8 +357,6 @@ func (s *state) resize(ratio, actual float64) {
 		s.radius = math.Min(s.radius, s.length) * math.Max(mostShrink, math.Min(factor, leastShrink))
 	case ratio > good:
 		s.radius = math.Max(s.radius, growth*s.length)
-	case s.lambda == 0:
-		s.radius = growth * s.length
 	}
 }
 

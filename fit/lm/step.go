@@ -96,8 +96,9 @@ func (s *state) split(rhs []float64) {
 //
 //	a_i = −σ_i·c_i/(σ_i² + λ)
 //
-// with λ = 0 if that is not longer than the radius and else with the λ that gives it the length of the radius. Newton's method on
-// 1/‖a(λ)‖ − 1/radius (Hebden 1973, Moré 1978): that function is concave, so the iterates rise to the root from λ = 0.
+// with λ = 0 if that is not longer than the radius and else with the λ that gives it the length of the radius. Newton's
+// method on 1/‖a(λ)‖ − 1/radius (Hebden 1973, Moré 1978): that function is concave, so the iterates rise to the root
+// from λ = 0.
 func (s *state) damp(radius float64) {
 	const (
 		tolerance = 1e-2

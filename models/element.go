@@ -2,6 +2,7 @@ package models
 
 import (
 	"math"
+	"strings"
 
 	"gonum.org/v1/gonum/mathext"
 )
@@ -97,8 +98,9 @@ const (
 const lossReference = 2 * math.Pi * 1000
 
 type parameterLaw struct {
-	unit  string
-	scale Scale
+	symbol string // in the form that an error suggests
+	unit   string
+	scale  Scale
 	// quantity is the trade's word for the parameter.
 	quantity string
 }
@@ -110,16 +112,16 @@ var laws = [...]struct {
 	name       string
 	parameters []parameterLaw
 }{
-	Resistor:  {"", []parameterLaw{{"Ω", LogScale, "resistance"}}},
-	Inductor:  {"", []parameterLaw{{"H", LogScale, "inductance"}}},
-	Capacitor: {"", []parameterLaw{{"F", LogScale, "capacitance"}}},
+	Resistor:  {"", []parameterLaw{{"R", "Ω", LogScale, "resistance"}}},
+	Inductor:  {"", []parameterLaw{{"L", "H", LogScale, "inductance"}}},
+	Capacitor: {"", []parameterLaw{{"C", "F", LogScale, "capacitance"}}},
 	LossCapacitor: {"loss", []parameterLaw{
-		{"F", LogScale, "series capacitance at 1 kHz"}, {"1", LogScale, "loss tangent"}}},
+		{"C", "F", LogScale, "series capacitance at 1 kHz"}, {"tand", "1", LogScale, "loss tangent"}}},
 	ConstantPhase: {"cpe", []parameterLaw{
-		{"F·s^(n−1)", LogScale, "constant-phase coefficient"}, {"1", LogitScale, "exponent"}}},
-	Skin: {"skin", []parameterLaw{{"Ω·s^½", LogScale, "skin-effect coefficient"}}},
+		{"Q", "F·s^(n−1)", LogScale, "constant-phase coefficient"}, {"n", "1", LogitScale, "exponent"}}},
+	Skin: {"skin", []parameterLaw{{"K", "Ω·s^½", LogScale, "skin-effect coefficient"}}},
 	RCLine: {"rcline", []parameterLaw{
-		{"Ω", LogScale, "total line resistance"}, {"F", LogScale, "total line capacitance"}}},
+		{"R", "Ω", LogScale, "total line resistance"}, {"C", "F", LogScale, "total line capacitance"}}},
 }
 
 // functionElement returns the element that a function name of the notation
@@ -131,6 +133,15 @@ func functionElement(name string) (Element, bool) {
 		}
 	}
 	return 0, false
+}
+
+// form returns how a function is written, such as "loss(C, tand)".
+func (e Element) form() string {
+	var symbols []string
+	for _, p := range laws[e].parameters {
+		symbols = append(symbols, p.symbol)
+	}
+	return laws[e].name + "(" + strings.Join(symbols, ", ") + ")"
 }
 
 // leafElement returns the element that a plain name stands for: by its first

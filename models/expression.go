@@ -3,10 +3,13 @@ package models
 import (
 	"fmt"
 	"strings"
+	"unicode"
 	"unicode/utf8"
 )
 
-// Limits of an expression, so that no text can exhaust memory or stack.
+// Limits of an expression, so that no text can exhaust memory or stack. A
+// tree of maxParameters is less deep than maxDepth, so that what
+// [Circuit.String] writes can always be read again.
 const (
 	maxParameters = 64
 	maxDepth      = 64
@@ -40,23 +43,14 @@ func (e *SyntaxError) Error() string {
 //
 // The letter that begins a name says the element (R, L, C), as do the names
 // ESR, ESL and DCR with or without digits; arguments of functions are free
-// of that rule. A name may appear once. The error is a [*SyntaxError].
+// of that rule. A name may appear once. White space separates and is
+// otherwise ignored. The error is a [*SyntaxError].
 func Parse(expression string) (*Circuit, error) {
 	p := &parser{text: expression, seen: map[string]bool{}}
 	p.next()
 	root := p.series(0)
-	if p.err == nil && p.token != "" {
-		what := "`+`, `||` or the end"
-		hint := ""
-		switch {
-		case p.token == ")":
-			hint = "there is one `)` too many, or a `(` is missing"
-		case isLetter(p.token[0]) || p.token == "(":
-			hint = "put `+` for series or `||` for parallel between two elements"
-		case p.token == "|":
-			hint = "parallel is written `||`"
-		}
-		p.fail(what, hint)
+	if p.token != "" {
+		p.failOperator("`+`, `||` or the end", "there is one `)` too many, or a `(` is missing")
 	}
 	if p.err != nil {
 		return nil, p.err
@@ -67,7 +61,7 @@ func Parse(expression string) (*Circuit, error) {
 type parser struct {
 	text       string
 	start, end int    // of the token, in bytes
-	token      string // a name, an operator, or one unknown character; "" at the end
+	token      string // a name, a number, an operator, or one unknown character; "" at the end
 	parameters []Parameter
 	seen       map[string]bool
 	err        *SyntaxError
@@ -77,15 +71,14 @@ func isLetter(b byte) bool { return b|0x20 >= 'a' && b|0x20 <= 'z' }
 func isDigit(b byte) bool  { return b >= '0' && b <= '9' }
 
 func (p *parser) next() {
-	i := p.end
-	for i < len(p.text) && (p.text[i] == ' ' || p.text[i] == '\t') {
-		i++
-	}
-	p.start = i
+	p.start = len(p.text) - len(p.peek())
+	i := p.start
 	switch {
 	case i == len(p.text):
 	case isLetter(p.text[i]) || isDigit(p.text[i]) || p.text[i] == '_':
-		for i < len(p.text) && (isLetter(p.text[i]) || isDigit(p.text[i]) || p.text[i] == '_') {
+		// A number is one token too, so that an error shows all of it.
+		number := isDigit(p.text[i])
+		for i < len(p.text) && (isLetter(p.text[i]) || isDigit(p.text[i]) || p.text[i] == '_' || number && p.text[i] == '.') {
 			i++
 		}
 	case strings.HasPrefix(p.text[i:], "||"):
@@ -111,6 +104,23 @@ func (p *parser) fail(expected, hint string) {
 		Column:     utf8.RuneCountInString(p.text[:p.start]) + 1,
 		Found:      found, Expected: expected, Hint: hint,
 	}
+}
+
+// failOperator reports that something else stands where an operator or the
+// end of a group should be.
+func (p *parser) failOperator(expected, unbalanced string) {
+	hint := unbalanced
+	switch {
+	case p.token == "|" || p.token == "/" || strings.HasPrefix(p.token, "∥") || strings.HasPrefix(p.token, "‖"):
+		hint = parallelHint
+	case p.token == "-" || p.token == "–" || p.token == "−":
+		hint = "series is written `+`"
+	case p.token == "=":
+		hint = valuesHint
+	case p.token != "" && p.token != ")":
+		hint = "put `+` for series or `||` for parallel between two elements"
+	}
+	p.fail(expected, hint)
 }
 
 func (p *parser) series(depth int) *Node {
@@ -146,29 +156,48 @@ func (p *parser) chain(kind NodeKind, operator string, depth int, operand func(i
 	return n
 }
 
-const namesHint = "a name begins with R, L or C, or is ESR, ESL or DCR; functions are loss(C, tand), cpe(Q, n), skin(K) and rcline(R, C)"
+const (
+	namesHint    = "a name begins with R, L or C, or is ESR, ESL or DCR"
+	parallelHint = "parallel is written `||`"
+	valuesHint   = "an expression has names only; give values with --set, --start or --fix NAME=VALUE"
+)
+
+// functionsHint lists the functions as they are written.
+func functionsHint() string {
+	var forms []string
+	for e, law := range laws {
+		if law.name != "" {
+			forms = append(forms, Element(e).form())
+		}
+	}
+	return "the functions are " + strings.Join(forms, ", ")
+}
 
 func (p *parser) part(depth int) *Node {
-	if depth > maxDepth {
-		p.fail(fmt.Sprintf("at most %d nested brackets", maxDepth), "")
-		return nil
-	}
 	if p.token == "(" {
+		if depth == maxDepth {
+			p.fail(fmt.Sprintf("at most %d nested brackets", maxDepth), "leave out brackets that change nothing")
+			return nil
+		}
 		p.next()
 		n := p.series(depth + 1)
 		if p.err == nil && p.token != ")" {
-			p.fail("`+`, `||` or `)`", "a `(` is not closed")
+			p.failOperator("`+`, `||` or `)`", "a `(` is not closed")
 		}
 		p.next()
 		return n
 	}
 	if p.token == "" || !isLetter(p.token[0]) {
-		hint := namesHint
+		hint := "`+` and `||` stand between two elements"
 		switch {
-		case p.token == "|" || p.token == "||":
-			hint = "parallel is written `A || B`, with an element on both sides"
+		case strings.TrimSpace(p.text) == "":
+			hint = "write an expression, such as \"ESR + ESL + C\""
 		case p.token != "" && isDigit(p.token[0]):
-			hint = "an expression has names only; give values with --set, --start or --fix NAME=VALUE"
+			hint = valuesHint
+		case p.token == "|":
+			hint = parallelHint
+		case p.token != "" && p.token != ")" && p.token != "+" && p.token != "||":
+			hint = namesHint
 		}
 		p.fail("an element or `(`", hint)
 		return nil
@@ -178,21 +207,43 @@ func (p *parser) part(depth int) *Node {
 	}
 	element, ok := leafElement(p.token)
 	if !ok {
-		hint := namesHint
-		if _, ok := leafElement(strings.ToUpper(p.token)); ok {
-			hint = fmt.Sprintf("did you mean %q? names are case-sensitive", upperLead(p.token))
-		} else if e, ok := functionElement(strings.ToLower(p.token)); ok {
-			hint = fmt.Sprintf("did you mean %q?", laws[e].name)
-		}
-		p.fail("an element's name", hint)
+		p.fail("an element's name", p.nameHint())
 		return nil
 	}
 	n := &Node{Kind: Leaf, Element: element}
-	p.parameter(n, laws[element].parameters[0])
-	if p.err == nil && p.token == "(" {
-		p.fail("`+`, `||` or the end", "functions are loss(C, tand), cpe(Q, n), skin(K) and rcline(R, C)")
+	name := p.token
+	p.parameter(n, laws[element].parameters[0], "")
+	if p.token == "(" {
+		hint := "put `+` or `||` before a bracket; " + functionsHint()
+		if element, ok := functionElement(strings.ToLower(name)); ok {
+			hint = "did you mean " + element.form() + "?"
+		} else if p.peek() != "" && isDigit(p.peek()[0]) {
+			hint = valuesHint
+		}
+		p.fail("`+`, `||` or the end", hint)
 	}
 	return n
+}
+
+// peek returns the text after the present token.
+func (p *parser) peek() string {
+	return strings.TrimLeftFunc(p.text[p.end:], unicode.IsSpace)
+}
+
+// nameHint guesses what a name that is no element was meant to be.
+func (p *parser) nameHint() string {
+	if element, ok := functionElement(strings.ToLower(p.token)); ok {
+		return "did you mean " + element.form() + "?"
+	}
+	if strings.HasPrefix(p.peek(), "(") {
+		return functionsHint()
+	}
+	if upper := upperLead(p.token); upper != p.token {
+		if _, ok := leafElement(upper); ok {
+			return fmt.Sprintf("did you mean %q? names are case-sensitive", upper)
+		}
+	}
+	return namesHint
 }
 
 // upperLead puts the part of a name that says the element into capitals.
@@ -208,15 +259,15 @@ func upperLead(name string) string {
 func (p *parser) function(element Element) *Node {
 	law := laws[element]
 	n := &Node{Kind: Leaf, Element: element}
-	form := law.name + "(" + strings.TrimSuffix(strings.Repeat("name, ", len(law.parameters)), ", ") + ")"
+	form := "write " + element.form()
 	p.next()
 	if p.token != "(" {
-		p.fail("`(`", "write "+form)
+		p.fail("`(`", form)
 		return nil
 	}
 	for i, parameter := range law.parameters {
 		p.next()
-		p.parameter(n, parameter)
+		p.parameter(n, parameter, form)
 		if p.err != nil {
 			return nil
 		}
@@ -225,7 +276,7 @@ func (p *parser) function(element Element) *Node {
 			want = ")"
 		}
 		if p.token != want {
-			p.fail("`"+want+"`", "write "+form)
+			p.fail("`"+want+"`", form)
 			return nil
 		}
 	}
@@ -234,12 +285,12 @@ func (p *parser) function(element Element) *Node {
 }
 
 // parameter takes the present token as the name of a leaf's next parameter.
-func (p *parser) parameter(n *Node, law parameterLaw) {
+func (p *parser) parameter(n *Node, law parameterLaw, form string) {
 	switch {
 	case p.token == "" || !isLetter(p.token[0]):
-		hint := ""
+		hint := form
 		if p.token != "" && (isDigit(p.token[0]) || p.token == "-" || p.token == ".") {
-			hint = "arguments are names, not numbers; give values with --set, --start or --fix NAME=VALUE"
+			hint = valuesHint
 		}
 		p.fail("a parameter's name", hint)
 		return
@@ -247,7 +298,7 @@ func (p *parser) parameter(n *Node, law parameterLaw) {
 		p.fail("a name not used before", "a name may appear once; number the elements, such as R1 and R2")
 		return
 	case len(p.parameters) == maxParameters:
-		p.fail(fmt.Sprintf("at most %d parameters", maxParameters), "")
+		p.fail(fmt.Sprintf("at most %d parameters", maxParameters), "no sweep determines so many; leave out elements or write simpler ones")
 		return
 	}
 	p.seen[p.token] = true

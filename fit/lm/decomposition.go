@@ -27,9 +27,9 @@ type triangle struct {
 // is not finite, or -1.
 //
 // Note: the factors are those of [J r]. It is kept transposed, because gonum stores by rows and reflections work on
-// columns, which are long and contiguous this way; r being reflected with the columns, Q is never needed. LAPACK's
-// Gelqf would do the same, four times slower: it guards every norm against overflow. A column that overflows here,
-// above 10¹⁵⁴, is refused instead.
+// columns, which are long and contiguous this way; r being reflected with the columns, Q is never needed. gonum's
+// Gelqf does the same and takes 1.3 to 1.6 times as long for 402×8 to 402×3, because it guards every norm against
+// overflow. A column that overflows here, above 10¹⁵⁴, is refused instead.
 func (t *triangle) factorise(j *mat.Dense, r []float64) (bad int) {
 	n, m := t.n, t.m
 	raw := j.RawMatrix()
@@ -80,12 +80,14 @@ func (t *triangle) projected() []float64 { return t.data[t.n*t.m : t.n*t.m+t.n] 
 //
 // This is the one-sided Jacobi method (Hestenes 1958). It finds small singular values to high relative accuracy
 // however the columns of A are scaled (Demmel and Veselić, SIAM J. Matrix Anal. Appl. 13 (1992) 1204), which
-// bidiagonalisation does not, and for ten variables or fewer it is several times faster.
+// bidiagonalisation does not, and next to gonum's Gesvd it is faster as well: 5 times for three variables, twice for five,
+// 1.3 times for eight.
 func rightSingular(b []float64, k, n int, v []float64) {
 	clear(v[:k*k])
 	for i := range k {
 		v[i*k+i] = 1
 	}
+	tolerance := float64(n) * epsilon // the rounding error of a scalar product
 	for range maxSweeps {
 		rotated := false
 		for p := range k {
@@ -99,7 +101,7 @@ func rightSingular(b []float64, k, n int, v []float64) {
 					yy += yi * yi
 					xy += xi * yi
 				}
-				if !(math.Abs(xy) > epsilon*math.Sqrt(xx)*math.Sqrt(yy)) {
+				if !(math.Abs(xy) > tolerance*math.Sqrt(xx)*math.Sqrt(yy)) {
 					continue
 				}
 				rotated = true

@@ -12,7 +12,7 @@ import (
 
 // Settings of Fit. The zero value of a field means its default.
 type Settings struct {
-	// MaxPoles is the largest number of poles (a pair counts two); default 40, and never more than a third of the points.
+	// MaxPoles is the largest number of poles (a pair counts two); default 30, and never more than a third of the points.
 	MaxPoles int
 	// Iterations is the number of relocations and of polishing steps for each trial order; default 12.
 	Iterations int
@@ -46,7 +46,7 @@ func (s *Settings) checked(points int) (Settings, error) {
 			*v = d
 		}
 	}
-	set(&c.MaxPoles, 40)
+	set(&c.MaxPoles, 30)
 	set(&c.Iterations, 12)
 	setFloat(&c.Significance, 0.01)
 	setFloat(&c.Margin, 10)

@@ -4,12 +4,90 @@ import (
 	"math"
 	"slices"
 
+	"gonum.org/v1/gonum/mat"
+
 	"realpart/fit/lm"
-	"realpart/models"
 )
 
-// profile returns the unknown of a free parameter, below or above its fitted
-// value, at which the smallest cost that the other parameters can reach has
+// profiler finds the smallest cost that a fit can reach with one unknown held.
+// Where the meter's accuracy was stated, its common errors of magnitude and
+// of phase, in units of the stated accuracy, are two more unknowns, each held
+// near zero by one more residual: a rectangular distribution of half-width 1
+// counts as a standard uncertainty of 1/√3 (GUM 4.3.7).
+type profiler struct {
+	result       *Result
+	lm           lm.Problem
+	x            []float64 // at the smallest cost
+	cost         float64
+	lower, upper []float64
+	sigma        float64
+	settings     lm.Settings
+}
+
+func (r *Result) newProfiler() (*profiler, error) {
+	p := r.problem
+	q := &profiler{result: r, lm: p.lm(), x: slices.Clone(r.x), cost: r.Cost, sigma: r.Sigma}
+	q.lower, q.upper = p.bounds(p.settings)
+	if r.Weight == Relative {
+		q.sigma = max(q.sigma, roundingFloor)
+	}
+	q.sigma = max(q.sigma, math.SmallestNonzeroFloat64)
+	if p.magnitude != nil {
+		n := len(r.x)
+		q.lm = p.withMeter(q.sigma)
+		q.x = append(q.x, 0, 0)
+		const far = 30
+		q.lower = append(q.lower, -far, -far)
+		q.upper = append(q.upper, far, far)
+		q.settings = solver(slices.Clone(q.lower), slices.Clone(q.upper))
+		clamp(q.x, q.lower, q.upper)
+		s, err := lm.Solve(q.lm, q.x, &q.settings)
+		if err != nil {
+			return nil, err
+		}
+		q.x, q.cost = s.X[:n+2], s.Cost
+		return q, nil
+	}
+	q.settings = solver(slices.Clone(q.lower), slices.Clone(q.upper))
+	return q, nil
+}
+
+// withMeter returns the problem with the meter's two errors as unknowns.
+func (p *problem) withMeter(sigma float64) lm.Problem {
+	n, rows := len(p.free), 2*len(p.freq)
+	prior := math.Sqrt(3) * sigma
+	part := mat.NewDense(rows, n, nil)
+	return lm.Problem{
+		Size: rows + 2,
+		Residual: func(dst, x []float64) {
+			p.residual(dst[:rows], x[:n])
+			for i := range p.freq {
+				a, b := p.shift(i, complex(x[n]*p.magnitude[i], x[n+1]*p.phase[i]))
+				dst[2*i] -= a
+				dst[2*i+1] -= b
+			}
+			dst[rows], dst[rows+1] = prior*x[n], prior*x[n+1]
+		},
+		Jacobian: func(dst *mat.Dense, x []float64) {
+			p.jacobian(part, x[:n])
+			dst.Zero()
+			dst.Slice(0, rows, 0, n).(*mat.Dense).Copy(part)
+			for i := range p.freq {
+				am, bm := p.shift(i, complex(p.magnitude[i], 0))
+				ap, bp := p.shift(i, complex(0, p.phase[i]))
+				dst.Set(2*i, n, -am)
+				dst.Set(2*i+1, n, -bm)
+				dst.Set(2*i, n+1, -ap)
+				dst.Set(2*i+1, n+1, -bp)
+			}
+			dst.Set(rows, n, prior)
+			dst.Set(rows+1, n+1, prior)
+		},
+	}
+}
+
+// limit returns the unknown of a free parameter, below or above its fitted
+// value, at which the smallest cost that the other unknowns can reach has
 // risen by
 //
 //	2·(cost(x) − cost)/s² = t²
@@ -17,37 +95,33 @@ import (
 // (profile likelihood; Bates and Watts 1988, Nonlinear Regression Analysis,
 // 6.1.2). open is true where it never rises so far: the sweep sets no bound
 // on that side.
-func (r *Result) profile(column int, direction, t float64) (x float64, open bool, err error) {
-	p := r.problem
-	lower, upper := p.bounds(p.settings)
-	end := lower[column]
+func (q *profiler) limit(column int, direction, t float64) (x float64, open bool, err error) {
+	r, sigma, settings := q.result, q.sigma, q.settings
+	copy(settings.Lower, q.lower)
+	copy(settings.Upper, q.upper)
+	end := q.lower[column]
 	if direction > 0 {
-		end = upper[column]
+		end = q.upper[column]
 	}
-	sigma := max(r.Sigma, math.SmallestNonzeroFloat64)
-	if r.Weight == Relative {
-		sigma = max(sigma, roundingFloor)
-	}
-	settings := solver(slices.Clone(lower), slices.Clone(upper))
 	// rise returns √(2Δcost)/s at x: it grows about linearly.
 	rise := func(at float64, from []float64) (float64, []float64, error) {
 		settings.Lower[column], settings.Upper[column] = at, at
 		start := slices.Clone(from)
 		start[column] = at
 		clamp(start, settings.Lower, settings.Upper)
-		s, err := lm.Solve(p.lm(), start, &settings)
+		s, err := lm.Solve(q.lm, start, &settings)
 		if err != nil {
 			return 0, nil, err
 		}
-		return math.Sqrt(max(2*(s.Cost-r.Cost), 0)) / sigma, s.X, nil
+		return math.Sqrt(max(2*(s.Cost-q.cost), 0)) / sigma, s.X, nil
 	}
 	step := 0.5
 	if v := math.Sqrt(r.Covariance.At(column, column)); v > 0 && t*v < 2 {
 		step = t * v
 	}
-	inside, outside := r.x[column], r.x[column]
+	inside, outside := q.x[column], q.x[column]
 	insideRise, outsideRise := 0.0, 0.0
-	state := slices.Clone(r.x)
+	state := slices.Clone(q.x)
 	for {
 		outside += direction * step
 		if direction*(outside-end) >= 0 {
@@ -68,7 +142,7 @@ func (r *Result) profile(column int, direction, t float64) (x float64, open bool
 		step *= 1.6
 	}
 	for range 60 {
-		if math.Abs(outside-inside) <= 1e-4*math.Max(math.Abs(outside-r.x[column]), 1e-9) || outsideRise-insideRise <= 1e-6*t {
+		if math.Abs(outside-inside) <= 1e-4*math.Max(math.Abs(outside-q.x[column]), 1e-9) || outsideRise-insideRise <= 1e-6*t {
 			break
 		}
 		share := (t - insideRise) / (outsideRise - insideRise)
@@ -95,73 +169,66 @@ func (r *Result) profile(column int, direction, t float64) (x float64, open bool
 // profile limits: the two-sided 95 % interval where both sides are closed, a
 // one-sided 95 % limit where one is open.
 func (r *Result) bound() error {
-	for c, i := range r.Free {
-		if !r.Parameters[i].Determined {
-			if err := r.profileInterval(c, i); err != nil {
-				return err
-			}
-		}
-	}
-	return nil
+	return r.profileIntervals(func(p *Parameter) bool { return !p.Determined })
 }
 
 // ProfileIntervals replaces the intervals of all free parameters by those of
-// the profile likelihood, which may be lopsided. They cover the scatter and
-// are widened in ln p (n itself for an exponent) by the meter's part.
+// the profile likelihood, which may be lopsided. They cover the scatter and,
+// where an accuracy was stated, the meter.
 func (r *Result) ProfileIntervals() error {
-	for c, i := range r.Free {
-		if r.Parameters[i].Determined {
-			if err := r.profileInterval(c, i); err != nil {
-				return err
-			}
-		}
-	}
-	return nil
+	return r.profileIntervals(func(p *Parameter) bool { return p.Determined })
 }
 
-func (r *Result) profileInterval(c, i int) error {
-	q := &r.Parameters[i]
+func (r *Result) profileIntervals(wanted func(*Parameter) bool) error {
 	nu := float64(r.DegreesOfFreedom)
 	if nu < 1 {
 		return nil
 	}
+	var q *profiler
+	for c, i := range r.Free {
+		if !wanted(&r.Parameters[i]) {
+			continue
+		}
+		if q == nil {
+			var err error
+			if q, err = r.newProfiler(); err != nil {
+				return err
+			}
+		}
+		if err := q.interval(c, &r.Parameters[i], nu); err != nil {
+			return err
+		}
+	}
+	r.problem.set(r.x)
+	return nil
+}
+
+func (q *profiler) interval(column int, p *Parameter, nu float64) error {
 	two, one := studentQuantile(0.975, nu), studentQuantile(0.95, nu)
-	low, lowOpen, err := r.profile(c, -1, two)
+	low, lowOpen, err := q.limit(column, -1, two)
 	if err != nil {
 		return err
 	}
-	high, highOpen, err := r.profile(c, 1, two)
+	high, highOpen, err := q.limit(column, 1, two)
 	if err != nil {
 		return err
 	}
 	if lowOpen != highOpen {
 		if lowOpen {
-			high, highOpen, err = r.profile(c, 1, one)
+			high, highOpen, err = q.limit(column, 1, one)
 		} else {
-			low, lowOpen, err = r.profile(c, -1, one)
+			low, lowOpen, err = q.limit(column, -1, one)
 		}
 		if err != nil {
 			return err
 		}
 	}
-	// The meter's part widens each side as a root sum of squares.
-	meter := 0.0
-	if r.MeterCovariance != nil {
-		meter = r.MeterCovariance.At(c, c)
-	}
-	widen := func(side float64) float64 {
-		d := side - r.x[c]
-		return r.x[c] + math.Copysign(math.Sqrt(d*d+two*two*meter), d)
-	}
-	q.Low95, q.High95 = math.NaN(), math.NaN()
+	p.Low95, p.High95 = math.NaN(), math.NaN()
 	if !lowOpen {
-		q.Low95 = q.Scale.Value(widen(low))
+		p.Low95 = p.Scale.Value(low)
 	}
 	if !highOpen {
-		q.High95 = q.Scale.Value(widen(high))
-	}
-	if q.Scale == models.LogitScale && q.Determined {
-		q.Determined = q.High95-q.Low95 <= determinedExponent
+		p.High95 = p.Scale.Value(high)
 	}
 	return nil
 }

@@ -4,6 +4,7 @@ import (
 	"fmt"
 	"math"
 	"math/cmplx"
+	"slices"
 	"sort"
 	"strings"
 )
@@ -76,6 +77,7 @@ func readDelimited(src *source, o Options) (*parsed, error) {
 type builder struct {
 	*reader
 	*parsed
+	assumed []role // whose unit was taken for granted
 }
 
 func (b *builder) refuse(e *Error) {
@@ -117,34 +119,37 @@ func (b *builder) build() {
 			}
 		}
 	}
-	b.assumptions()
 	b.joinHalves()
+	b.assumptions()
 	b.nameParts()
 }
 
-// assumptions are the units that were taken for granted.
-func (b *builder) assumptions() {
-	var assumed []string
-	seen := map[string]bool{}
-	for _, seg := range b.segments {
-		p := seg.plan
-		if p.head < 0 && len(b.opt.Columns) == 0 {
-			b.warn(WarnNoHeader, "no header: the three columns were taken as frequency in Hz, |Z| in Ω and phase in degrees; --columns and --units say otherwise")
+// assume warns of the units of used columns that were taken for granted.
+func (b *builder) assume(seg *segment, columns ...int) {
+	p := seg.plan
+	if p.head < 0 && len(b.opt.Columns) == 0 {
+		b.warn(WarnNoHeader, "no header: the three columns were taken as frequency in Hz, |Z| in Ω and phase in degrees; --columns and --units say otherwise")
+		return
+	}
+	for _, i := range columns {
+		if i < 0 {
 			continue
 		}
-		for _, i := range append(freqsOf(p), p.need...) {
-			c := p.cols[i]
-			if dim := roles[c.role].dim; c.unit.dim == "" && dim != "" && dim != "1" && dim != "dB" && !c.role.isAngle() {
-				text := fmt.Sprintf("%s in %s", roles[c.role].name, dim)
-				if !seen[text] {
-					seen[text] = true
-					assumed = append(assumed, text)
-				}
-			}
+		c := p.cols[i]
+		if dim := roles[c.role].dim; c.unit.dim == "" && dim != "" && dim != "1" && dim != "dB" && !c.role.isAngle() && !slices.Contains(b.assumed, c.role) {
+			b.assumed = append(b.assumed, c.role)
 		}
 	}
-	if len(assumed) > 0 {
-		b.warn(WarnUnitAssumed, "no unit stated: %s; --units says otherwise", strings.Join(assumed, ", "))
+}
+
+// assumptions puts what was assumed into one warning.
+func (b *builder) assumptions() {
+	var texts []string
+	for _, r := range b.assumed {
+		texts = append(texts, fmt.Sprintf("%s in %s", roles[r].name, roles[r].dim))
+	}
+	if len(texts) > 0 {
+		b.warn(WarnUnitAssumed, "no unit stated: %s; --units says otherwise", strings.Join(texts, ", "))
 	}
 }
 
@@ -177,6 +182,8 @@ func (b *builder) addGroup(seg *segment, g *group) {
 	if !b.plausible(seg, g, way, f) {
 		return
 	}
+	b.assume(seg, g.freq, way.a, way.b)
+	b.reading.markUsed(seg.plan, way)
 	conn, ref := "", 0.0
 	if s != nil {
 		conn, ref = b.connection(way.port)

@@ -168,10 +168,12 @@ func (p *parsed) finished(data []byte, o Options) ([]*Sweep, error) {
 
 // parseFile dispatches on the format.
 func parseFile(name string, data []byte, o Options) (*parsed, error) {
-	_, _ = splitSheet(name)
+	file, sheet := splitSheet(name)
 	switch {
-	case false:
-		return nil, nil
+	case isSpreadsheet(data):
+		return readSpreadsheet(name, data, sheet, o)
+	case isCompound(data):
+		return nil, &Error{File: name, Found: "an old or encrypted document", Expected: "text or a spreadsheet", Hint: "save as .xlsx without password, or as CSV", bare: true}
 	case len(data) == 0:
 		return nil, &Error{File: name, Line: 1, Column: 1, Found: "an empty file", Expected: "a header and rows of numbers", bare: true}
 	}
@@ -181,8 +183,8 @@ func parseFile(name string, data []byte, o Options) (*parsed, error) {
 			Expected: "text or a spreadsheet", Hint: "export the sweep as CSV or Touchstone"}
 	}
 	src := newSource(name, text, enc)
-	if false {
-		return nil, nil
+	if isTouchstone(file, src) {
+		return readTouchstone(src, o)
 	}
 	return readDelimited(src, o)
 }

@@ -221,23 +221,26 @@ func openPair(name, one, two string, o Options) ([]*Sweep, error) {
 			Expected: "the same frequencies as in " + one, Hint: "files of the same sweep"}
 	}
 	bl := readers[0]
+	bl.parsed.warnings = nil // those of the join follow
+	for i, h := range []*half{a, b} {
+		if named := files[i].halves[0].seg.plan.cols; countKnown(named) < 2 {
+			bl.note("%s: %s by the file's name", []string{one, two}[i], roles[h.col.role].name)
+		}
+	}
 	if !bl.joinable(a.col.role, b.col.role) {
 		return nil, bl.pairError(two, a, b)
 	}
 	bl.joinPair(a, b)
+	bl.assumptions()
 	p := files[0]
 	p.halves = nil
 	p.dropped = append(p.dropped, files[1].dropped...)
-	p.warnings = append(p.warnings, files[1].warnings...)
 	if len(p.parts) == 1 {
 		p.parts[0].label = ""
 		p.parts[0].meta = p.parts[0].meta.merge(files[1].meta)
 	}
 	p.reading.Columns = append(p.reading.Columns, files[1].reading.Columns...)
 	p.reading.Notes = append(p.reading.Notes, "magnitude and phase come from two files: "+one+" and "+two)
-	if strings.Contains(name, "+") {
-		p.reading.Notes = append(p.reading.Notes, files[1].reading.Notes...)
-	}
 	out, err := p.sweeps(o)
 	for _, s := range out {
 		s.File = name

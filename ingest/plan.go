@@ -20,6 +20,9 @@ type group struct {
 	part  int        // column, -1 if there is none
 	ways  []measured // in order of preference; empty if the group is a half
 	half  int        // the only quantity of an incomplete group, -1
+	// unnamed lists columns of numbers that the header says nothing about, where
+	// it names no quantity at all.
+	unnamed []int
 }
 
 // plan is what is read from the rows below one header.
@@ -68,6 +71,20 @@ func (s *source) plan(t table, o Options, meta Metadata) (*plan, *Error) {
 	}
 	if err != nil {
 		return nil, err
+	}
+	for n := range p.groups {
+		g := &p.groups[n]
+		if len(g.ways) > 0 || g.half >= 0 {
+			continue
+		}
+		for i, c := range p.cols {
+			if !c.known() && i < len(first) && first[i] != "" && looksNumber(first[i], s.decimal) {
+				g.unnamed = append(g.unnamed, i)
+			}
+		}
+		if len(g.unnamed) == 0 {
+			return nil, s.noPair(p, nil, g.freq)
+		}
 	}
 	p.collect()
 	for _, i := range append(append([]int{}, p.need...), freqsOf(p)...) {
@@ -567,11 +584,9 @@ func (s *source) noPair(p *plan, idx []int, freq int) *Error {
 		}
 	}
 	e := s.headError(p, -1, "two columns that give an impedance", hint)
-	e.Found = strings.Join(have, ", ")
-	if len(have) == 0 {
-		e.Found = "none"
+	if len(have) > 0 {
+		e.Found, e.bare = strings.Join(have, ", ")+" and "+roles[roleFreq].name, true
 	}
-	e.bare = true
 	if ambiguous {
 		e.Err = ErrAmbiguous
 	}
@@ -636,6 +651,9 @@ func (p *plan) collect() {
 		}
 		if g.half >= 0 {
 			needed[g.half] = true
+		}
+		for _, i := range g.unnamed {
+			needed[i] = true
 		}
 	}
 	p.need, p.also = p.need[:0], p.also[:0]

@@ -23,6 +23,8 @@ type Reading struct {
 	Dropped    []Dropped
 	Faults     []*Error // all faults, in the order found
 	MoreFaults int      // those beyond the first thousand
+
+	plan *plan // that Columns describe
 }
 
 // ColumnReading is one column of the first table.
@@ -72,6 +74,7 @@ func (r *Reading) setPlan(s *source, pl *plan) {
 	for _, i := range append(freqsOf(pl), pl.need...) {
 		used[i] = true
 	}
+	r.plan = pl
 	compare := map[int]bool{}
 	for _, i := range pl.also {
 		compare[i] = true
@@ -87,6 +90,21 @@ func (r *Reading) setPlan(s *source, pl *plan) {
 			cr.Unit = "(" + roles[c.role].dim + ")"
 		}
 		r.Columns = append(r.Columns, cr)
+	}
+}
+
+// markUsed corrects what setPlan expected once it is known which way to Z was
+// taken.
+func (r *Reading) markUsed(pl *plan, w measured) {
+	if r.plan != pl || len(pl.groups) != 1 {
+		return
+	}
+	for i := range r.Columns {
+		c := &r.Columns[i]
+		if (c.Used || c.Compare) && i != pl.groups[0].freq && pl.cols[i].role != rolePart {
+			c.Used = i == w.a || i == w.b
+			c.Compare = !c.Used
+		}
 	}
 }
 

@@ -73,16 +73,24 @@ func (r *reader) readTables() *Error {
 	for i := 0; i < top; i++ {
 		r.readMetadata(&r.meta, r.lines[i])
 	}
+	var p *plan
+	var seg *segment
 	for {
-		p, err := r.plan(t, r.opt, r.pending.merge(r.meta))
-		if err != nil {
-			return err
+		if p != nil && t.key == p.key && t.unit < 0 == (p.unit < 0) {
+			// The same header again: a page break, or the next part.
+			p.first = t.first
+		} else {
+			var err *Error
+			if p, err = r.plan(t, r.opt, r.pending.merge(r.meta)); err != nil {
+				return err
+			}
+			seg = nil
 		}
-		next, ok := r.readRows(p)
+		next, last, ok := r.readRows(p, seg)
 		if !ok {
 			return nil
 		}
-		t = next
+		t, seg = next, last
 	}
 }
 
@@ -132,10 +140,11 @@ func (r *reader) newSegment(p *plan) *segment {
 	return g
 }
 
-// readRows reads rows until the end or the next header, which it returns.
-func (r *reader) readRows(p *plan) (table, bool) {
+// readRows reads rows until the end or the next header, which it returns. The
+// rows go on with seg, the last segment below the same header, if their
+// frequencies do.
+func (r *reader) readRows(p *plan, seg *segment) (table, *segment, bool) {
 	var cells []span
-	var seg *segment
 	broken := true // something stood between: the next row may start a new part
 	lastNum := int32(-1)
 	freqCol := p.groups[0].freq
@@ -150,8 +159,8 @@ func (r *reader) readRows(p *plan) (table, bool) {
 	for i := p.first; i < len(r.lines); i++ {
 		l := r.lines[i]
 		if r.isComment(l) {
-			if t, ok := r.headerBelow(i, p); ok {
-				return t, true
+			if t, ok := r.headerBelow(i); ok {
+				return t, seg, true
 			}
 			if r.readMetadata(&r.pending, l) {
 				broken = true
@@ -178,8 +187,8 @@ func (r *reader) readRows(p *plan) (table, bool) {
 		if kind != isNumber {
 			switch r.structure(i, p, cells, kind) {
 			case lineHeader:
-				t, _ := r.headerBelow(i, p)
-				return t, true
+				t, _ := r.headerBelow(i)
+				return t, seg, true
 			case lineBreak:
 				broken = true
 				continue
@@ -253,7 +262,7 @@ func (r *reader) readRows(p *plan) (table, bool) {
 			seg.part = append(seg.part, name)
 		}
 	}
-	return table{}, false
+	return table{}, seg, false
 }
 
 // continues reports whether a frequency goes on where the segment stopped: then
@@ -457,7 +466,7 @@ func (r *reader) structure(i int, p *plan, cells []span, kind cellKind) structur
 }
 
 // headerBelow returns the header at line i or, where i is a title, the next one.
-func (r *reader) headerBelow(i int, p *plan) (table, bool) {
+func (r *reader) headerBelow(i int) (table, bool) {
 	if t, ok := r.tryHeader(i); ok {
 		return t, true
 	}

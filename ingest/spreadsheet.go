@@ -1,6 +1,13 @@
 package ingest
 
-import "strings"
+import (
+	"bytes"
+	"fmt"
+	"slices"
+	"strings"
+
+	"github.com/xuri/excelize/v2"
+)
 
 // splitSheet cuts "file.xlsx#sheet" in two.
 func splitSheet(path string) (file, sheet string) {
@@ -8,4 +15,115 @@ func splitSheet(path string) (file, sheet string) {
 		return path[:i+5], path[i+6:]
 	}
 	return path, ""
+}
+
+// isSpreadsheet tells by the first bytes: .xlsx is a zip archive.
+func isSpreadsheet(data []byte) bool { return bytes.HasPrefix(data, []byte("PK\x03\x04")) }
+
+// isCompound: an old binary document (.xls), or an encrypted new one.
+func isCompound(data []byte) bool {
+	return bytes.HasPrefix(data, []byte("\xd0\xcf\x11\xe0\xa1\xb1\x1a\xe1"))
+}
+
+// readSpreadsheet reads a sheet, the first without a name, as rows of cells.
+func readSpreadsheet(name string, data []byte, sheet string, o Options) (*parsed, error) {
+	src, err := openSheet(name, data, sheet, o)
+	if err != nil {
+		return nil, err
+	}
+	return readDelimited(src, o)
+}
+
+// openSheet turns a sheet into a source whose lines are its rows.
+func openSheet(name string, data []byte, sheet string, o Options) (src *source, err error) {
+	bad := func(found, expected, hint string) *Error {
+		return &Error{File: name, Found: found, Expected: expected, Hint: hint, bare: true}
+	}
+	// Note: the library may panic on a damaged archive; for the user that is a
+	// damaged file like any other.
+	defer func() {
+		if r := recover(); r != nil {
+			src, err = nil, bad("a damaged one", "a spreadsheet", "save it again, or export CSV")
+		}
+	}()
+	f, oerr := excelize.OpenReader(bytes.NewReader(data), excelize.Options{RawCellValue: true, UnzipSizeLimit: o.MaxBytes, UnzipXMLSizeLimit: o.MaxBytes})
+	if oerr != nil {
+		return nil, bad(shorten(oneLine(oerr.Error())), "a spreadsheet (.xlsx)", "save it again, or export CSV")
+	}
+	defer f.Close()
+	sheets := f.GetSheetList()
+	switch {
+	case len(sheets) == 0:
+		return nil, bad("none", "a spreadsheet with sheets", "")
+	case sheet == "":
+		sheet = sheets[0]
+	case !slices.Contains(sheets, sheet):
+		i := slices.IndexFunc(sheets, func(s string) bool { return strings.EqualFold(s, sheet) })
+		if i < 0 {
+			e := bad(fmt.Sprintf("no %q", sheet), "a sheet of "+strings.Join(sheets, ", "), "")
+			e.Err = ErrUsage
+			return nil, e
+		}
+		sheet = sheets[i]
+	}
+	rows, rerr := f.Rows(sheet)
+	if rerr != nil {
+		return nil, bad(shorten(oneLine(rerr.Error())), "a sheet of cells", "export CSV")
+	}
+	defer rows.Close()
+	src = &source{name: name, delim: cellMark, decimal: '.', sheet: sheet}
+	var b strings.Builder
+	clean := strings.NewReplacer("\n", " ", "\r", " ", string(rune(cellMark)), " ")
+	for num := int32(1); rows.Next(); num++ {
+		cells, cerr := rows.Columns()
+		if cerr != nil {
+			return nil, &Error{File: name, Line: int(num), Found: shorten(oneLine(cerr.Error())), Expected: "a row of cells", Hint: "save it again, or export CSV", bare: true}
+		}
+		start := b.Len()
+		empty := true
+		for i, c := range cells {
+			if i > 0 {
+				b.WriteByte(cellMark)
+			}
+			c = clean.Replace(c)
+			empty = empty && strings.TrimSpace(c) == ""
+			b.WriteString(c)
+		}
+		if !empty {
+			src.lines = append(src.lines, line{int32(start), int32(b.Len()), num})
+		}
+		if int64(b.Len()) > o.MaxBytes {
+			e := bad(fmt.Sprintf("more than %d bytes", o.MaxBytes), "a sheet of smaller size", "split the file")
+			e.Err = ErrTooLarge
+			return nil, e
+		}
+	}
+	if rerr := rows.Error(); rerr != nil {
+		return nil, bad(shorten(oneLine(rerr.Error())), "a sheet of cells", "export CSV")
+	}
+	src.text = b.String()
+	src.detectDecimal()
+	return src, nil
+}
+
+// detectDecimal chooses the decimal sign of cells that hold text: a comma if
+// that makes numbers of more cells.
+func (s *source) detectDecimal() {
+	var cells []span
+	point, comma := 0, 0
+	for _, l := range s.lines[:min(len(s.lines), 500)] {
+		cells = s.split(l, cells)
+		for _, c := range cells {
+			t := s.cell(c)
+			if strings.IndexByte(t, ',') >= 0 && looksNumber(t, ',') {
+				comma++
+			}
+			if strings.IndexByte(t, '.') >= 0 && looksNumber(t, '.') {
+				point++
+			}
+		}
+	}
+	if comma > point {
+		s.decimal = ','
+	}
 }

@@ -60,8 +60,7 @@ func (c *Circuit) Resonances(values []float64, from, to float64) []Resonance {
 	var found []Resonance
 	var search func(a, b point, halvings int)
 	search = func(a, b point, halvings int) {
-		// Negated, so that the NaN of ∂Z/Z at Z = 0 is steep.
-		if !(turn(a, b) <= steepestTurn) && halvings > 0 {
+		if turn(a, b) > steepestTurn && halvings > 0 {
 			if mid, ok := between(a.f, b.f); ok {
 				m := probe.at(mid)
 				search(a, m, halvings-1)

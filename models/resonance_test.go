@@ -175,6 +175,70 @@ func TestResonancesOfCrystals(t *testing.T) {
 	}
 }
 
+// Crystals whose resonances are near, but not at, that of one inductance with
+// one capacitance: two modes, a motional capacitance with a loss tangent, a
+// load in series or across. A scan around each mode, with many points in a
+// bandwidth, says what there is to find.
+func TestSharpResonancesBesideTheGrid(t *testing.T) {
+	rng := rand.New(rand.NewPCG(11, 1))
+	scan := make([]float64, 40001)
+	z := make([]complex128, len(scan))
+	for _, expression := range []string{
+		"C0 || (R1 + L1 + C1) || (R2 + L2 + C2)", "C0 || (R1 + L1 + loss(C1, tand))", "Cload + (C0 || (R1 + L1 + C1))",
+		"Lload + (C0 || (R1 + L1 + C1))", "ESR + ESL + (C0 || Rp || (R1 + L1 + C1) || (R2 + L2 + C2))",
+	} {
+		c := mustParse(expression)
+		for range 25 {
+			f1 := math.Pow(10, 5+2*rng.Float64())
+			f2 := f1 * (1 + math.Pow(10, -4*rng.Float64()))
+			c0 := math.Pow(10, -12+1.5*rng.Float64())
+			quality := math.Pow(10, 4+2*rng.Float64())
+			values := make([]float64, len(c.Parameters()))
+			set := func(name string, v float64) {
+				if k, ok := c.Index(name); ok {
+					values[k] = v
+				}
+			}
+			var modes []float64
+			for i, f := range []float64{f1, f2} {
+				motional := c0 / math.Pow(10, 2+(math.Log10(quality)-2.5)*rng.Float64())
+				l := 1 / (4 * math.Pi * math.Pi * f * f * motional)
+				set(fmt.Sprintf("R%d", i+1), 2*math.Pi*f*l/quality)
+				set(fmt.Sprintf("L%d", i+1), l)
+				set(fmt.Sprintf("C%d", i+1), motional)
+				if _, ok := c.Index(fmt.Sprintf("R%d", i+1)); ok {
+					modes = append(modes, f)
+				}
+			}
+			set("C0", c0)
+			set("tand", 1/quality)
+			set("Cload", c0*5*rng.Float64())
+			set("Lload", 1e-3/(4*math.Pi*math.Pi*f1*f1*c0))
+			set("ESR", 0.1)
+			set("ESL", 1e-9)
+			set("Rp", 1e9)
+			got := c.Resonances(values, f1/5, f2*5)
+			requireExact(t, c, values, got)
+			for _, f := range modes {
+				copy(scan, logFrequencies(f*0.997, f*1.008, len(scan)))
+				c.NewEvaluator(scan).Impedance(z, values)
+				next := 0
+				for i := 1; i < len(scan); i++ {
+					inside := 0
+					for ; next < len(got) && got[next].Freq <= scan[i]; next++ {
+						if got[next].Freq > scan[i-1] {
+							inside++
+						}
+					}
+					if want := math.Signbit(imag(z[i-1])) != math.Signbit(imag(z[i])); want != (inside%2 == 1) {
+						t.Fatalf("%s with %v: %d resonances between %v and %v Hz, where the sign of the reactance changes: %v", c, values, inside, scan[i-1], scan[i], want)
+					}
+				}
+			}
+		}
+	}
+}
+
 func TestNoResonance(t *testing.T) {
 	rng := rand.New(rand.NewPCG(8, 1))
 	for _, expression := range []string{

@@ -122,11 +122,11 @@ func (a *Analysis) fitAll(freq []float64, z []complex128, tried []models.Model, 
 			c.Reason = "not fitted: " + err.Error()
 		default:
 			c.Result = r
-			c.AICc = r.AICc()
 			c.Reason, c.sound = r.soundness()
 		}
 		a.Candidates = append(a.Candidates, c)
 	}
+	a.compare()
 	if !slices.ContainsFunc(a.Candidates, func(c Candidate) bool { return c.Result != nil }) {
 		return first
 	}
@@ -137,11 +137,47 @@ func (a *Analysis) fitAll(freq []float64, z []complex128, tried []models.Model, 
 // the numbers in a file, and no reason to prefer one circuit to another.
 const roundingFloor = 1e-8
 
-// AICc returns Akaike's information criterion, see [Candidate].
-func (r *Result) AICc() float64 {
+// compare gives all candidates their AICc: on the same loss, which for
+// robust fits means the scale of the one with the least noise.
+func (a *Analysis) compare() {
+	scale := 0.0
+	for _, c := range a.Candidates {
+		if c.Result != nil && c.Result.problem.scale > 0 && (scale == 0 || c.Result.problem.scale < scale) {
+			scale = c.Result.problem.scale
+		}
+	}
+	for i := range a.Candidates {
+		c := &a.Candidates[i]
+		if c.Result == nil {
+			continue
+		}
+		cost := c.Result.Cost
+		if scale > 0 {
+			cost = c.Result.problem.lossAt(c.Result.x, scale)
+		}
+		c.AICc = c.Result.aicc(cost)
+	}
+}
+
+// lossAt returns ½Σr² of the soft-L1 residuals with a given scale.
+func (p *problem) lossAt(x []float64, scale float64) float64 {
+	own := p.scale
+	p.scale = scale
+	defer func() { p.scale = own }()
+	r := make([]float64, 2*len(p.freq))
+	p.residual(r, x)
+	cost := 0.0
+	for _, v := range r {
+		cost += v * v / 2
+	}
+	return cost
+}
+
+// aicc returns Akaike's information criterion for a cost, see [Candidate].
+func (r *Result) aicc(cost float64) float64 {
 	n := float64(2 * len(r.Freq))
 	k := float64(len(r.Free) + 1)
-	variance := 2 * r.Cost / n
+	variance := 2 * cost / n
 	if r.Weight == Relative {
 		variance = max(variance, roundingFloor*roundingFloor)
 	}

@@ -13,7 +13,7 @@ import (
 // Simulated parts whose every element is clearly visible: the true circuit is
 // chosen in at least 98 % of seeded cases over all kinds, with nothing given.
 func TestChoice(t *testing.T) {
-	const cases = 100
+	const cases = 1000
 	var names []string
 	for _, kind := range models.Kinds() {
 		for _, m := range models.OfKind(kind) {

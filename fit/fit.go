@@ -108,6 +108,11 @@ type Result struct {
 	// to the accuracy of the points.
 	Structured bool
 
+	// SetAside holds the frequencies in Hz of the points that a robust fit
+	// set aside in effect: their residual is so large that their pull is
+	// below a fifth of what it would be.
+	SetAside []float64
+
 	Status lm.Status
 	// Reason says why the solver stopped, with the value and the threshold.
 	Reason      string
@@ -400,7 +405,11 @@ const (
 )
 
 func (p *problem) newSearch(s *Settings, lower, upper []float64) *search {
-	f := newFeatures(p.points, searchPoints)
+	pts := p.points
+	if s.Robust {
+		pts = pts.pick(tame(p.freq, p.measured))
+	}
+	f := newFeatures(pts, searchPoints)
 	q := &search{
 		whole: p, thinned: newProblem(p.circuit, f.points, Relative, s), settings: s, sampler: newSampler(f, s.Seed),
 		solver: lm.Settings{UnitScaling: true, MaxStep: maxStep, MaxIterations: searchSteps,
@@ -408,6 +417,9 @@ func (p *problem) newSearch(s *Settings, lower, upper []float64) *search {
 			Lower: lower, Upper: upper, Workspace: new(lm.Workspace)},
 	}
 	copy(q.thinned.values, p.values)
+	if s.Robust {
+		q.thinned.scale = searchScale
+	}
 	return q
 }
 
@@ -545,10 +557,7 @@ func (p *problem) polish(x, lower, upper []float64, robust bool) (*lm.Result, er
 		}
 	}
 	if robust {
-		p.scale = residual.MAD(r.Residuals)
-		if p.scale > 0 {
-			return lm.Solve(p.lm(), r.X, &settings)
-		}
+		return p.polishRobust(r, &settings)
 	}
 	return r, nil
 }

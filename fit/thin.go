@@ -49,3 +49,36 @@ func thin(freq []float64, z []complex128, n int) []int {
 	slices.Sort(chosen)
 	return slices.Compact(chosen)
 }
+
+// tame returns the indices of the points that lie near the middle of their
+// neighbours, for a search that single wild points must not lead: ln Z of a
+// point may be off the median of the five around it by a tenth, or by ten
+// times what is usual in the sweep.
+func tame(freq []float64, z []complex128) []int {
+	n := len(z)
+	logs := make([][2]float64, n)
+	for i, v := range z {
+		logs[i] = [2]float64{math.Log(cmplx.Abs(v)), cmplx.Phase(v)}
+	}
+	off := make([]float64, n)
+	for i := range z {
+		for part := range 2 {
+			var near []float64
+			for k := max(0, i-2); k <= min(n-1, i+2); k++ {
+				near = append(near, logs[k][part])
+			}
+			off[i] = max(off[i], math.Abs(logs[i][part]-middle(near)))
+		}
+	}
+	limit := max(0.1, 10*middle(off))
+	var kept []int
+	for i := range z {
+		if off[i] <= limit {
+			kept = append(kept, i)
+		}
+	}
+	if len(kept) < n/2 {
+		return thin(freq, z, n)
+	}
+	return kept
+}

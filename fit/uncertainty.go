@@ -112,8 +112,12 @@ func (r *Result) uncertainty(solution *lm.Result) {
 	r.Covariance = mat.NewSymDense(k, nil)
 	r.Correlation = mat.NewSymDense(k, nil)
 	nu := float64(r.DegreesOfFreedom)
+	jacobian := solution.Jacobian
 	if nu > 0 {
 		r.Sigma = math.Sqrt(2 * solution.Cost / nu)
+		if p.scale > 0 {
+			jacobian, r.Sigma = r.robustSpread()
+		}
 	}
 	determined := make([]int, 0, k) // columns that the sweep determines at all
 	for c, i := range p.free {
@@ -124,13 +128,13 @@ func (r *Result) uncertainty(solution *lm.Result) {
 		}
 		determined = append(determined, c)
 	}
-	covariance, determined, vague := regularCovariance(solution.Jacobian, determined, 1)
+	covariance, determined, vague := regularCovariance(jacobian, determined, 1)
 	for _, c := range vague {
 		q := &r.Parameters[p.free[c]]
 		q.Determined = false
 		q.Why = "the sweep cannot tell it from other parameters"
 	}
-	response := r.meterResponse(solution.Jacobian, covariance, determined)
+	response := r.meterResponse(jacobian, covariance, determined)
 	if response != nil {
 		r.MeterCovariance = mat.NewSymDense(k, nil)
 	}

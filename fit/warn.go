@@ -5,6 +5,8 @@ import (
 	"math"
 	"math/cmplx"
 	"slices"
+	"strconv"
+	"strings"
 
 	"gonum.org/v1/gonum/mat"
 
@@ -38,6 +40,17 @@ func (a *Analysis) warn(freq []float64, z []complex128, s *Settings) {
 		}
 		add("not-determined", "%s", text)
 	}
+	if n := len(r.SetAside); n > 0 {
+		var at []string
+		for _, f := range r.SetAside[:min(n, 12)] {
+			at = append(at, quantity.Format(f, "Hz", 4))
+		}
+		more := ""
+		if n > 12 {
+			more = fmt.Sprintf(" and %d more", n-12)
+		}
+		add("points-set-aside", "The robust fit set aside in effect %s: %s%s.", pointCount(n), strings.Join(at, ", "), more)
+	}
 	if r.Structured {
 		a.structure(freq, z, s)
 	}
@@ -51,6 +64,12 @@ func (a *Analysis) warn(freq []float64, z []complex128, s *Settings) {
 			add("below-resolution", "The resistance is smaller than the meter can resolve (|Z| times its phase accuracy) in the whole sweep.")
 		}
 	}
+}
+
+// percent prints a share with two significant digits.
+func percent(share float64) string {
+	digits := max(0, 1-int(math.Floor(math.Log10(100*share))))
+	return strconv.FormatFloat(100*share, 'f', digits, 64) + " %"
 }
 
 func pointCount(n int) string {
@@ -163,8 +182,8 @@ func cosine(j *mat.Dense, a, b, from, to int) float64 {
 func (a *Analysis) structure(freq []float64, z []complex128, s *Settings) {
 	r := a.Result
 	from, to, size := r.deviation()
-	text := fmt.Sprintf("The residuals are not noise: the circuit %s does not describe the part to the accuracy of the points. It deviates most from %s to %s, by %.2g %%.",
-		r.Circuit, quantity.Format(from, "Hz", 3), quantity.Format(to, "Hz", 3), 100*size)
+	text := fmt.Sprintf("The residuals are not noise: the circuit %s does not describe the part to the accuracy of the points. It deviates most from %s to %s, by %s.",
+		r.Circuit, quantity.Format(from, "Hz", 3), quantity.Format(to, "Hz", 3), percent(size))
 	name, rms := "", 0.7*r.RMSRelative
 	better := func(n string, other *Result) {
 		if other != nil && other.RMSRelative < rms {
@@ -184,7 +203,7 @@ func (a *Analysis) structure(freq []float64, z []complex128, s *Settings) {
 		}
 	}
 	if name != "" {
-		text += fmt.Sprintf(" %s takes up much of it (rms %.2g %% instead of %.2g %%).", name, 100*rms, 100*r.RMSRelative)
+		text += fmt.Sprintf(" %s takes up much of it (rms %s instead of %s).", name, percent(rms), percent(r.RMSRelative))
 	} else {
 		text += " No other circuit of the library for this kind of part does much better; check the measurement."
 	}

@@ -14,7 +14,7 @@ import (
 func TestImpedanceAgainstComplexArithmetic(t *testing.T) {
 	rng := rand.New(rand.NewPCG(1, 1))
 	circuits := everyCircuit()
-	for range 300 {
+	for range 200 {
 		circuits = append(circuits, mustParse(randomExpression(rng.IntN, 1+rng.IntN(8))))
 	}
 	freq := logFrequencies(1e-3, 100e9, 70)

@@ -51,7 +51,9 @@ const (
 // while its ends differ much in phase or, by their derivative ∂ln Z/∂ln f,
 // would differ much. The derivative is what finds a crystal: the phase is next
 // to zero, with the same sign, at its series and at its parallel resonance,
-// and all that happens lies between.
+// and all that happens lies between. An interval is also halved while the
+// tangents to the reactance at its ends meet beyond zero, which finds the two
+// resonances of a crystal so lossy that its reactance hardly reaches zero.
 func (c *Circuit) Resonances(values []float64, from, to float64) []Resonance {
 	if !(from > 0 && from < to) || math.IsInf(to, 1) {
 		panic(fmt.Sprintf("models: resonances between %v Hz and %v Hz: the range is not positive, finite and rising", from, to))
@@ -60,7 +62,7 @@ func (c *Circuit) Resonances(values []float64, from, to float64) []Resonance {
 	var found []Resonance
 	var search func(a, b point, halvings int)
 	search = func(a, b point, halvings int) {
-		if turn(a, b) > steepestTurn && halvings > 0 {
+		if halvings > 0 && (turn(a, b) > steepestTurn || mayTouch(a, b)) {
 			if mid, ok := between(a.f, b.f); ok {
 				m := probe.at(mid)
 				search(a, m, halvings-1)
@@ -82,11 +84,10 @@ func (c *Circuit) Resonances(values []float64, from, to float64) []Resonance {
 	return found
 }
 
-// point is the impedance at a frequency, and |∂ln Z/∂ln f|.
+// point is the impedance at a frequency, and ∂Z/∂ln f.
 type point struct {
 	f     float64
-	z     complex128
-	slope float64
+	z, dz complex128
 }
 
 // probe evaluates a circuit at one frequency after the other.
@@ -125,8 +126,7 @@ func (p *probe) at(f float64) point {
 	for i, column := range p.columns {
 		p.row[i] = column[0]
 	}
-	dz := p.evaluator.circuit.FrequencyDerivative(p.row, p.values)
-	return point{f, p.z[0], cmplx.Abs(dz) / cmplx.Abs(p.z[0])}
+	return point{f, p.z[0], p.evaluator.circuit.FrequencyDerivative(p.row, p.values)}
 }
 
 // refine narrows a sign change of Im Z to two neighbouring float64.
@@ -173,7 +173,24 @@ func between(a, b float64) (float64, bool) {
 // turn returns by how much Z turns between two points, in radians, or would
 // turn or change by the slope at either of them.
 func turn(a, b point) float64 {
-	return max(math.Abs(phaseBetween(a.z, b.z)), max(a.slope, b.slope)*math.Log(b.f/a.f))
+	slope := max(cmplx.Abs(a.dz)/cmplx.Abs(a.z), cmplx.Abs(b.dz)/cmplx.Abs(b.z))
+	return max(math.Abs(phaseBetween(a.z, b.z)), slope*math.Log(b.f/a.f))
+}
+
+// mayTouch reports whether the reactance has the same sign at two points,
+// heads for zero from both, and its tangents there meet beyond zero.
+func mayTouch(a, b point) bool {
+	xa, xb := imag(a.z), imag(b.z)
+	sa, sb := imag(a.dz), imag(b.dz)
+	if math.Signbit(xa) {
+		xa, xb, sa, sb = -xa, -xb, -sa, -sb
+	}
+	if !(xa > 0 && xb > 0 && sa < 0 && sb > 0) {
+		return false
+	}
+	width := math.Log(b.f / a.f)
+	meet := (xa - xb + sb*width) / (sb - sa) // in ln f, from a
+	return xa+sa*meet < 0
 }
 
 func phaseBetween(a, b complex128) float64 {

@@ -110,14 +110,15 @@ func (p *parser) fail(expected, hint string) {
 // end of a group should be.
 func (p *parser) failOperator(expected, unbalanced string) {
 	hint := unbalanced
-	switch {
-	case p.token == "|" || p.token == "/" || strings.HasPrefix(p.token, "∥") || strings.HasPrefix(p.token, "‖"):
+	switch p.token {
+	case "", ")":
+	case "|", "/", "∥", "‖":
 		hint = parallelHint
-	case p.token == "-" || p.token == "–" || p.token == "−":
+	case "-", "–", "−":
 		hint = "series is written `+`"
-	case p.token == "=":
+	case "=":
 		hint = valuesHint
-	case p.token != "" && p.token != ")":
+	default:
 		hint = "put `+` for series or `||` for parallel between two elements"
 	}
 	p.fail(expected, hint)

@@ -153,6 +153,10 @@ func (b *builder) nameParts() {
 		}
 		return
 	}
+	// The first block's name may stand in the lines above the table.
+	if first := parts[0]; first.label == "" && parts[1].label != "" {
+		first.label = firstNonEmpty(first.meta.Part, first.meta.Serial)
+	}
 	count := map[string]int{}
 	for _, d := range parts {
 		count[d.label]++

@@ -33,9 +33,8 @@ func (u angleUnit) dim() string {
 // (H. W. Bode, Network Analysis and Feedback Amplifier Design, 1945, ch. XIV;
 // here from memory), so the values' regression on 90° times the slope is near 1
 // for degrees and near π/180 for radians. The answer is angleUnknown where the
-// slope is too small (a resistor) or the factor fits neither. sign is −1 for the
-// phase of an admittance beside |Y|, which has the same relation, so +1 suits
-// both there; it is the exponent of the magnitude.
+// slope is too small (a resistor) or the factor fits neither. The relation holds
+// for |Z| and its phase and for |Y| and its phase alike.
 func phaseUnit(freq, mag, phase []float64) (angleUnit, string) {
 	largest := 0.0
 	for _, p := range phase {
@@ -49,13 +48,21 @@ func phaseUnit(freq, mag, phase []float64) (angleUnit, string) {
 		return angleUnknown, "the magnitude changes too little to tell"
 	}
 	switch {
-	case 0.4 <= k && k <= 2.5:
+	case leastFactor <= k && k <= mostFactor:
 		return angleDegrees, fmt.Sprintf("the slope of ln|Z| agrees (factor %.2f)", k)
-	case 0.4 <= k*180/math.Pi && k*180/math.Pi <= 2.5:
+	case leastFactor <= k*180/math.Pi && k*180/math.Pi <= mostFactor:
 		return angleRadians, fmt.Sprintf("the slope of ln|Z| agrees (factor %.2f)", k*180/math.Pi)
 	}
 	return angleUnknown, fmt.Sprintf("the slope of ln|Z| fits neither (factor %.3g)", k)
 }
+
+// The factors that are taken for agreement: capacitors, inductors and beads over
+// a few decades give 0.8 to 1.1 (see the test), resonances between two points and
+// short sweeps somewhat more.
+const (
+	leastFactor = 0.6
+	mostFactor  = 1.5
+)
 
 // slopeFactor is the regression through the origin of phase on 90°·slope, over
 // pairs of points at least 5 % apart in frequency; predicted is the rms of the

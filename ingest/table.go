@@ -17,7 +17,8 @@ import (
 // ReadTable reads a CSV table with a fixed header into structs of type T, whose
 // fields carry `csv:"name"` tags. Every column must be there once and no other;
 // their order is free. A field of type float64 needs a finite number, unless
-// its tag says `csv:"name,omitempty"`: then an empty cell is NaN. Lines that
+// its tag says `csv:"name,optional"`: then an empty cell is NaN. (Not omitempty,
+// with which gocsv would write a zero as nothing.) Lines that
 // start with # and blank lines are passed over. A field of type string takes
 // the cell as it is, for values with units. The error is an [*Error] with line
 // and column.
@@ -170,7 +171,7 @@ func tableFields(t reflect.Type) []tableField {
 		if k := f.Type.Kind(); k != reflect.Float64 && k != reflect.String {
 			panic("ingest: table field " + f.Name + " is neither float64 nor string")
 		}
-		out = append(out, tableField{name: n, kind: f.Type.Kind(), optional: strings.Contains(rest, "omitempty")})
+		out = append(out, tableField{name: n, kind: f.Type.Kind(), optional: strings.Contains(rest, "optional")})
 	}
 	if len(out) == 0 {
 		panic("ingest: table type without csv tags")
@@ -189,8 +190,8 @@ func tableSyntax(name string, err error, header string) *Error {
 	return &Error{File: name, Found: err.Error(), Expected: "a readable table", Err: err}
 }
 
-// WriteTable writes structs with csv tags as a CSV table with a header. NaN is
-// written as an empty cell.
+// WriteTable writes structs with csv tags as a CSV table with a header. Numbers
+// are written so that reading gives the same float64; NaN is an empty cell.
 func WriteTable[T any](w io.Writer, rows []T) error {
 	var b bytes.Buffer
 	if err := gocsv.Marshal(rows, &b); err != nil {

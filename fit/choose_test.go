@@ -1,6 +1,7 @@
 package fit
 
 import (
+	"context"
 	"fmt"
 	"math/rand/v2"
 	"slices"
@@ -21,21 +22,36 @@ func TestChoice(t *testing.T) {
 		}
 	}
 	type outcome struct{ truth, chosen string }
+	type result struct {
+		outcome
+		why string
+		err error
+	}
 	confusion := map[outcome]int{}
 	right := 0
-	for i := range cases {
+	err := InOrder(context.Background(), cases, 0, func(i int) (got result) {
 		r := rand.New(rand.NewPCG(uint64(i), 2))
 		p := simulatePart(r, names[i%len(names)], 201, 0.001)
 		a, err := Analyse(p.freq, p.z, Request{})
-		if err != nil {
-			t.Fatalf("%s, seed %d: %v", p.name, i, err)
+		got.truth, got.err = p.name, err
+		if err == nil {
+			got.chosen, got.why = a.Name, a.KindReason
 		}
-		if a.Name == p.name {
+		return got
+	}, func(i int, got result) error {
+		if got.err != nil {
+			return fmt.Errorf("%s, seed %d: %w", got.truth, i, got.err)
+		}
+		if got.chosen == got.truth {
 			right++
 		} else {
-			t.Logf("seed %d: %s taken for %s (%s)", i, p.name, a.Name, a.KindReason)
+			t.Logf("seed %d: %s taken for %s (%s)", i, got.truth, got.chosen, got.why)
 		}
-		confusion[outcome{p.name, a.Name}]++
+		confusion[got.outcome]++
+		return nil
+	})
+	if err != nil {
+		t.Fatal(err)
 	}
 	var rows []string
 	for o, n := range confusion {

@@ -353,12 +353,18 @@ func (p *problem) solve(s *Settings) (*lm.Result, error) {
 		p.values[i] = v
 	}
 	lower, upper := p.bounds(s)
-	search := p.newSearch(s, lower, upper)
 	noise := pointNoise(p.freq, p.measured)
 	// ½Σr² is about noise² per point, give or take a relative 1/√points.
 	goal := func(n int) float64 {
 		return noise * noise * float64(n) * (1 + 5/math.Sqrt(float64(n)))
 	}
+	if x := p.given(s); x != nil {
+		r, err := p.polish(x, lower, upper, s.Robust)
+		if err == nil && p.weight == Relative && r.Cost <= goal(len(p.freq)) {
+			return r, nil
+		}
+	}
+	search := p.newSearch(s, lower, upper)
 	search.run(goal(len(search.thinned.freq)))
 	if len(search.best) == 0 {
 		return nil, fmt.Errorf("no starting values found: %w", search.failure)
@@ -381,6 +387,20 @@ func (p *problem) solve(s *Settings) (*lm.Result, error) {
 		}
 	}
 	return best, nil
+}
+
+// given returns the unknowns if the user gave a start for every free
+// parameter, else nil.
+func (p *problem) given(s *Settings) []float64 {
+	x := make([]float64, len(p.free))
+	for k, i := range p.free {
+		v, ok := s.Start[p.parameters[i].Name]
+		if !ok {
+			return nil
+		}
+		x[k] = p.parameters[i].Scale.Unknown(v)
+	}
+	return x
 }
 
 // search is a search for starting values on a thinned sweep with the relative
@@ -523,7 +543,7 @@ func pointNoise(freq []float64, z []complex128) float64 {
 	if len(z) < 8 {
 		return 0
 	}
-	var d []float64
+	d := make([]float64, 0, 2*len(z))
 	for i := 3; i < len(z); i++ {
 		a, b := logRatio(z[i] / z[i-1] * (z[i-2] / z[i-1]) / (z[i-1] / z[i-2] * (z[i-3] / z[i-2])))
 		d = append(d, a/math.Sqrt(20), b/math.Sqrt(20)) // 1 + 9 + 9 + 1

@@ -41,7 +41,7 @@ type points struct {
 }
 
 func (p *points) pick(index []int) points {
-	var q points
+	q := points{freq: make([]float64, 0, len(index)), measured: make([]complex128, 0, len(index)), inverse: make([]complex128, 0, len(index))}
 	for _, i := range index {
 		q.freq = append(q.freq, p.freq[i])
 		q.measured = append(q.measured, p.measured[i])
@@ -66,13 +66,16 @@ func newProblem(c *models.Circuit, pts points, weight Weight, s *Settings) *prob
 		z:         make([]complex128, len(pts.freq)),
 		dz:        make([][]complex128, len(c.Parameters())),
 	}
+	n := len(pts.freq)
+	columns := make([]complex128, n*len(p.parameters))
+	p.free = make([]int, 0, len(p.parameters))
 	for i, parameter := range p.parameters {
 		if v, ok := s.Fixed[parameter.Name]; ok {
 			p.values[i] = v
 			continue
 		}
 		p.free = append(p.free, i)
-		p.dz[i] = make([]complex128, len(pts.freq))
+		p.dz[i] = columns[i*n : (i+1)*n : (i+1)*n]
 	}
 	return p
 }

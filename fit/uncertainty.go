@@ -41,11 +41,11 @@ func evaluate(p *problem, s *Settings, x []float64, solution *lm.Result) *Result
 	p.set(x)
 	p.evaluator.Impedance(r.Model, p.values)
 	sum := 0.0
-	var re, im []float64
+	re, im := make([]float64, n), make([]float64, n)
 	for i, z := range r.Model {
 		a, b := logRatio(z * p.inverse[i])
 		r.Residuals[i] = complex(a, b)
-		re, im = append(re, a), append(im, b)
+		re[i], im[i] = a, b
 		sum += a*a + b*b
 		if d := math.Hypot(a, b); d > r.MaxRelative {
 			r.MaxRelative, r.MaxAtHz = d, p.freq[i]
@@ -53,6 +53,7 @@ func evaluate(p *problem, s *Settings, x []float64, solution *lm.Result) *Result
 	}
 	r.RMSRelative = math.Sqrt(sum / float64(n))
 	r.structure(re, im)
+	r.Parameters = make([]Parameter, 0, len(p.parameters))
 	for i, parameter := range p.parameters {
 		_, fixed := s.Fixed[parameter.Name]
 		r.Parameters = append(r.Parameters, Parameter{

@@ -3,6 +3,7 @@ package models
 import (
 	"fmt"
 	"math"
+	"slices"
 )
 
 // blockSize is the number of frequencies evaluated together. A node needs two
@@ -111,7 +112,7 @@ func (e *Evaluator) SetFrequencies(freq []float64) {
 		}
 	}
 	e.freq = append(e.freq[:0], freq...)
-	e.omega, e.logOmega, e.rootOmega = e.omega[:0], e.logOmega[:0], e.rootOmega[:0]
+	e.omega, e.logOmega, e.rootOmega = slices.Grow(e.omega[:0], len(freq)), e.logOmega[:0], e.rootOmega[:0]
 	for _, f := range e.freq {
 		omega := 2 * math.Pi * f
 		e.omega = append(e.omega, omega)

@@ -26,8 +26,53 @@ func valueText(value float64, low, high *float64, unit string) (string, string) 
 // given by its interval alone, as a parameter is (design: not determined).
 const widest = 4
 
-// figureText gives a figure like [valueText]; one whose interval spans more
-// than a factor of widest is "not determined".
+// Texts gives a parameter for people: its value and 95 % interval, rounded to
+// the place of the second significant digit of the interval's half-width (GUM
+// 7.2.6) with one prefix, and the half-width relative to the value: "9.873 µF",
+// "9.851 … 9.895", "± 0.22 %". A value that is not determined is given as a
+// bound ("< 310 pH", "not determined") or not at all.
+func (p Parameter) Texts() (value, interval, relative string) {
+	switch {
+	case p.Fixed:
+		return quantity.Format(p.Value, p.Unit, 6), "fixed", ""
+	case p.Determined:
+		value, interval = valueText(p.Value, p.Low95, p.High95, p.Unit)
+		return value, interval, relativeText(p.Value, p.Low95, p.High95)
+	case p.Low95 != nil && p.High95 != nil, p.Low95 == nil && p.High95 == nil:
+		return "not determined", boundText(p.Low95, p.High95, p.Unit), ""
+	}
+	return boundText(p.Low95, p.High95, p.Unit), "not determined", ""
+}
+
+// Short gives a parameter with three digits, or what is known of it, for a
+// drawing.
+func (p Parameter) Short() string {
+	if p.Determined {
+		return quantity.Format(p.Value, p.Unit, 3)
+	}
+	if s := boundText(p.Low95, p.High95, p.Unit); s != "" {
+		return s
+	}
+	return "?"
+}
+
+// Texts gives a self-resonance for people: frequency, 95 % interval, |Z| there.
+func (r Resonance) Texts() (freq, interval, impedance string) {
+	freq, interval = valueText(r.FHz, r.Low95Hz, r.High95Hz, "Hz")
+	return freq, interval, quantity.Format(r.ImpedanceOhm, "Ω", 3)
+}
+
+// Texts gives a figure for people: the value and 95 % interval of the fit, and
+// the measured value, "" outside the sweep. One whose interval spans more than
+// a factor of widest is "not determined".
+func (v Figure) Texts() (value, interval, measured string) {
+	if v.Measured != nil {
+		measured = quantity.Format(*v.Measured, v.Unit, 4)
+	}
+	value, interval = figureText(v)
+	return value, interval, measured
+}
+
 func figureText(v Figure) (string, string) {
 	positive := v.Name == models.ESR || v.Name == models.D || v.Name == models.Q || v.Name == models.Zabs
 	if positive && v.Value > 0 {
@@ -80,12 +125,12 @@ func relativeText(value float64, low, high *float64) string {
 	if !(half > 0) {
 		return ""
 	}
-	return "± " + percent(half)
+	return "± " + FormatPercent(half)
 }
 
-// percent gives a fraction with two significant digits in percent, or as a
+// FormatPercent gives a fraction with two significant digits in percent, or as a
 // power of ten where it is very small.
-func percent(v float64) string {
+func FormatPercent(v float64) string {
 	switch {
 	case v == 0:
 		return "0 %"
@@ -95,8 +140,8 @@ func percent(v float64) string {
 	return quantity.Format(100*v, "%", 2)
 }
 
-// frequency gives a frequency with the digits it needs, four at most.
-func frequency(f float64) string {
+// FormatFrequency gives a frequency with the digits it needs, four at most.
+func FormatFrequency(f float64) string {
 	for digits := 1; digits < 4; digits++ {
 		rounded, _ := strconv.ParseFloat(strconv.FormatFloat(f, 'e', digits-1, 64), 64)
 		if math.Abs(rounded-f) <= 1e-12*f {

@@ -138,8 +138,8 @@ func TestRounding(t *testing.T) {
 	bound(p(1.01e-9), p(9.95e-9), "1.0 nH … 10 nH")
 	bound(nil, nil, "")
 	for v, want := range map[float64]string{100: "100 Hz", 120: "120 Hz", 1e3: "1 kHz", 1.5e6: "1.5 MHz", 123456: "123.5 kHz", 0.001: "1 mHz", 20.5e6: "20.5 MHz"} {
-		if got := frequency(v); got != want {
-			t.Errorf("frequency(%v) = %q, want %q", v, got, want)
+		if got := FormatFrequency(v); got != want {
+			t.Errorf("FormatFrequency(%v) = %q, want %q", v, got, want)
 		}
 	}
 }

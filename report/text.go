@@ -11,7 +11,6 @@ import (
 	"github.com/rivo/uniseg"
 
 	"realpart/models"
-	"realpart/models/quantity"
 )
 
 // TextOptions steer [WriteText].
@@ -155,7 +154,7 @@ func (t *text) heading(f *Fit) {
 		if f.Sweep.UsedPoints != f.Sweep.Points {
 			points = fmt.Sprintf("%d of %d points used", f.Sweep.UsedPoints, f.Sweep.Points)
 		}
-		t.line(points + ", " + frequency(f.Sweep.FMin) + " to " + frequency(f.Sweep.FMax))
+		t.line(points + ", " + FormatFrequency(f.Sweep.FMin) + " to " + FormatFrequency(f.Sweep.FMax))
 	}
 	for _, key := range slices.Sorted(maps.Keys(f.Sweep.Metadata)) {
 		t.paragraph("", "  ", key+": "+f.Sweep.Metadata[key])
@@ -200,7 +199,7 @@ func (t *text) circuit(f *Fit) {
 	}
 	labels := make([]string, len(f.Parameters))
 	for i, p := range f.Parameters {
-		labels[i] = p.shortText()
+		labels[i] = p.Short()
 	}
 	for _, labels := range [][]string{labels, make([]string, len(labels))} {
 		drawing := drawLabelled(c, labels)
@@ -214,34 +213,12 @@ func (t *text) circuit(f *Fit) {
 	}
 }
 
-// shortText gives a value with three digits, or what is known of it.
-func (p Parameter) shortText() string {
-	if p.Determined {
-		return quantity.Format(p.Value, p.Unit, 3)
-	}
-	if s := boundText(p.Low95, p.High95, p.Unit); s != "" {
-		return s
-	}
-	return "?"
-}
-
 func (t *text) parameters(f *Fit) {
 	t.title("Values")
 	rows := [][]string{{"", "", "95 % interval", "", ""}}
 	for _, p := range f.Parameters {
-		row := []string{p.Name, "", "", "", ""}
-		number, interval := valueText(p.Value, p.Low95, p.High95, p.Unit)
-		switch {
-		case p.Fixed:
-			row[1], row[2] = quantity.Format(p.Value, p.Unit, 6), "fixed"
-		case !p.Determined:
-			row[1], row[2] = "not determined", boundText(p.Low95, p.High95, p.Unit)
-			if row[2] != "" && (p.Low95 == nil || p.High95 == nil) {
-				row[1], row[2] = row[2], "not determined"
-			}
-		default:
-			row[1], row[2], row[3] = number, interval, relativeText(p.Value, p.Low95, p.High95)
-		}
+		value, interval, relative := p.Texts()
+		row := []string{p.Name, value, interval, relative, ""}
 		if t.width >= 100 {
 			row[4] = meaning(f.Circuit.Expression, p.Name)
 		}
@@ -276,7 +253,7 @@ func (t *text) resonances(f *Fit) {
 	}
 	rows := [][]string{{"", "95 % interval", "kind", "Z there", ""}}
 	for _, r := range f.SelfResonance {
-		number, interval := valueText(r.FHz, r.Low95Hz, r.High95Hz, "Hz")
+		freq, interval, impedance := r.Texts()
 		where := "in the sweep"
 		if !r.InSweep {
 			where = "outside the sweep: from the circuit alone"
@@ -284,7 +261,7 @@ func (t *text) resonances(f *Fit) {
 				where = "outside the sweep"
 			}
 		}
-		rows = append(rows, []string{number, interval, string(r.Kind), quantity.Format(r.ImpedanceOhm, "Ω", 3), where})
+		rows = append(rows, []string{freq, interval, string(r.Kind), impedance, where})
 	}
 	t.table(rows, "lllll")
 }
@@ -292,7 +269,7 @@ func (t *text) resonances(f *Fit) {
 func (t *text) residuals(f *Fit) {
 	t.title("Residuals")
 	r := f.Residuals
-	s := fmt.Sprintf("rms %s, worst %s at %s", percent(r.RMSRelative), percent(r.MaxRelative), frequency(r.MaxAtHz))
+	s := fmt.Sprintf("rms %s, worst %s at %s", FormatPercent(r.RMSRelative), FormatPercent(r.MaxRelative), FormatFrequency(r.MaxAtHz))
 	if r.Lag1 != nil {
 		s += fmt.Sprintf(", correlation of neighbours %s", signed(*r.Lag1))
 	}
@@ -332,14 +309,11 @@ func (t *text) figures(f *Fit) {
 		if !slices.Contains(wanted, v.Name) {
 			continue
 		}
-		number, interval := figureText(v)
-		row := []string{"", string(v.Name), number, interval, "", ""}
+		value, interval, measured := v.Texts()
+		row := []string{"", string(v.Name), value, interval, measured, ""}
 		if v.AtHz != last {
-			row[0] = frequency(v.AtHz)
+			row[0] = FormatFrequency(v.AtHz)
 			last = v.AtHz
-		}
-		if v.Measured != nil {
-			row[4] = quantity.Format(*v.Measured, v.Unit, 4)
 		}
 		if v.BelowResolution != nil && *v.BelowResolution && v.Name == models.ESR {
 			row[5] = "*"
@@ -375,7 +349,7 @@ func (t *text) candidates(f *Fit) {
 			row[2] = fmt.Sprintf("%.1f", *c.AICc)
 		}
 		if c.RMSRelative != nil {
-			row[3] = percent(*c.RMSRelative)
+			row[3] = FormatPercent(*c.RMSRelative)
 		}
 		rows = append(rows, row)
 	}

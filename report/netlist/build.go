@@ -21,7 +21,9 @@ type network struct {
 	elements []element
 	ladders  []ladder
 	remarks  []string
-	error    float64 // of the whole impedance, by the ladders
+	// error is that of the whole impedance by its ladders, realError that of
+	// its resistance, both relative.
+	error, realError float64
 }
 
 // builder lays a circuit's tree out as elements between nodes.
@@ -37,18 +39,15 @@ type builder struct {
 }
 
 // build makes the network of a circuit between two frequencies in Hz. Ladders
-// are refined until the impedance of the whole is right within the given
-// error: near a resonance that takes more than the error of the element alone.
-func build(c *models.Circuit, values []float64, from, to, maxError float64) (*network, error) {
+// are refined until impedance and resistance of the whole are right within the
+// errors of the options: near a resonance that takes more than the error of the
+// element alone.
+func build(c *models.Circuit, values []float64, from, to float64, o Options) (*network, error) {
 	var distributed []*models.Node
 	collect(c.Root(), &distributed)
 	b := &builder{circuit: c, values: values, low: from, high: to, taken: names{}, ladders: map[*models.Node]ladder{}}
-	// Points between those at which ladders are fitted, and where the whole
-	// is most sensitive to an element: its resonances.
+	// The whole is most sensitive to an element at its resonances.
 	check := grid(from, to)
-	for i, n := 0, len(check); i < n-1; i++ {
-		check = append(check, math.Sqrt(check[i]*check[i+1]))
-	}
 	if from < to {
 		for _, r := range c.Resonances(values, from, to) {
 			check = append(check, r.Freq)
@@ -56,9 +55,9 @@ func build(c *models.Circuit, values []float64, from, to, maxError float64) (*ne
 	}
 	want := make([]complex128, len(check))
 	c.NewEvaluator(check).Impedance(want, values)
-	for goal := maxError; len(distributed) > 0; goal /= 2 {
+	for tighter := 1.0; len(distributed) > 0; tighter *= 2 {
 		for _, n := range distributed {
-			l, err := newLadder(c, n, values, from, to, goal)
+			l, err := newLadder(c, n, values, from, to, o.LadderError/tighter, o.LadderRealError/tighter)
 			if err != nil {
 				return nil, err
 			}
@@ -68,11 +67,9 @@ func build(c *models.Circuit, values []float64, from, to, maxError float64) (*ne
 		for i, f := range check {
 			got[i] = b.at(c.Root(), f)
 		}
-		if b.error = relativeError(got, want); b.error <= maxError {
+		b.error, b.realError = relativeErrors(got, want)
+		if b.error <= o.LadderError && b.realError <= o.LadderRealError {
 			break
-		}
-		if goal < 1e-8 {
-			return nil, fmt.Errorf("no ladder for %s reaches an error of %.2g %%, the best has %.2g %%", c, 100*maxError, 100*b.error)
 		}
 	}
 	for _, n := range distributed {
@@ -126,7 +123,7 @@ func (b *builder) at(n *models.Node, freq float64) complex128 {
 	case models.Capacitor:
 		return complex(0, -1/(omega*v))
 	}
-	return b.ladders[n].at(freq)
+	return b.ladders[n].At(freq)
 }
 
 // lay puts a part of the tree between two nodes.
@@ -258,7 +255,7 @@ func (b *builder) shorts(n *models.Node) bool {
 		return false
 	}
 	l, isLadder := b.ladders[n]
-	return n.Element == models.Inductor || isLadder && l.inductive && l.resistance == 0
+	return n.Element == models.Inductor || isLadder && l.inductive() && l.X0 > 0
 }
 
 func (b *builder) namesIn(n *models.Node) []string {

@@ -25,6 +25,8 @@ import (
 	"strconv"
 	"strings"
 
+	"golang.org/x/sync/errgroup"
+
 	"realpart/models"
 	"realpart/report"
 )
@@ -35,6 +37,12 @@ type Options struct {
 	// ladders may cause between the first and the last frequency of the
 	// sweep; 0 means 0.001.
 	LadderError float64
+	// LadderRealError is the same for the resistance, the real part, which
+	// may be small beside the impedance; 0 means 0.01.
+	LadderRealError float64
+	// Jobs is the number of parts worked on at the same time; 0 means 1. The
+	// result does not depend on it.
+	Jobs int
 	// Made is a line for the head of the file that says what wrote it, such
 	// as program and version.
 	Made string
@@ -47,8 +55,13 @@ func Write(w io.Writer, fits []*report.Fit, o Options) error {
 	if o.LadderError == 0 {
 		o.LadderError = 0.001
 	}
-	if !(o.LadderError >= 1e-6 && o.LadderError < 1) {
-		return fmt.Errorf("netlist: ladder error %v: expected a fraction from 1e-6 to 1", o.LadderError)
+	if o.LadderRealError == 0 {
+		o.LadderRealError = 0.01
+	}
+	for _, e := range []float64{o.LadderError, o.LadderRealError} {
+		if !(e >= 1e-6 && e < 1) {
+			return fmt.Errorf("netlist: ladder error %v: expected a fraction from 1e-6 to 1", e)
+		}
 	}
 	b := new(strings.Builder)
 	if o.Made != "" {
@@ -57,15 +70,29 @@ func Write(w io.Writer, fits []*report.Fit, o Options) error {
 	comment(b, "Equivalent circuits fitted to small-signal sweeps. Each holds for the part, bias, temperature and signal level that were measured,")
 	comment(b, "in the stated frequency range. Ratings and nonlinear behaviour are not in them: the data sheet decides.")
 	taken := names{}
-	for _, f := range fits {
-		b.WriteString("*\n")
+	parts := make([]strings.Builder, len(fits))
+	var group errgroup.Group
+	group.SetLimit(max(1, o.Jobs))
+	for i, f := range fits {
+		part := &parts[i]
+		part.WriteString("*\n")
 		if f.Status == report.FitFailed {
-			comment(b, f.Sweep.Part+": no circuit, "+f.Error.Location()+f.Error.Text)
+			comment(part, f.Sweep.Part+": no circuit, "+f.Error.Location()+f.Error.Text)
 			continue
 		}
-		if err := writePart(b, f, taken.unique(identifier(f.Sweep.Part)), o); err != nil {
-			return fmt.Errorf("netlist of %s: %w", f.Sweep.File, err)
-		}
+		name := taken.unique(identifier(f.Sweep.Part))
+		group.Go(func() error {
+			if err := writePart(part, f, name, o); err != nil {
+				return fmt.Errorf("netlist of %s: %w", f.Sweep.File, err)
+			}
+			return nil
+		})
+	}
+	if err := group.Wait(); err != nil {
+		return err
+	}
+	for i := range parts {
+		b.WriteString(parts[i].String())
 	}
 	_, err := io.WriteString(w, b.String())
 	return err
@@ -88,16 +115,16 @@ func writePart(b *strings.Builder, f *report.Fit, name string, o Options) error 
 	if !(f.Sweep.FMin > 0 && f.Sweep.FMin <= f.Sweep.FMax) || math.IsInf(f.Sweep.FMax, 1) {
 		return fmt.Errorf("frequencies %v Hz to %v Hz: expected a positive, rising range", f.Sweep.FMin, f.Sweep.FMax)
 	}
-	n, err := build(c, values, f.Sweep.FMin, f.Sweep.FMax, o.LadderError)
+	n, err := build(c, values, f.Sweep.FMin, f.Sweep.FMax, o)
 	if err != nil {
 		return err
 	}
 	header(b, f, c, name)
 	for _, l := range n.ladders {
-		comment(b, fmt.Sprintf("%s: ladder of %d %s, largest error %.2g %% of its own impedance", l.element, l.sections, l.kind, 100*l.error))
+		comment(b, l.String())
 	}
 	if len(n.ladders) > 0 {
-		comment(b, fmt.Sprintf("With them the impedance of the whole equals the fit within %.2g %% in that range.", 100*n.error))
+		comment(b, fmt.Sprintf("With them the whole equals the fit within %.2g %% of its impedance, %.2g %% of its resistance, in that range.", 100*n.error, 100*n.realError))
 	}
 	for _, text := range n.remarks {
 		comment(b, text)
@@ -224,9 +251,9 @@ func (n names) unique(name string) string {
 	return free
 }
 
-// gridDensity is the number of frequencies a decade at which a ladder is
-// fitted; it is checked at those and at the middles between them.
-const gridDensity = 16
+// gridDensity is the number of frequencies a decade at which a network with
+// ladders is checked.
+const gridDensity = 200
 
 func grid(from, to float64) []float64 {
 	n := max(25, int(math.Ceil(gridDensity*math.Log10(to/from)))+1)
@@ -240,13 +267,16 @@ func grid(from, to float64) []float64 {
 	return f
 }
 
-// relativeError returns the largest |a/b − 1|.
-func relativeError(a, b []complex128) float64 {
-	worst := 0.0
+// relativeErrors returns the largest |a/b − 1| of the impedances, and of their
+// real parts.
+func relativeErrors(a, b []complex128) (impedance, resistance float64) {
 	for i := range a {
-		if d := cmplx.Abs(a[i]/b[i] - 1); !(d <= worst) {
-			worst = d
+		if d := cmplx.Abs(a[i]/b[i] - 1); !(d <= impedance) {
+			impedance = d
+		}
+		if d := math.Abs(real(a[i])/real(b[i]) - 1); !(d <= resistance) {
+			resistance = d
 		}
 	}
-	return worst
+	return impedance, resistance
 }

@@ -173,7 +173,7 @@ func TestOwnCircuitsInSimulator(t *testing.T) {
 	}
 }
 
-var statedError = regexp.MustCompile(`(?m)^\* With them the impedance of the whole equals the fit within ([0-9.e+-]+) % in that range\.$`)
+var statedError = regexp.MustCompile(`(?m)^\* With them the whole equals the fit within ([0-9.e+-]+) % of its impedance, ([0-9.e+-]+) % of its resistance, in that range\.$`)
 
 func check(t *testing.T, f *report.Fit, ladderError float64) {
 	t.Helper()
@@ -183,14 +183,25 @@ func check(t *testing.T, f *report.Fit, ladderError float64) {
 	}
 	text := b.String()
 	c, _ := models.Parse(f.Circuit.Expression)
-	tolerance := 1e-6
+	tolerance, realTolerance := 1e-6, math.Inf(1)
 	distributed := strings.ContainsRune(f.Circuit.Expression, ',') || strings.Contains(f.Circuit.Expression, "skin")
 	if m := statedError.FindStringSubmatch(text); m != nil {
 		percent, err := strconv.ParseFloat(m[1], 64)
 		if err != nil {
 			t.Fatal(err)
 		}
+		realPercent, err := strconv.ParseFloat(m[2], 64)
+		if err != nil {
+			t.Fatal(err)
+		}
 		tolerance = percent/100*1.05 + 1e-6 // two digits are printed
+		realTolerance = realPercent/100*1.05 + 1e-6
+		if strings.Contains(text, "Rloop") {
+			realTolerance = math.Inf(1) // it adds resistance, which the header says
+		}
+		if realPercent > 1.05 {
+			t.Errorf("stated error of the resistance %v %%, wanted at most 1 %%", realPercent)
+		}
 		if !distributed || tolerance > 1.05*ladderError+1e-6 {
 			t.Errorf("stated error %v %%, wanted at most %v", percent, ladderError)
 		}
@@ -211,6 +222,9 @@ func check(t *testing.T, f *report.Fit, ladderError float64) {
 	for i, freq := range freq {
 		if d := cmplx.Abs(z[i]/c.At(freq, f.Values()) - 1); !(d <= worst) {
 			worst, at = d, freq
+		}
+		if d := math.Abs(real(z[i])/real(c.At(freq, f.Values())) - 1); d > realTolerance {
+			t.Errorf("resistance off by %.3g at %.6g Hz, want at most %.3g", d, freq, realTolerance)
 		}
 	}
 	if !(worst <= tolerance) {

@@ -25,14 +25,17 @@ func TestWrite(t *testing.T) {
 	heron.Sweep.File = "lot-heron/c017.csv\n.END"
 	heron.Parameters[1].Determined, heron.Parameters[1].Low95 = false, nil
 	heron.Parameters[3].Fixed = true
-	otter := record(t, "C017", "", "loss(C1, D) + Rx + Rp + RP", []float64{1e-8, 0.01, 1, 2, 3}, 100, 1e5)
+	otter := record(t, "C017", "", "C1 + Rx + Rp + RP", []float64{1e-8, 1, 2, 3}, 100, 1e5)
 	otter.Status = report.NotConverged
 	odd := record(t, "7 µH <x>\r\n.end", "", "L || R", []float64{7e-6, 1e3}, 100, 1e5)
 	failed := report.Failed(report.Sweep{File: "x.csv", Part: "x"}, report.Error{Line: 3, Text: "expected a number\n.END"})
 	fits := []*report.Fit{heron, otter, odd, failed, odd}
-	var b bytes.Buffer
+	var b, parallel bytes.Buffer
 	if err := Write(&b, fits, Options{Made: "realpart test"}); err != nil {
 		t.Fatal(err)
+	}
+	if err := Write(&parallel, fits, Options{Made: "realpart test", Jobs: 4}); err != nil || parallel.String() != b.String() {
+		t.Errorf("with four workers the netlist differs, error %v", err)
 	}
 	path := filepath.Join("..", "..", "testdata", "report", "netlist.lib")
 	if *update {
@@ -95,6 +98,7 @@ func TestWriteErrors(t *testing.T) {
 	f.Sweep.FMin = 0
 	check(f, Options{}, "positive, rising range")
 	check(good(), Options{LadderError: 2}, "ladder error 2")
+	check(good(), Options{LadderRealError: -1}, "ladder error -1")
 }
 
 func BenchmarkWrite(b *testing.B) {

@@ -223,8 +223,7 @@ func (d *sweep) refine(m *sections, c *Settings) *state {
 // additions returns starts with one more real pole and with one more pair, placed where the residual projects on them best,
 // beyond what the parameters already there can take up.
 func (d *sweep) additions(st *state, c *Settings) []*sections {
-	f := factor(d.jacobian(st.m), true)
-	r := append([]float64(nil), st.r...)
+	f, r := d.linearised(st, true)
 	f.project(r)
 	n := len(d.x)
 	w := make([]complex128, n)

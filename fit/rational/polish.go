@@ -1,6 +1,10 @@
 package rational
 
-import "math"
+import (
+	"math"
+
+	"gonum.org/v1/gonum/floats"
+)
 
 // jacobian returns the columns ∂ρ/∂θ, ρ = ln(Z_model/Z), θ = d, (e), (o), (ln a, r) of each real pole, (ln α, ln β, r₁, r₀) of each section.
 func (d *sweep) jacobian(m *sections) [][]float64 {
@@ -87,11 +91,7 @@ func (d *sweep) polish(st *state, steps int, tol float64, nonNegative bool) *sta
 		if math.IsInf(st.rss, 0) || !(st.rss > 0) {
 			return st
 		}
-		f := factor(d.jacobian(st.m), false)
-		rest := make([]float64, len(st.r))
-		for i, v := range st.r {
-			rest[i] = -v
-		}
+		f, rest := d.linearised(st, false)
 		y := f.project(rest)
 		var next *state
 		for range 8 {
@@ -119,6 +119,39 @@ func (d *sweep) polish(st *state, steps int, tol float64, nonNegative bool) *sta
 		}
 	}
 	return st
+}
+
+// linearised returns the factored Jacobian at st, poles at the edge of the band frozen, and −ρ.
+func (d *sweep) linearised(st *state, twice bool) (f *factored, rest []float64) {
+	cols := d.jacobian(st.m)
+	rest = make([]float64, len(st.r))
+	for i, v := range st.r {
+		rest[i] = -v
+	}
+	d.freeze(st.m, cols, rest)
+	return factor(cols, twice), rest
+}
+
+// freeze clears the columns of the poles that stand at the edge of the band and would be moved across it: left in, they would take
+// most of the step and then be held back, and the iteration would stall. A pole
+// added beside them would seem to be no gain, either.
+func (d *sweep) freeze(m *sections, cols [][]float64, rest []float64) {
+	edge := func(v, lo, hi float64, col []float64) {
+		g := floats.Dot(col, rest)
+		if v <= lo*(1+1e-9) && g < 0 || v >= hi*(1-1e-9) && g > 0 {
+			clear(col)
+		}
+	}
+	k := len(cols) - 2*m.order()
+	for _, f := range m.one {
+		edge(f.a, d.band.lo, d.band.hi, cols[k])
+		k += 2
+	}
+	for _, p := range m.two {
+		edge(p.alpha, 0, d.band.overdamped(p.beta), cols[k])
+		edge(p.beta, d.band.lo*d.band.lo, d.band.hi*d.band.hi, cols[k+1])
+		k += 4
+	}
 }
 
 // clampResidues sets negative coefficients to 0.

@@ -112,8 +112,13 @@ func (m *sections) hold(b band) {
 		p := &m.two[i]
 		p.beta = min(max(p.beta, b.lo*b.lo), b.hi*b.hi)
 		w := math.Sqrt(p.beta)
-		// Two real poles a and β/a: both inside the band where the larger is at most min(hi, β/lo).
-		far := min(b.hi, p.beta/b.lo)
-		p.alpha = min(max(p.alpha, minDamping*w), (far+p.beta/far)/2)
+		p.alpha = min(max(p.alpha, minDamping*w), b.overdamped(p.beta))
 	}
+}
+
+// overdamped returns the largest α of a section: its two real poles a and β/a are both inside the band where the larger is at
+// most min(hi, β/lo).
+func (b band) overdamped(beta float64) float64 {
+	far := min(b.hi, beta/b.lo)
+	return (far + beta/far) / 2
 }

@@ -6,6 +6,8 @@ import (
 
 	"gonum.org/v1/gonum/floats"
 	"gonum.org/v1/gonum/stat/distuv"
+
+	"realpart/fit/residual"
 )
 
 // A Step is a sudden change of level between two neighbouring points, such as a meter changing its range makes.
@@ -23,6 +25,8 @@ type StepSettings struct {
 	FalseAlarm float64 // largest P to report; default 0.001
 	MaxSteps   int     // most steps to look for; default 6
 }
+
+const defaultMaxSteps = 6
 
 // edge is how many points must lie on either side of a step: fewer are outliers, not a level.
 const edge = 4
@@ -42,7 +46,7 @@ func Steps(freq []float64, z []complex128, s *StepSettings) ([]Step, error) {
 		c.FalseAlarm = 0.001
 	}
 	if c.MaxSteps == 0 {
-		c.MaxSteps = 6
+		c.MaxSteps = defaultMaxSteps
 	}
 	if err := checkSweep(freq, z, 24); err != nil {
 		return nil, err
@@ -81,7 +85,8 @@ func (d *sweep) steps(freq []float64, g *growth, settings *Settings, c *StepSett
 		dof := float64(2*n - k - 1)
 		sigma := math.Sqrt(t.rest[at] / dof / t.weight[at])
 		p := float64(n) * 2 * distuv.StudentsT{Mu: 0, Sigma: 1, Nu: dof}.Survival(math.Abs(total)/sigma)
-		if !(p < c.FalseAlarm) || !(d.criterion(t.rest[at], k+1) < d.criterion(g.last().rss, d.coefficients(g.last().m))) {
+		if !(p < c.FalseAlarm) || !(t.contrast(at) > leastContrast) ||
+			!(d.criterion(t.rest[at], k+1)+d.evidence() < d.criterion(g.last().rss, d.coefficients(g.last().m))) {
 			break
 		}
 		level = levelled(level, at, total)
@@ -111,6 +116,10 @@ func (d *sweep) criterion(rss float64, k int) float64 {
 	return n*math.Log(rss/n) + float64(k)*math.Log(n)
 }
 
+// evidence is how much better the criterion must be with a step. Its position is one more parameter, chosen among n; and poles are
+// there in every sweep but steps in few: at even odds, one step would often stand for two weak poles. 15 are odds of e^7.5 to 1.
+func (d *sweep) evidence() float64 { return 2*math.Log(float64(len(d.x))) + 15 }
+
 // propose returns the position and size of the step that helps most, or −1 where no order is better with one.
 func (d *sweep) propose(g *growth) (at int, delta float64) {
 	at = -1
@@ -119,15 +128,13 @@ func (d *sweep) propose(g *growth) (at int, delta float64) {
 		k := d.coefficients(st.m)
 		best = min(best, d.criterion(st.rss, k))
 	}
-	// A position is one more parameter, chosen among n.
-	allowance := 2 * math.Log(float64(len(d.x)))
 	for _, st := range g.accepted {
 		k := d.coefficients(st.m)
 		t := d.scan(st, 0, 0)
 		if t.at < 0 {
 			continue
 		}
-		if v := d.criterion(t.rest[t.at], k+1) + allowance; v < best {
+		if v := d.criterion(t.rest[t.at], k+1) + d.evidence(); v < best {
 			best, at, delta = v, t.at, t.delta[t.at]
 		}
 	}
@@ -137,21 +144,27 @@ func (d *sweep) propose(g *growth) (at int, delta float64) {
 // A scan holds, for a step at each position, its least-squares size, the weight gᵀ(1−QQᵀ)g, and the sum of squares with it.
 type scan struct {
 	delta, weight, rest []float64
-	at                  int // the position of the smallest rest, −1 where a single outlying point explains it better
+	residuals           []float64 // of ln|Z|, steps put back
+	at                  int       // the position of the smallest rest, −1 where a single outlying point explains it better
 }
 
 // scan tries a step at each position in the linearised model: ρ + J·Δθ − δ·1(i ≥ k) in the real (magnitude) rows. A step of size
 // removed, already taken out of the data from position from on, is put back first.
 func (d *sweep) scan(st *state, from int, removed float64) *scan {
 	n := len(d.x)
+	// Poles at the edge of the band are not frozen here: what they could take up across it is no step.
 	f := factor(d.jacobian(st.m), true)
-	r := append([]float64(nil), st.r...)
-	for i := from; i < n; i++ {
-		r[i] -= removed
+	r := make([]float64, len(st.r)) // ln(measured/model), which a level raised by δ raises by δ
+	for i, v := range st.r {
+		r[i] = -v
 	}
+	for i := from; i < n; i++ {
+		r[i] += removed
+	}
+	residuals := append([]float64(nil), r[:n]...)
 	f.project(r)
 	rr := floats.Dot(r, r)
-	t := &scan{make([]float64, n), make([]float64, n), make([]float64, n), -1}
+	t := &scan{make([]float64, n), make([]float64, n), make([]float64, n), residuals, -1}
 	// 1(i ≥ k) projected: with c_k = Qᵀ1(i ≥ k) by suffix sums, gᵀ(1−QQᵀ)g = (n−k) − |c_k|², gᵀr = Σ_{i≥k} r_i.
 	c := make([]float64, len(f.q))
 	sum := 0.0
@@ -165,8 +178,7 @@ func (d *sweep) scan(st *state, from int, removed float64) *scan {
 		if k < edge || k > n-edge || !(w > 1e-6) {
 			continue
 		}
-		// ρ = ln(model/measured): a level raised by δ lowers ρ by δ.
-		t.delta[k], t.weight[k], t.rest[k] = -sum/w, w, rr-sum*sum/w
+		t.delta[k], t.weight[k], t.rest[k] = sum/w, w, rr-sum*sum/w
 		if t.at < 0 || t.rest[k] < t.rest[t.at] {
 			t.at = k
 		}
@@ -175,6 +187,33 @@ func (d *sweep) scan(st *state, from int, removed float64) *scan {
 		t.at = -1
 	}
 	return t
+}
+
+// leastContrast is the least value of contrast for a step.
+const leastContrast = 4.5
+
+// contrast compares the change of the mean residual across position k, ten points on either side, with such changes elsewhere in the sweep
+// (median absolute deviation). Where a model is not good enough and leaves smooth residuals, they change everywhere, and a step that only
+// mends a misfit does not stand out.
+func (t *scan) contrast(k int) float64 {
+	const reach = 10
+	n := len(t.residuals)
+	change := func(k int) float64 {
+		lo, hi := max(k-reach, 0), min(k+reach, n)
+		before := floats.Sum(t.residuals[lo:k]) / float64(k-lo)
+		after := floats.Sum(t.residuals[k:hi]) / float64(hi-k)
+		return (after - before) / math.Sqrt(1/float64(k-lo)+1/float64(hi-k))
+	}
+	var others []float64
+	for i := edge; i <= n-edge; i++ {
+		if i <= k-reach || i >= k+reach {
+			others = append(others, change(i))
+		}
+	}
+	if len(others) == 0 {
+		return math.Inf(1)
+	}
+	return math.Abs(change(k)) / residual.MAD(others)
 }
 
 // outlier returns the largest fall of the sum of squares that freeing one point next to position k gives.

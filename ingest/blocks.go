@@ -49,15 +49,17 @@ func (seg *segment) onlyVarying(g *group) int {
 // joinHalves pairs blocks of one quantity each that stand one below the other,
 // with the same frequencies.
 func (b *builder) joinHalves() {
-	for i := 0; i+1 < len(b.parsed.halves); {
-		one, two := b.parsed.halves[i], b.parsed.halves[i+1]
-		if !sameFreq(one.freq, two.freq) || !b.joinable(one.col.role, two.col.role) {
-			i++
+	var left []*half
+	for i := 0; i < len(b.parsed.halves); i++ {
+		one := b.parsed.halves[i]
+		if i+1 == len(b.parsed.halves) || !sameFreq(one.freq, b.parsed.halves[i+1].freq) || !b.joinable(one.col.role, b.parsed.halves[i+1].col.role) {
+			left = append(left, one)
 			continue
 		}
-		b.joinPair(one, two)
-		b.parsed.halves = append(b.parsed.halves[:i], b.parsed.halves[i+2:]...)
+		b.joinPair(one, b.parsed.halves[i+1])
+		i++
 	}
+	b.parsed.halves = left
 	if len(b.parsed.halves) > 0 && len(b.parsed.parts) > 0 {
 		h := b.parsed.halves[0]
 		b.refuse(b.halfError(h))

@@ -78,6 +78,7 @@ type builder struct {
 	*reader
 	*parsed
 	assumed []role // whose unit was taken for granted
+	byName  map[string]*partData
 }
 
 func (b *builder) refuse(e *Error) {
@@ -218,17 +219,14 @@ func (b *builder) addGroup(seg *segment, g *group) {
 		return
 	}
 	// A part column: rows of the same name belong together wherever they stand.
-	byName := map[string]*partData{}
-	for _, d := range b.parsed.parts {
-		if d.label != "" {
-			byName[d.label] = d
-		}
+	if b.byName == nil {
+		b.byName = map[string]*partData{}
 	}
 	for i := range f {
-		d := byName[seg.part[i]]
+		d := b.byName[seg.part[i]]
 		if d == nil {
 			d = add(seg.part[i])
-			byName[seg.part[i]] = d
+			b.byName[seg.part[i]] = d
 		}
 		put(d, i)
 	}

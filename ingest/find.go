@@ -178,8 +178,7 @@ func readFile(path string, o Options) ([]byte, error) {
 	case mode&(fs.ModeDevice|fs.ModeSocket|fs.ModeIrregular) != 0:
 		return bad("a device", "a file", "- for standard input", fs.ErrInvalid)
 	case mode.IsRegular() && info.Size() > o.MaxBytes:
-		_, err := readAll(path, strings.NewReader(""), -1)
-		return nil, err
+		return nil, tooLarge(path, o.MaxBytes)
 	}
 	f, err := os.Open(file)
 	if err != nil {
@@ -195,9 +194,12 @@ func readFile(path string, o Options) ([]byte, error) {
 			return bad(err.Error(), "a readable file", "", err)
 		}
 		if int64(n) == info.Size() {
-			rest, err := readAll(path, f, o.MaxBytes-int64(n))
+			rest, err := io.ReadAll(io.LimitReader(f, o.MaxBytes-int64(n)+1))
 			if err != nil {
-				return nil, err
+				return bad(err.Error(), "a readable file", "", err)
+			}
+			if int64(n+len(rest)) > o.MaxBytes {
+				return nil, tooLarge(path, o.MaxBytes)
 			}
 			return append(data[:n], rest...), nil
 		}

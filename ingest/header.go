@@ -22,13 +22,16 @@ type heading struct {
 // known reports whether the heading says anything about a measured quantity.
 func (h heading) known() bool { return h.role != roleNone }
 
+// maxHeading is the longest header cell, in bytes, that is looked at.
+const maxHeading = 200
+
 // readHeading recognises one header cell.
 func readHeading(text string) heading {
 	h := heading{text: strings.TrimSpace(text)}
 	t := strings.ReplaceAll(h.text, `""`, `"`)
 	t = tidyHeader.Replace(strings.Trim(t, `"`))
 	t = strings.TrimSpace(t)
-	if t == "" {
+	if t == "" || len(t) > maxHeading {
 		return h
 	}
 	if h.identify(t) {
@@ -208,15 +211,14 @@ func (h *heading) identifyS(name string) bool {
 		case strings.HasPrefix(w, "trc") || strings.HasPrefix(w, "ch") && len(w) <= 3 || strings.HasPrefix(w, "tr") && len(w) <= 3:
 			continue
 		}
-		if u, ok, _ := readUnit(w); ok && isAngleDim(u.dim) {
-			part, stated = roleSPhase, u
-			continue
+		p, ok := sWords[w]
+		if !ok {
+			return false
 		}
-		if p, ok := sWords[w]; ok {
-			part = p
-			continue
+		part = p
+		if u, ok, _ := readUnit(w); ok && p == roleSPhase && isAngleDim(u.dim) {
+			stated = u
 		}
-		return false
 	}
 	if port == 0 {
 		return false

@@ -135,10 +135,13 @@ func readAll(name string, r io.Reader, limit int64) ([]byte, error) {
 		return nil, &Error{File: name, Found: err.Error(), Expected: "a readable input", Err: err}
 	}
 	if int64(len(data)) > limit {
-		return nil, &Error{File: name, Found: fmt.Sprintf("more than %d bytes", limit),
-			Expected: "a sweep of smaller size", Hint: "split the file", Err: ErrTooLarge}
+		return nil, tooLarge(name, limit)
 	}
 	return data, nil
+}
+
+func tooLarge(name string, limit int64) *Error {
+	return &Error{File: name, Found: fmt.Sprintf("more than %d bytes", limit), Expected: "a sweep of smaller size", Hint: "split the file", Err: ErrTooLarge}
 }
 
 // parse reads the bytes of one file.

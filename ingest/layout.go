@@ -20,6 +20,13 @@ type table struct {
 // before the file is taken to have none.
 const headerScan = 30
 
+// maxColumns and maxHeaderCells bound the work on headers: columns of one, and
+// cells looked at in all lines of a file that could be one.
+const (
+	maxColumns     = 16384
+	maxHeaderCells = 1 << 19
+)
+
 // lineKind is a quick look at a line.
 type lineKind struct {
 	cells   int // not empty
@@ -141,6 +148,10 @@ func (s *source) tryHeader(i int) (table, bool) {
 	rough := s.split(l, nil)
 	k := s.look(rough)
 	if k.cells < 2 || !k.letters || k.numbers > k.texts/2 {
+		return table{}, false
+	}
+	// A file of nothing but headers must not take hours.
+	if s.headerCells += len(rough); len(rough) > maxColumns || s.headerCells > maxHeaderCells {
 		return table{}, false
 	}
 	data, dataCells := s.nextData(i+1, 5, nil)
@@ -416,6 +427,7 @@ func (s *source) findColumns(from int, want Columns) (table, *Error) {
 			byText[key] = v
 		}
 	}
+	seen := map[string]bool{} // keys whose header stands somewhere, for the error
 	for i := from; i < len(s.lines); i++ {
 		if len(byText) > 0 {
 			n := 0
@@ -423,9 +435,14 @@ func (s *source) findColumns(from int, want Columns) (table, *Error) {
 				n = len(cells)
 			}
 			texts, cells := s.cellTexts(s.uncomment(s.lines[i]), n)
-			if s.look(cells).letters && len(texts) >= most {
+			if s.look(cells).letters && len(texts) >= most && len(texts) <= maxColumns {
 				if cols, ok := chooseColumns(texts, byText, number); ok {
 					return s.withUnitRow(table{head: i, unit: -1, group: -1, first: i + 1, cols: cols, key: headerKey(texts)}), nil
+				}
+				for key, text := range byText {
+					if _, ok := chooseColumns(texts, map[string]string{key: text}, nil); ok {
+						seen[key] = true
+					}
 				}
 			}
 			continue
@@ -434,7 +451,7 @@ func (s *source) findColumns(from int, want Columns) (table, *Error) {
 			continue
 		}
 		cells := s.split(s.lines[i], nil)
-		if k := s.look(cells); len(cells) < most || !k.isData() {
+		if k := s.look(cells); len(cells) < most || len(cells) > maxColumns || !k.isData() {
 			continue
 		}
 		if c := number["f"]; !looksNumber(s.cell(cells[c])+" ", s.decimal) && !looksNumber(orZero(s.cell(cells[c])), s.decimal) {
@@ -467,7 +484,7 @@ func (s *source) findColumns(from int, want Columns) (table, *Error) {
 		e.Line = int(s.lines[min(from, len(s.lines)-1)].num)
 	}
 	for _, key := range columnKeys {
-		if text, ok := byText[key]; ok {
+		if text, ok := byText[key]; ok && !seen[key] {
 			e.Expected = fmt.Sprintf("a column with the header %q (--columns %s)", text, key)
 			break
 		}

@@ -327,11 +327,12 @@ func (s *source) labelColumns(p *plan) {
 	}
 	got := make([]found, len(p.cols))
 	roleSets := map[string]map[role]bool{}
+	words := map[string]heading{} // the same words come with every part
 	for i, c := range p.cols {
 		if c.known() {
 			continue
 		}
-		h, label, ok := splitLabel(c.text)
+		h, label, ok := splitLabel(c.text, words)
 		if !ok || h.role == roleFreq || h.role == roleOmega || h.role == rolePart {
 			continue
 		}
@@ -392,7 +393,10 @@ func (s *source) labelColumns(p *plan) {
 
 // splitLabel takes a header apart into a known word (with its unit) and a label
 // before or behind it.
-func splitLabel(text string) (heading, string, bool) {
+func splitLabel(text string, words map[string]heading) (heading, string, bool) {
+	if len(text) > maxHeading {
+		return heading{}, "", false
+	}
 	t := tidyHeader.Replace(strings.TrimSpace(text))
 	try := func(word, label string) (heading, string, bool) {
 		label = strings.Trim(label, " _-:.,()[]#")
@@ -402,7 +406,11 @@ func splitLabel(text string) (heading, string, bool) {
 		if _, isUnit, _ := readUnit(label); isUnit {
 			return heading{}, "", false
 		}
-		h := readHeading(word)
+		h, ok := words[word]
+		if !ok {
+			h = readHeading(word)
+			words[word] = h
+		}
 		return h, label, h.known()
 	}
 	// The unit may stand in brackets at the very end: "|Z| c1 (Ω)".

@@ -156,8 +156,25 @@ func (r *reader) readRows(p *plan, seg *segment) (table, *segment, bool) {
 	needs := append(freqsOf(p), p.need...)
 	simple := len(p.groups) == 1 && partCol < 0 && len(p.also) == 0
 
+	plain := newPlainRow(r.source, p)
+
 	for i := p.first; i < len(r.lines); i++ {
 		l := r.lines[i]
+		if plain != nil && plain.read(r.lineText(l)) {
+			if lastNum >= 0 && l.num != lastNum+1 {
+				broken = true
+			}
+			lastNum = l.num
+			if broken {
+				seg = r.segmentFor(p, seg, plain.vals[0], len(r.lines)-i)
+				broken = false
+			}
+			seg.line = append(seg.line, l.num)
+			for k, v := range plain.vals {
+				seg.vals[k] = append(seg.vals[k], v)
+			}
+			continue
+		}
 		if r.isComment(l) {
 			if t, ok := r.headerBelow(i); ok {
 				return t, seg, true
@@ -233,12 +250,7 @@ func (r *reader) readRows(p *plan, seg *segment) (table, *segment, bool) {
 			}
 		}
 		if broken {
-			if seg == nil || !seg.continues(f) || r.pending.Part != "" || r.pending.Serial != "" {
-				seg = r.newSegment(p)
-			} else {
-				r.meta = r.meta.merge(r.pending)
-				r.pending = Metadata{}
-			}
+			seg = r.segmentFor(p, seg, f, len(r.lines)-i)
 			broken = false
 		}
 		seg.line = append(seg.line, l.num)
@@ -263,6 +275,26 @@ func (r *reader) readRows(p *plan, seg *segment) (table, *segment, bool) {
 		}
 	}
 	return table{}, seg, false
+}
+
+// segmentFor returns the segment for a row at frequency f after a break: the
+// same one if the frequencies go on and no other part was named. rows is at most
+// how many follow.
+func (r *reader) segmentFor(p *plan, seg *segment, f float64, rows int) *segment {
+	if seg != nil && seg.continues(f) && r.pending.Part == "" && r.pending.Serial == "" {
+		r.meta = r.pending.merge(r.meta)
+		r.pending = Metadata{}
+		return seg
+	}
+	seg = r.newSegment(p)
+	// Where there is one table, this is its size; many blocks grow theirs.
+	if len(r.segments) == 1 {
+		seg.line = make([]int32, 0, rows)
+		for k := range seg.vals {
+			seg.vals[k] = make([]float64, 0, rows)
+		}
+	}
+	return seg
 }
 
 // continues reports whether a frequency goes on where the segment stopped: then

@@ -93,9 +93,7 @@ func openSheet(name string, data []byte, sheet string, o Options) (src *source, 
 			src.lines = append(src.lines, line{int32(start), int32(b.Len()), num})
 		}
 		if int64(b.Len()) > o.MaxBytes {
-			e := bad(fmt.Sprintf("more than %d bytes", o.MaxBytes), "a sheet of smaller size", "split the file")
-			e.Err = ErrTooLarge
-			return nil, e
+			return nil, tooLarge(name, o.MaxBytes)
 		}
 	}
 	if rerr := rows.Error(); rerr != nil {

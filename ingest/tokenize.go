@@ -16,6 +16,8 @@ type source struct {
 	delim   byte // ',' ';' '\t' '|', blanks for runs of blanks, or cellMark in a spreadsheet
 	decimal byte // '.' or ','
 	sheet   string
+
+	headerCells int // looked at so far
 }
 
 const (
@@ -225,7 +227,7 @@ func (s *source) uncomment(l line) line {
 }
 
 // sniffLines is how many lines, evenly spread, the choice of the delimiter looks at.
-const sniffLines = 48
+const sniffLines = 32
 
 // detectDelimiter chooses delimiter and decimal sign: those under which the
 // most cells of the lines looked at are numbers. A line counts for the square

@@ -25,6 +25,25 @@ var dims = []string{"Hz", "Ω", "F", "H", "S", "°", "rad", "dB", "%", "V", "A",
 // whose m could be milli or mega.
 func readUnit(text string) (u unit, ok, ambiguous bool) {
 	t := strings.TrimSpace(text)
+	if u, ok := commonUnits[t]; ok {
+		return u, true, false
+	}
+	return searchUnit(t)
+}
+
+// commonUnits saves the search for what most headers have.
+var commonUnits = func() map[string]unit {
+	m := map[string]unit{}
+	for _, t := range strings.Fields("Hz kHz MHz GHz Ohm Ω mOhm mΩ kOhm kΩ ohm deg ° rad F µF uF nF pF H mH µH uH nH S mS dB %") {
+		if u, ok, ambiguous := searchUnit(t); ok && !ambiguous {
+			m[t] = u
+		}
+	}
+	return m
+}()
+
+// searchUnit goes through all units and prefixes.
+func searchUnit(t string) (u unit, ok, ambiguous bool) {
 	switch strings.ToLower(t) {
 	case "":
 		return unit{}, false, false
@@ -51,7 +70,7 @@ func readUnit(text string) (u unit, ok, ambiguous bool) {
 		return unit{}, false, false
 	}
 	for _, dim := range dims {
-		if exp, err := quantity.Exponent(t, dim); err == nil {
+		if exp, ok := quantity.Exponent(t, dim); ok {
 			if dim == "%" {
 				return unit{text: t, dim: "1", exp: -2}, true, false
 			}
@@ -67,7 +86,7 @@ func readUnit(text string) (u unit, ok, ambiguous bool) {
 		if i := strings.IndexByte("PNUK", t[0]); i >= 0 {
 			small := string("pnuk"[i]) + t[1:]
 			for _, dim := range dims[:5] {
-				if exp, err := quantity.Exponent(small, dim); err == nil {
+				if exp, ok := quantity.Exponent(small, dim); ok {
 					return unit{text: t, dim: dim, exp: exp}, true, false
 				}
 			}
@@ -80,8 +99,8 @@ func readUnit(text string) (u unit, ok, ambiguous bool) {
 func lonePrefix(t string) (sign string, exp int, ok bool) {
 	switch t {
 	case "a", "f", "p", "n", "u", "µ", "\u03bc", "m", "k", "M", "G", "T":
-		e, err := quantity.Exponent(t, "")
-		return t, e, err == nil
+		e, ok := quantity.Exponent(t, "")
+		return t, e, ok
 	}
 	return "", 0, false
 }
@@ -107,7 +126,7 @@ func scale(v float64, exp int) float64 {
 	return v / math.Pow10(-exp)
 }
 
-// allUnits describes a dim for messages.
+// dimName describes a dim for messages.
 func dimName(dim string) string {
 	if dim == "1" {
 		return "a plain number or %"

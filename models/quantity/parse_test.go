@@ -172,12 +172,14 @@ func TestExponent(t *testing.T) {
 		text, unit string
 		want       int
 	}{{"kHz", "Hz", 3}, {"mOhm", "Ω", -3}, {"MOHM", "Ω", 6}, {"F", "F", 0}, {"", "F", 0}, {"µ", "F", -6}, {"MHZ", "Hz", 6}, {"pF", "F", -12}} {
-		if got, err := Exponent(c.text, c.unit); err != nil || got != c.want {
-			t.Errorf("Exponent(%q, %q) = %v, %v, want %v", c.text, c.unit, got, err, c.want)
+		if got, ok := Exponent(c.text, c.unit); !ok || got != c.want {
+			t.Errorf("Exponent(%q, %q) = %v, %v, want %v", c.text, c.unit, got, ok, c.want)
 		}
 	}
-	if _, err := Exponent("uH", "F"); err == nil || err.(*Error).Found != "H" {
-		t.Errorf("Exponent(uH, F): %v", err)
+	for text, unit := range map[string]string{"uH": "F", "mm": "Ω", "Hz": "Ω", "uuF": "F", "°": "°C"} {
+		if exp, ok := Exponent(text, unit); ok {
+			t.Errorf("Exponent(%q, %q) = %v, want none", text, unit, exp)
+		}
 	}
 }
 

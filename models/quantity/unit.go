@@ -2,7 +2,6 @@ package quantity
 
 import (
 	"fmt"
-	"math"
 	"strings"
 	"unicode/utf8"
 )
@@ -85,20 +84,10 @@ func canonical(text string) string {
 
 // Exponent returns the power of ten that a unit text stands for: "kHz" is 3
 // where unit is "Hz", "mOhm" is −3 where unit is "Ω", "F" is 0 where unit is
-// "F". An empty text and a lone prefix ("k") count as the unit itself. The
-// error is an [*Error] that names found and expected unit.
-func Exponent(text, unit string) (int, error) {
-	text = canonical(text)
-	if exp, ok := unitExponent(text, unit); ok {
-		return exp, nil
-	}
-	return 0, &Error{Text: text, Found: foundUnit(text, unit), Expected: unit, Hint: unitHint(text, unit)}
-}
-
-// Scale is 10^Exponent(text, unit).
-func Scale(text, unit string) (float64, error) {
-	exp, err := Exponent(text, unit)
-	return math.Pow10(exp), err
+// "F". An empty text and a lone prefix ("k") count as the unit itself. ok is
+// false where the text is no way to write the unit.
+func Exponent(text, unit string) (exp int, ok bool) {
+	return unitExponent(canonical(text), unit)
 }
 
 // unitExponent works on canonical text.

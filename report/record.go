@@ -3,6 +3,7 @@ package report
 import (
 	"cmp"
 	"math"
+	"slices"
 
 	"gonum.org/v1/gonum/stat/distuv"
 
@@ -21,7 +22,9 @@ type Fit struct {
 	Schema string `json:"schema"`
 	Sweep  Sweep  `json:"sweep"`
 	// Kind of part: capacitor, inductor, bead, resistor, resonator or any.
-	Kind          models.Kind `json:"kind,omitzero"`
+	Kind models.Kind `json:"kind,omitzero"`
+	// KindReason says how the kind was told; "" where it was given.
+	KindReason    string      `json:"kind_reason,omitzero"`
 	Circuit       *Circuit    `json:"circuit,omitzero"`
 	Status        Status      `json:"status"`
 	Error         *Error      `json:"error,omitzero"`
@@ -32,6 +35,9 @@ type Fit struct {
 	Figures       []Figure    `json:"figures,omitzero"`
 	Candidates    []Candidate `json:"candidates,omitzero"`
 	Warnings      []Warning   `json:"warnings,omitzero"`
+	// Advice is on the next sweep, the best first; nil where none was asked
+	// for.
+	Advice []Advice `json:"advice,omitzero"`
 }
 
 // Sweep says what was measured, and where it was found. Points counts those
@@ -159,6 +165,21 @@ type Warning struct {
 	Text string `json:"text"`
 }
 
+// Advice is a sweep that would pin a parameter down: so many points between two
+// frequencies. HalfWidthThen is the half-width of its 95 % interval from
+// scatter that is to be expected, as a share of the value (of an exponent: in
+// the exponent itself), HalfWidthNow that of the present sweep, nil where it
+// does not determine the parameter. Text says it in words.
+type Advice struct {
+	Parameter     string   `json:"parameter"`
+	FromHz        float64  `json:"from_hz"`
+	ToHz          float64  `json:"to_hz"`
+	Points        int      `json:"points"`
+	HalfWidthNow  *float64 `json:"half_width_now,omitzero"`
+	HalfWidthThen float64  `json:"half_width_then"`
+	Text          string   `json:"text"`
+}
+
 // Options steer [New].
 type Options struct {
 	// At holds the frequencies in Hz for the figures; nil means
@@ -191,7 +212,7 @@ func DefaultAt(fMin, fMax float64) []float64 {
 func New(s Sweep, a *fit.Analysis, o Options) *Fit {
 	r := a.Result
 	f := &Fit{
-		Schema: Schema, Sweep: s, Kind: a.Kind, Status: NotConverged,
+		Schema: Schema, Sweep: s, Kind: a.Kind, KindReason: a.KindReason, Status: NotConverged,
 		Circuit:       &Circuit{Name: a.Name, Expression: r.Circuit.String()},
 		Parameters:    []Parameter{},
 		Correlation:   [][]float64{},
@@ -266,7 +287,23 @@ func New(s Sweep, a *fit.Analysis, o Options) *Fit {
 			f.Warnings = append(f.Warnings, Warning(w))
 		}
 	}
+	for _, v := range a.Advice {
+		f.Advice = append(f.Advice, Advice{
+			Parameter: v.Parameter, FromHz: v.From, ToHz: v.To, Points: v.Points,
+			HalfWidthNow: finite(v.Now), HalfWidthThen: v.Then, Text: v.String(),
+		})
+	}
 	return f
+}
+
+// AllWarnings returns the warnings of a record, with one that the fit did not
+// converge where that is so and none says it.
+func (f *Fit) AllWarnings() []Warning {
+	said := slices.ContainsFunc(f.Warnings, func(w Warning) bool { return w.Code == string(NotConverged) })
+	if f.Status != NotConverged || said {
+		return f.Warnings
+	}
+	return append([]Warning{{string(NotConverged), "The fit stopped before it converged; its values are the last ones, and their intervals mean little."}}, f.Warnings...)
 }
 
 // Failed makes the record of a sweep that could not be read or fitted.

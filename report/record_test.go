@@ -4,6 +4,7 @@ import (
 	"bytes"
 	"encoding/json"
 	"math"
+	"slices"
 	"strings"
 	"testing"
 
@@ -72,11 +73,29 @@ func TestText(t *testing.T) {
 	}
 	notConverged.SelfResonance = []Resonance{}
 	notConverged.Residuals.Structured = true
+	summary := func(width int) string {
+		var fits []*Fit
+		for _, lot := range []string{"lot-heron", "lot-otter"} {
+			a, b := heron(), heron()
+			a.Sweep.Lot, b.Sweep.Lot = lot, lot
+			b.Sweep.Part = "c018 with a long name"
+			b.Parameters, b.Circuit = b.Parameters[:1], &Circuit{Expression: "ESR"}
+			b.Warnings, b.SelfResonance = []Warning{}, []Resonance{}
+			fits = append(fits, a, b, otter())
+		}
+		var b bytes.Buffer
+		if err := WriteSummary(&b, fits, TextOptions{Width: width}); err != nil {
+			t.Fatal(err)
+		}
+		return b.String()
+	}
 	for name, got := range map[string]string{
 		"text-80.txt":            write(heron(), TextOptions{}),
 		"text-120-all.txt":       write(heron(), TextOptions{Width: 120, All: true, Quiet: true, Reading: []string{"columns: f = 1, z = 2, phase = 3"}}),
 		"text-not-converged.txt": write(notConverged, TextOptions{Quiet: true}),
 		"text-failed.txt":        write(otter(), TextOptions{}),
+		"summary-80.txt":         summary(80),
+		"summary-60.txt":         summary(60),
 	} {
 		golden(t, name, got)
 		limit := 80
@@ -270,7 +289,12 @@ func TestNew(t *testing.T) {
 	s.analysis.Candidates = []fit.Candidate{{Name: "cap-ideal", Reason: "not possible", AICc: math.NaN()}}
 	r := s.analysis.Result
 	r.Parameters[1].Determined, r.Parameters[1].Low95, r.Parameters[1].StdError = false, math.NaN(), math.NaN()
+	s.analysis.KindReason = "the phase"
+	s.analysis.Advice = []fit.Advice{{Parameter: "C", From: 10, To: 90, Points: 9, Now: math.Inf(1), Then: 0.01}}
 	f := New(s.sweep, s.analysis, Options{})
+	if len(f.Advice) != 1 || f.Advice[0].HalfWidthNow != nil || f.Advice[0].HalfWidthThen != 0.01 || f.Advice[0].Text == "" || f.KindReason != "the phase" {
+		t.Errorf("advice %+v, reason %q", f.Advice, f.KindReason)
+	}
 	if diff := cmp.Diff(r.Values(), f.Values()); diff != "" {
 		t.Error(diff)
 	}
@@ -309,8 +333,17 @@ func TestNew(t *testing.T) {
 		t.Errorf("round trip: %v", err)
 	}
 	r.Status = lm.IterationLimit
-	if f := New(s.sweep, s.analysis, Options{}); f.Status != NotConverged {
+	f = New(s.sweep, s.analysis, Options{})
+	if f.Status != NotConverged {
 		t.Errorf("status %s for %s", f.Status, r.Status)
+	}
+	// That a fit did not converge is said once, whoever says it.
+	said := append(slices.Clone(f.Warnings), Warning{string(NotConverged), "by the analysis"})
+	if n := len(f.AllWarnings()); n != 3 {
+		t.Errorf("%d warnings, want 3", n)
+	}
+	if f.Warnings = said; len(f.AllWarnings()) != 3 {
+		t.Errorf("%d warnings, want 3", len(f.AllWarnings()))
 	}
 
 	accuracy := func(f, z float64) (float64, float64, bool) { return 0.001, 0.001, true }

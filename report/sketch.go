@@ -17,13 +17,13 @@ const sketchRows = 9 // odd, so that one line is the middle
 
 // Sketch draws |Z| and phase over frequency in characters: the model as a line
 // of braille dots, the measured points as "+" where they lie off that line by
-// a dot or more. width is in columns; 0 means 80.
+// a dot or more. width is in columns, 50 at least; 0 means 80.
 func Sketch(w io.Writer, t *Traces, width int) error {
 	if width == 0 {
 		width = 80
 	}
 	const margin = 11 // for the scale
-	columns := max(width, 40) - margin - 2
+	columns := max(width, 50) - margin - 2
 	logs := func(v []float64) []float64 {
 		out := make([]float64, len(v))
 		for i, x := range v {

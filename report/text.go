@@ -63,6 +63,12 @@ func WriteText(w io.Writer, f *Fit, o TextOptions) error {
 	t.resonances(f)
 	t.residuals(f)
 	t.figures(f)
+	if len(f.Advice) > 0 {
+		t.title("What the next sweep would give")
+		for _, a := range f.Advice {
+			t.paragraph("  ", "    ", a.Text)
+		}
+	}
 	if o.All {
 		t.candidates(f)
 	}
@@ -98,7 +104,10 @@ type text struct {
 	colour bool
 }
 
-func (t *text) line(s string) { t.b.WriteString(strings.TrimRight(s, " ") + "\n") }
+// line writes a line; no-break spaces have done their work by now.
+func (t *text) line(s string) {
+	t.b.WriteString(strings.TrimRight(strings.ReplaceAll(s, "\u00a0", " "), " ") + "\n")
+}
 
 // ANSI attributes (ECMA-48, SGR): bold, and yellow foreground.
 const (
@@ -162,16 +171,7 @@ func (t *text) heading(f *Fit) {
 }
 
 func (t *text) warnings(f *Fit) {
-	var all []string
-	if f.Status == NotConverged {
-		all = append(all, "not-converged: the fit stopped before it converged; the values below are its last, their intervals mean little. Give starting values, or another circuit.")
-	}
-	for _, w := range f.Warnings {
-		if w.Code == string(NotConverged) {
-			continue // said above
-		}
-		all = append(all, w.Code+": "+w.Text)
-	}
+	all := f.AllWarnings()
 	if len(all) == 0 {
 		return
 	}
@@ -179,7 +179,7 @@ func (t *text) warnings(f *Fit) {
 	t.line(t.set(bold+yellow, "Warnings"))
 	for i, w := range all {
 		number := fmt.Sprintf("%3d  ", i+1)
-		t.paragraph(number, strings.Repeat(" ", len(number)), w)
+		t.paragraph(number, strings.Repeat(" ", len(number)), w.Code+": "+w.Text)
 	}
 }
 
@@ -336,6 +336,9 @@ func (t *text) candidates(f *Fit) {
 		return
 	}
 	t.title("Candidates")
+	if f.KindReason != "" {
+		t.paragraph("  ", "  ", "Kind "+string(f.Kind)+": "+f.KindReason)
+	}
 	rows := [][]string{{"", "circuit", "AICc", "rms", "why"}}
 	for _, c := range f.Candidates {
 		row := []string{"", c.Name, "", "", c.Reason}
@@ -400,12 +403,12 @@ func (t *text) table(rows [][]string, align string) {
 	}
 }
 
-// wrap breaks a text at spaces into lines of a width; a longer word stays
-// whole. There is always one line.
+// wrap breaks a text at spaces, other than no-break spaces, into lines of a
+// width; a longer word stays whole. There is always one line.
 func wrap(s string, width int) []string {
 	var lines []string
 	line, used := "", 0
-	for _, word := range strings.Fields(s) {
+	for _, word := range strings.FieldsFunc(s, func(r rune) bool { return r == ' ' || r == '\t' || r == '\n' }) {
 		w := uniseg.StringWidth(word)
 		if used > 0 && used+1+w > width {
 			lines = append(lines, line)

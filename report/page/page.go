@@ -222,14 +222,7 @@ func newPart(p Part, i, points int) (partView, error) {
 	if len(c.Parameters()) != len(f.Parameters) {
 		return v, fmt.Errorf("page: part %s: %d values for the circuit %s", f.Sweep.Part, len(f.Parameters), c)
 	}
-	if f.Status == report.NotConverged {
-		v.Warnings = append(v.Warnings, report.Warning{Code: string(report.NotConverged), Text: "The fit stopped before it converged; its values are the last ones, and their intervals mean little."})
-	}
-	for _, w := range f.Warnings {
-		if w.Code != string(report.NotConverged) {
-			v.Warnings = append(v.Warnings, w)
-		}
-	}
+	v.Warnings = f.AllWarnings()
 	labels := make([]string, len(f.Parameters))
 	alt := "Circuit " + f.Circuit.Expression + " with"
 	for i, q := range f.Parameters {
@@ -349,7 +342,7 @@ func newIndex(parts []Part) *index {
 	}
 	for i, p := range parts {
 		f := p.Fit
-		row := indexRow{ID: fmt.Sprintf("part-%d", i+1), Part: f.Sweep.Part, Lot: f.Sweep.Lot, Failed: f.Status == report.FitFailed, Warnings: len(f.Warnings)}
+		row := indexRow{ID: fmt.Sprintf("part-%d", i+1), Part: f.Sweep.Part, Lot: f.Sweep.Lot, Failed: f.Status == report.FitFailed, Warnings: len(f.AllWarnings())}
 		if row.Part == "" {
 			row.Part = f.Sweep.File
 		}
@@ -376,9 +369,6 @@ func newIndex(parts []Part) *index {
 		}
 		if f.Residuals != nil {
 			row.Residual = newCell(report.FormatPercent(f.Residuals.RMSRelative), f.Residuals.RMSRelative)
-		}
-		if f.Status == report.NotConverged {
-			row.Warnings++
 		}
 		x.Rows = append(x.Rows, row)
 	}

@@ -20,7 +20,7 @@ var _ plot.Ticker = logTicks{}
 
 // Ticks returns ticks at decades with their 2 to 9; as many decades are
 // labelled as there is room for, and 2 and 5 too where there are few. A range
-// below a third of a decade has ticks at equal steps.
+// without two such has ticks at equal steps.
 func (t logTicks) Ticks(low, high float64) []plot.Tick {
 	if !(low > 0 && high > low) {
 		return nil
@@ -32,6 +32,7 @@ func (t logTicks) Ticks(low, high float64) []plot.Tick {
 	decades := math.Log10(high / low)
 	every := max(1, int(math.Ceil(decades/float64(t.most))))
 	var ticks []plot.Tick
+	labels := 0
 	for e := first; e <= last; e++ {
 		for m := 1; m <= 9; m++ {
 			v := decimal(m, e)
@@ -45,11 +46,15 @@ func (t logTicks) Ticks(low, high float64) []plot.Tick {
 			}
 			if labelled {
 				tick.Label = label(v, t.unit)
+				labels++
 			} else if every > 1 && m != 1 || decades > 5 && m != 1 {
 				continue // too dense to be told apart
 			}
 			ticks = append(ticks, tick)
 		}
+	}
+	if labels < 2 {
+		return linearTicks(t).Ticks(low, high)
 	}
 	return ticks
 }

@@ -11,7 +11,7 @@ import (
 )
 
 // seeds is the number of random parts of each kind; more of them make the printed tables finer.
-var seeds = flag.Int("seeds", 3, "random parts of each kind in the seeded tests")
+var seeds = flag.Int("seeds", 2, "random parts of each kind in the seeded tests")
 
 func fit(t *testing.T, f []float64, z []complex128, s *Settings) *Result {
 	t.Helper()

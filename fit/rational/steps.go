@@ -2,12 +2,11 @@ package rational
 
 import (
 	"math"
+	"math/cmplx"
 	"slices"
 
 	"gonum.org/v1/gonum/floats"
 	"gonum.org/v1/gonum/stat/distuv"
-
-	"realpart/fit/residual"
 )
 
 // A Step is a sudden change of level between two neighbouring points, such as a meter changing its range makes.
@@ -34,7 +33,8 @@ const edge = 4
 // Steps finds multiplicative level steps: it compares the rational model of the sweep with and without a factor exp(δ) on all points
 // from a position on, at each position, by the likelihood ratio in the model linearised about its fit. As extra poles can mimic a step in
 // part, every accepted order is compared, fewer poles with a step against more poles without, by the Bayesian information criterion;
-// what is found is confirmed by a new fit of the levelled sweep. A single outlying point is not a step and is kept apart.
+// what is found is confirmed by a new fit of the levelled sweep, and must not be
+// denied by the neighbouring points alone. A single outlying point is not a step and is kept apart.
 //
 // The steps come in the order of frequency; none is an empty slice. Errors are those of Fit; 24 points are needed.
 func Steps(freq []float64, z []complex128, s *StepSettings) ([]Step, error) {
@@ -85,7 +85,7 @@ func (d *sweep) steps(freq []float64, g *growth, settings *Settings, c *StepSett
 		dof := float64(2*n - k - 1)
 		sigma := math.Sqrt(t.rest[at] / dof / t.weight[at])
 		p := float64(n) * 2 * distuv.StudentsT{Mu: 0, Sigma: 1, Nu: dof}.Survival(math.Abs(total)/sigma)
-		if !(p < c.FalseAlarm) || !(t.contrast(at) > leastContrast) ||
+		if !(p < c.FalseAlarm) || refuted(freq, level, at, total) ||
 			!(d.criterion(t.rest[at], k+1)+d.evidence() < d.criterion(g.last().rss, d.coefficients(g.last().m))) {
 			break
 		}
@@ -144,8 +144,7 @@ func (d *sweep) propose(g *growth) (at int, delta float64) {
 // A scan holds, for a step at each position, its least-squares size, the weight gᵀ(1−QQᵀ)g, and the sum of squares with it.
 type scan struct {
 	delta, weight, rest []float64
-	residuals           []float64 // of ln|Z|, steps put back
-	at                  int       // the position of the smallest rest, −1 where a single outlying point explains it better
+	at                  int // the position of the smallest rest, −1 where a single outlying point explains it better
 }
 
 // scan tries a step at each position in the linearised model: ρ + J·Δθ − δ·1(i ≥ k) in the real (magnitude) rows. A step of size
@@ -161,10 +160,9 @@ func (d *sweep) scan(st *state, from int, removed float64) *scan {
 	for i := from; i < n; i++ {
 		r[i] += removed
 	}
-	residuals := append([]float64(nil), r[:n]...)
 	f.project(r)
 	rr := floats.Dot(r, r)
-	t := &scan{make([]float64, n), make([]float64, n), make([]float64, n), residuals, -1}
+	t := &scan{make([]float64, n), make([]float64, n), make([]float64, n), -1}
 	// 1(i ≥ k) projected: with c_k = Qᵀ1(i ≥ k) by suffix sums, gᵀ(1−QQᵀ)g = (n−k) − |c_k|², gᵀr = Σ_{i≥k} r_i.
 	c := make([]float64, len(f.q))
 	sum := 0.0
@@ -189,31 +187,31 @@ func (d *sweep) scan(st *state, from int, removed float64) *scan {
 	return t
 }
 
-// leastContrast is the least value of contrast for a step.
-const leastContrast = 4.5
-
-// contrast compares the change of the mean residual across position k, ten points on either side, with such changes elsewhere in the sweep
-// (median absolute deviation). Where a model is not good enough and leaves smooth residuals, they change everywhere, and a step that only
-// mends a misfit does not stand out.
-func (t *scan) contrast(k int) float64 {
-	const reach = 10
-	n := len(t.residuals)
-	change := func(k int) float64 {
-		lo, hi := max(k-reach, 0), min(k+reach, n)
-		before := floats.Sum(t.residuals[lo:k]) / float64(k-lo)
-		after := floats.Sum(t.residuals[k:hi]) / float64(hi-k)
-		return (after - before) / math.Sqrt(1/float64(k-lo)+1/float64(hi-k))
+// refuted says whether the points next to position at deny a step of size delta: a cubic of ln|Z| in ln f with a free step, through ten
+// points on either side, gives another size by more than four standard deviations. This needs no rational model: where none fits, a
+// step may mend the misfit of the whole sweep and yet be nowhere in the points.
+func refuted(freq []float64, z []complex128, at int, delta float64) bool {
+	const reach, terms = 10, 5
+	lo, hi := max(at-reach, 0), min(at+reach, len(z))
+	n := hi - lo
+	cols := make([][]float64, terms)
+	for j := range cols {
+		cols[j] = make([]float64, n)
 	}
-	var others []float64
-	for i := edge; i <= n-edge; i++ {
-		if i <= k-reach || i >= k+reach {
-			others = append(others, change(i))
+	b := make([]float64, n)
+	for i := range n {
+		u := math.Log(freq[lo+i]/freq[at]) / math.Log(freq[hi-1]/freq[lo])
+		cols[0][i], cols[1][i], cols[2][i], cols[3][i] = 1, u, u*u, u*u*u
+		if lo+i >= at {
+			cols[4][i] = 1
 		}
+		b[i] = math.Log(cmplx.Abs(z[lo+i]) / cmplx.Abs(z[at]))
 	}
-	if len(others) == 0 {
-		return math.Inf(1)
-	}
-	return math.Abs(change(k)) / residual.MAD(others)
+	f := factor(cols, false)
+	size := f.solve(f.project(b))[terms-1]
+	// The step is the last column, so its variance is s²/(r·scale)².
+	sigma := floats.Norm(b, 2) / math.Sqrt(float64(n-terms)) / (f.r[terms-1][terms-1] * f.scale[terms-1])
+	return math.Abs(size-delta) > 4*sigma
 }
 
 // outlier returns the largest fall of the sum of squares that freeing one point next to position k gives.

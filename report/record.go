@@ -296,11 +296,15 @@ func New(s Sweep, a *fit.Analysis, o Options) *Fit {
 	return f
 }
 
+// warned tells whether there is a warning with a code.
+func (f *Fit) warned(code string) bool {
+	return slices.ContainsFunc(f.Warnings, func(w Warning) bool { return w.Code == code })
+}
+
 // AllWarnings returns the warnings of a record, with one that the fit did not
 // converge where that is so and none says it.
 func (f *Fit) AllWarnings() []Warning {
-	said := slices.ContainsFunc(f.Warnings, func(w Warning) bool { return w.Code == string(NotConverged) })
-	if f.Status != NotConverged || said {
+	if f.Status != NotConverged || f.warned(string(NotConverged)) {
 		return f.Warnings
 	}
 	return append([]Warning{{string(NotConverged), "The fit stopped before it converged; its values are the last ones, and their intervals mean little."}}, f.Warnings...)

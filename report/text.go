@@ -274,7 +274,7 @@ func (t *text) residuals(f *Fit) {
 		s += fmt.Sprintf(", correlation of neighbours %s", signed(*r.Lag1))
 	}
 	t.paragraph("  ", "  ", s)
-	if r.Structured {
+	if r.Structured && !f.warned("structured-residual") {
 		t.paragraph("  ", "  ", "Structured: neighbours deviate alike, so this circuit does not describe the part to the accuracy of the points.")
 	}
 }

@@ -19,6 +19,7 @@ import (
 	"gonum.org/v1/plot/vg"
 	"gonum.org/v1/plot/vg/draw"
 
+	"realpart/models"
 	"realpart/models/quantity"
 	"realpart/report"
 )
@@ -165,7 +166,9 @@ func (d drawing) resonances(p *plot.Plot, labelled bool) {
 			style:    draw.LineStyle{Color: d.style.Resonance, Width: 0.7, Dashes: []vg.Length{3, 2}},
 		})
 		if labelled {
-			p.Add(&note{r.Freq, string(r.Kind) + " " + quantity.Format(r.Freq, "Hz", 3), i, p.X.Tick.Label, d.style.Resonance})
+			// |Z| has a minimum at a series resonance, a maximum at a
+			// parallel one: the text stands where the curve is not.
+			p.Add(&note{r.Freq, string(r.Kind) + " " + quantity.Format(r.Freq, "Hz", 3), i, r.Kind == models.ParallelResonance, p.X.Tick.Label, d.style.Resonance})
 		}
 	}
 }

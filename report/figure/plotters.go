@@ -204,12 +204,13 @@ func simplify(points []vg.Point, tolerance vg.Length) []vg.Point {
 	return out
 }
 
-// note is a text at the top of a figure, beside a frequency; row counts down
-// so that neighbours do not overlap.
+// note is a text beside a frequency, at the top of a figure or at its bottom;
+// row counts inwards so that neighbours do not overlap.
 type note struct {
 	x      float64
 	text   string
 	row    int
+	bottom bool
 	style  text.Style
 	colour color.Color
 }
@@ -223,6 +224,10 @@ func (n *note) Plot(c draw.Canvas, p *plot.Plot) {
 	style.Color = n.colour
 	style.XAlign, style.YAlign = draw.XLeft, draw.YTop
 	at := vg.Point{X: x(n.x) + 3, Y: c.Max.Y - 2 - vg.Length(n.row%3)*(style.Font.Size+2)}
+	if n.bottom {
+		style.YAlign = draw.YBottom
+		at.Y = c.Min.Y + 6 + vg.Length(n.row%3)*(style.Font.Size+2)
+	}
 	if at.X+style.Width(n.text) > c.Max.X {
 		style.XAlign = draw.XRight
 		at.X -= 6

@@ -55,7 +55,7 @@ func build(c *models.Circuit, values []float64, from, to float64, o Options) (*n
 	}
 	want := make([]complex128, len(check))
 	c.NewEvaluator(check).Impedance(want, values)
-	for tighter := 1.0; len(distributed) > 0; tighter *= 2 {
+	for tighter := 1.0; len(distributed) > 0; {
 		for _, n := range distributed {
 			l, err := newLadder(c, n, values, from, to, o.LadderError/tighter, o.LadderRealError/tighter)
 			if err != nil {
@@ -71,6 +71,8 @@ func build(c *models.Circuit, values []float64, from, to float64, o Options) (*n
 		if b.error <= o.LadderError && b.realError <= o.LadderRealError {
 			break
 		}
+		// The errors of whole and element are in proportion.
+		tighter *= max(1.2, 1.1*max(b.error/o.LadderError, b.realError/o.LadderRealError))
 	}
 	for _, n := range distributed {
 		b.network.ladders = append(b.network.ladders, b.ladders[n])
@@ -123,7 +125,7 @@ func (b *builder) at(n *models.Node, freq float64) complex128 {
 	case models.Capacitor:
 		return complex(0, -1/(omega*v))
 	}
-	return b.ladders[n].At(freq)
+	return b.ladders[n].at(freq)
 }
 
 // lay puts a part of the tree between two nodes.

@@ -2,6 +2,7 @@ package netlist
 
 import (
 	"fmt"
+	"math"
 
 	"realpart/fit/rational"
 	"realpart/models"
@@ -17,7 +18,17 @@ import (
 type ladder struct {
 	element string // as in the expression
 	*rational.Foster
+	// block is a capacitance in F in series with the resistor R0 of an R-C
+	// ladder. Without it that resistor, which is there for the loss at the
+	// low end of the range, would conduct direct current, which the element
+	// does not. 0: none.
+	block float64
 }
+
+// blocking is the ratio of R0 to the reactance of its capacitor at the lowest
+// frequency. It takes 1 % off the conductance of R0 there, which is a part of
+// the loss, and adds little to the capacitance below the range.
+const blocking = 10
 
 // newLadder finds a ladder whose impedance is within a relative error between
 // two frequencies in Hz, and its resistance within another.
@@ -40,7 +51,11 @@ func newLadder(c *models.Circuit, n *models.Node, values []float64, from, to, ma
 	if err != nil {
 		return ladder{}, fmt.Errorf("%s: %w", single, err)
 	}
-	return ladder{single.String(), foster}, nil
+	l := ladder{element: single.String(), Foster: foster}
+	if foster.R0 > 0 && !l.inductive() {
+		l.block = blocking / (2 * math.Pi * from * foster.R0)
+	}
+	return l, nil
 }
 
 func (l ladder) inductive() bool { return l.Kind == rational.ParallelRL }
@@ -51,7 +66,17 @@ func (l ladder) String() string {
 	if l.inductive() {
 		kind = "R-L"
 	}
-	return fmt.Sprintf("%s: ladder of %d %s branches, within %.2g %% of its impedance, %.2g %% of its resistance", l.element, l.Sections(), kind, 100*l.MaxError, 100*l.RealError)
+	return fmt.Sprintf("%s: ladder of %d %s branches", l.element, l.Sections(), kind)
+}
+
+// at returns the impedance in Ω of the ladder as it is laid out.
+func (l ladder) at(freq float64) complex128 {
+	z := l.At(freq)
+	if l.block == 0 {
+		return z
+	}
+	r := complex(l.R0, 0)
+	return 1 / (1/z - 1/r + 1/(r+complex(0, -1/(2*math.Pi*freq*l.block))))
 }
 
 // alone returns the circuit of one element, and its values.
@@ -87,7 +112,11 @@ func (b *builder) layLadder(l ladder, name, from, to string) {
 	if l.inductive() {
 		kind = "L"
 	}
-	if l.R0 > 0 {
+	if l.block > 0 {
+		middle := b.node()
+		b.add("R", "R"+name+"_low", from, middle, l.R0)
+		b.add("C", "C"+name+"_low", middle, to, l.block)
+	} else if l.R0 > 0 {
 		b.add("R", "R"+name+"_0", from, to, l.R0)
 	}
 	if l.X0 > 0 {

@@ -158,7 +158,8 @@ func (w *watch) check(t *testing.T, address string) {
 func onePart(t *testing.T, ctx context.Context) {
 	p := single(t)
 	w, address := open(t, ctx, "single", render(t, p))
-	run(t, ctx, chromedp.EmulateViewport(1280, 900))
+	run(t, ctx, chromedp.EmulateViewport(1280, 900), chromedp.ScrollIntoView(chromedp.CSS(".figures")),
+		chromedp.WaitReady(chromedp.CSS(".cursor")))
 
 	// Every figure has its points: as many diamonds as there are points with
 	// a place on the axes, in paths of the property's colour.
@@ -328,6 +329,16 @@ func aLot(t *testing.T, ctx context.Context) {
 	run(t, ctx, chromedp.Evaluate[chromedp.Void](`(() => { const i = document.querySelector(".filter input"); i.value = ""; i.dispatchEvent(new Event("input")); })()`))
 	if got := names(); len(got) != 12 {
 		t.Errorf("%d parts after the filter was emptied", len(got))
+	}
+
+	// A link of the index leads to its part, whose readout is at work.
+	run(t, ctx, chromedp.Evaluate[chromedp.Void](`document.querySelector('.index a[href="#part-7"]').click()`),
+		chromedp.WaitReady(chromedp.CSS("#part-7 .cursor")))
+	if top := evaluate[float64](t, ctx, `document.querySelector("#part-7").getBoundingClientRect().top`); math.Abs(top) > 100 {
+		t.Errorf("the part is %v px from the top of the window", top)
+	}
+	if text := evaluate[string](t, ctx, `document.querySelector("#part-7 .readout caption").textContent`); !strings.HasSuffix(text, "Hz") {
+		t.Errorf("its readout says %q", text)
 	}
 
 	// All that can be focused has a name; every id is unique; links lead

@@ -293,7 +293,7 @@ func (v *partView) trace(t *report.Traces, points int) {
 type index struct {
 	Parameters []string
 	Others     []string
-	Lots       bool
+	Lots       bool // parts are of more than one
 	Rows       []indexRow
 }
 
@@ -327,7 +327,7 @@ func newIndex(parts []Part) *index {
 			}
 			count[q.Name]++
 		}
-		x.Lots = x.Lots || p.Fit.Sweep.Lot != ""
+		x.Lots = x.Lots || p.Fit.Sweep.Lot != parts[0].Fit.Sweep.Lot
 	}
 	// The commonest, in the order of their first appearance.
 	common := slices.Clone(all)

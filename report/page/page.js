@@ -13,10 +13,8 @@
   };
   const signed = (v, digits, unit) => (v > 0 ? "+" : "") + v.toPrecision(digits) + unit;
 
-  for (const part of document.querySelectorAll(".part")) {
-    const source = part.querySelector("script.data");
-    if (!source) continue;
-    const d = JSON.parse(source.textContent);
+  const follow = part => {
+    const d = JSON.parse(part.querySelector("script.data").textContent);
     const n = d.f.length, first = Math.log(d.f[0]), last = Math.log(d.f[n - 1]);
     const readout = part.querySelector(".readout"), slider = readout.querySelector("input");
     const caption = readout.querySelector("caption"), cells = readout.querySelectorAll("td");
@@ -25,7 +23,6 @@
       return { element, left, right, top, bottom, cursor: null };
     });
     slider.max = n - 1;
-    readout.hidden = false;
 
     const show = i => {
       slider.value = i;
@@ -60,13 +57,13 @@
       return x - Math.log(d.f[low]) < Math.log(d.f[high]) - x ? low : high;
     };
     for (const p of plots) {
-      const follow = event => {
+      const point = event => {
         const box = p.element.getBoundingClientRect();
         const u = ((event.clientX - box.left) / box.width - p.left) / (p.right - p.left);
         show(nearest(first + Math.min(1, Math.max(0, u)) * (last - first)));
       };
-      p.element.addEventListener("pointermove", follow);
-      p.element.addEventListener("pointerdown", follow);
+      p.element.addEventListener("pointermove", point);
+      p.element.addEventListener("pointerdown", point);
     }
     slider.addEventListener("input", () => show(Number(slider.value)));
     // Begin where |Z| is least or largest inside the sweep, else in the middle.
@@ -75,6 +72,18 @@
       if ((d.mz[i] - d.mz[i - 1]) * (d.mz[i + 1] - d.mz[i]) < 0) { begin = i; break; }
     }
     show(begin);
+  };
+  // A lot has hundreds of parts: each is set up when it comes near the window.
+  const near = new IntersectionObserver(entries => {
+    for (const entry of entries) {
+      if (!entry.isIntersecting) continue;
+      near.unobserve(entry.target);
+      follow(entry.target.closest(".part"));
+    }
+  }, { rootMargin: "600px" });
+  for (const figures of document.querySelectorAll(".figures")) {
+    figures.querySelector(".readout").hidden = false;
+    near.observe(figures);
   }
 
   const index = document.querySelector(".index");

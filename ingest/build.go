@@ -20,7 +20,6 @@ type partData struct {
 	s          []complex128 // as measured, nil if not S-parameters
 	reference  float64
 	connection string
-	warnings   []Warning
 }
 
 // half is a frequency and one quantity, whose partner stands elsewhere.
@@ -122,6 +121,13 @@ func (b *builder) build() {
 	}
 	b.joinHalves()
 	b.assumptions()
+	if b.byName != nil {
+		for _, name := range b.names {
+			if b.byName[strings.ReplaceAll(name, `""`, `"`)] == nil {
+				b.warn(WarnPartEmpty, "no row of part %s could be used", name)
+			}
+		}
+	}
 	b.nameParts()
 }
 
@@ -209,13 +215,27 @@ func (b *builder) addGroup(seg *segment, g *group) {
 			d.s = append(d.s, s[i])
 		}
 	}
+	if seg.part != nil && len(f) > 1 && allDifferent(seg.part) {
+		b.note("column %d numbers the rows and is no part column", g.part+1)
+		seg.part = nil
+	}
 	if seg.part == nil {
 		label := g.label
 		if label == "" {
 			label = firstNonEmpty(seg.meta.Part, seg.meta.Serial)
 		}
 		d := add(label)
-		d.freq, d.z, d.line, d.s = f, z, seg.line, s
+		if len(seg.plan.groups) == 1 {
+			d.freq, d.z, d.line, d.s = f, z, seg.line, s
+			return
+		}
+		// Parts side by side share frequencies, sweeps must not; and what a part
+		// lacks is NaN here.
+		for i := range f {
+			if !math.IsNaN(f[i]) && !cmplx.IsNaN(z[i]) {
+				put(d, i)
+			}
+		}
 		return
 	}
 	// A part column: rows of the same name belong together wherever they stand.
@@ -230,6 +250,18 @@ func (b *builder) addGroup(seg *segment, g *group) {
 		}
 		put(d, i)
 	}
+}
+
+// allDifferent: each row has another "part", so the column counts rows.
+func allDifferent(names []string) bool {
+	seen := make(map[string]bool, len(names))
+	for _, n := range names {
+		if seen[n] {
+			return false
+		}
+		seen[n] = true
+	}
+	return true
 }
 
 func firstNonEmpty(texts ...string) string {
@@ -392,24 +424,32 @@ func (b *builder) radians(seg *segment, col int, f, mag []float64, quiet bool) (
 		b.angle = unit
 		name := map[string]string{"°": "degrees", "rad": "radians"}[dim]
 		b.warn(WarnPhaseUnit, "the phase was taken in %s: %s; --units phase=deg or phase=rad says otherwise", name, why)
-	case h.role != roleSPhase && !quiet:
-		// A stated unit that the values contradict.
-		unit, why := phaseUnit(f, mag, scaled(raw, -h.unit.exp))
+	case h.role != roleSPhase && !quiet && b.opt.Units[roles[h.role].key] == "" && h.unit.exp == 0:
+		// A stated unit that the values contradict: the flag must say which is
+		// right.
+		signed := raw
+		if h.negate {
+			signed = negated(raw)
+		}
+		unit, why := phaseUnit(f, mag, signed)
 		stated := angleDegrees
 		if dim == "rad" {
 			stated = angleRadians
 		}
-		if unit != angleUnknown && unit != stated && h.unit.exp == 0 {
+		if unit != angleUnknown && unit != stated {
+			other := map[angleUnit]string{angleDegrees: "degrees", angleRadians: "radians"}
+			where := ""
 			if bare {
-				e := b.headError(seg.plan, col, "phase in degrees in a file without a header", "--units phase=rad, or phase=deg if they are degrees")
-				e.Found, e.bare, e.Err = "values that look like radians: "+why, true, ErrAmbiguous
-				if b.opt.Units["phase"] == "" {
-					b.refuse(e)
-					return nil, false
-				}
-			} else {
-				b.warn(WarnUnchecked, "the phase is stated in %s, but its values look otherwise: %s; check with --units", dim, why)
+				where = " in a file without a header"
 			}
+			key := roles[h.role].key
+			e := b.headError(seg.plan, col, "phase in "+other[stated]+where, fmt.Sprintf("--units %s=%s, or %s=%s if the header is right", key, unit.short(), key, stated.short()))
+			e.Found, e.bare, e.Err = "values that look like "+other[unit]+": "+why, true, ErrAmbiguous
+			b.refuse(e)
+			return nil, false
+		}
+		if k, predicted, n := slopeFactor(f, mag, signed); n >= 3 && predicted >= 3 && stated == angleDegrees && -mostFactor <= k && k <= -leastFactor {
+			b.warn(WarnUnchecked, "the phase has the opposite sign of what the slope of the magnitude asks for (factor %.2f): a capacitor's phase is negative in Z and positive in Y", k)
 		}
 	}
 	out := make([]float64, len(raw))

@@ -21,7 +21,8 @@ type Input struct {
 func (in Input) Open(o *Options) ([]*Sweep, error) {
 	sweeps, err := Open(in.Path, o)
 	for _, s := range sweeps {
-		if s.Lot == "" {
+		// The folder makes the lot, whatever a file says (Metadata.Lot keeps it).
+		if in.Lot != "" {
 			s.Lot = in.Lot
 		}
 	}

@@ -28,6 +28,8 @@ func (p *parsed) sweeps(o Options) ([]*Sweep, error) {
 		for _, d := range p.parts {
 			if s := p.finish(d); s != nil {
 				out = append(out, s)
+			} else if len(p.faults) == 0 && len(p.parts) > 1 {
+				p.warnings = append(p.warnings, Warning{WarnPartEmpty, fmt.Sprintf("no row of part %s could be used", d.label)})
 			}
 		}
 		if len(out) == 0 && len(p.faults) == 0 {
@@ -45,6 +47,7 @@ func (p *parsed) sweeps(o Options) ([]*Sweep, error) {
 	}
 	for i, s := range out {
 		s.Reading = p.reading
+		s.Warnings = append(append(make([]Warning, 0, len(p.warnings)+len(s.Warnings)+1), p.warnings...), s.Warnings...)
 		if i == 0 || len(out) == 1 {
 			s.Dropped = p.dropped
 			if n := len(p.dropped); n > 0 {
@@ -75,9 +78,8 @@ func (p *parsed) nothing() *Error {
 // finish checks, sorts and merges the points of one part. It returns nil where
 // no point is left or a fault was found.
 func (p *parsed) finish(d *partData) *Sweep {
-	s := &Sweep{File: p.name, Part: d.label, Lot: d.meta.Lot, Metadata: d.meta, Warnings: append([]Warning{}, p.warnings...),
+	s := &Sweep{File: p.name, Part: d.label, Lot: d.meta.Lot, Metadata: d.meta,
 		Reference: d.reference, Connection: d.connection}
-	s.Warnings = append(s.Warnings, d.warnings...)
 	if s.Part == "" {
 		s.Part = partName(p.name)
 	}

@@ -85,7 +85,8 @@ const (
 	WarnReference     = "reference-assumed" // S-parameters without a reference resistance
 	WarnColumnsDiffer = "columns-differ"    // two pairs of columns give different Z
 	WarnCoverage      = "few-points"        // fewer points than a circuit needs
-	WarnUnchecked     = "not-checked"       // a stated unit that the values contradict
+	WarnUnchecked     = "not-checked"       // values that contradict what is stated
+	WarnPartEmpty     = "part-empty"        // a part of which no row could be used
 )
 
 // DefaultMaxBytes is the size above which an input is refused.

@@ -75,6 +75,48 @@ func TestSeveralParts(t *testing.T) {
 	}
 }
 
+// An overload or a gap in one part costs the others nothing, nor does a shorter
+// sweep beside a longer one.
+func TestSideBySideGaps(t *testing.T) {
+	s := read(t, "a.csv", "f (Hz),R a,X a,R b,X b\n100,OL,0,2,2\n200,1,1,2,2\n300,1,1,,\n400,1,1,2,----\n", nil)
+	if len(s) != 2 || len(s[0].Freq) != 3 || len(s[1].Freq) != 2 || s[0].Freq[0] != 200 || s[1].Freq[1] != 200 {
+		t.Errorf("%v %v", s[0].Freq, s[1].Freq)
+	}
+	s = read(t, "a.csv", "f (Hz),R (Ohm),X (Ohm),f (Hz),R (Ohm),X (Ohm)\n100,1,1,10,2,2\n200,1,1,20,2,2\n,,,30,2,2\n,,,40,2,2\n", nil)
+	if len(s) != 2 || len(s[0].Freq) != 2 || len(s[1].Freq) != 4 || len(s[0].Dropped) != 0 {
+		t.Errorf("%v %v %v", s[0].Freq, s[1].Freq, s[0].Dropped)
+	}
+	s = read(t, "a.csv", "f (Hz),R (Ohm),X (Ohm),f (Hz),R (Ohm),X (Ohm)\n100,1,1,10,2,2\n200,1,1,20,2,2\n300,1,1\n", nil)
+	if len(s) != 2 || len(s[0].Freq) != 3 || len(s[1].Freq) != 2 {
+		t.Errorf("%v %v", s[0].Freq, s[1].Freq)
+	}
+}
+
+// A part without a usable row does not vanish without a word.
+func TestEmptyPart(t *testing.T) {
+	for name, text := range map[string]string{
+		"column":       "Part,f (Hz),R (Ohm),X (Ohm)\na,100,1,2\na,200,1,2\nb,100,OL,2\nb,200,OL,2\n",
+		"side by side": "f (Hz),R a,X a,R b,X b\n100,1,2,OL,2\n200,1,1,OL,2\n",
+	} {
+		s := read(t, "a.csv", text, nil)
+		if len(s) != 1 || !strings.Contains(codes(s[0].Warnings), "part-empty") || !strings.Contains(fmt.Sprint(s[0].Warnings), "no row of part b could be used") {
+			t.Errorf("%s: %d sweeps, %v", name, len(s), s[0].Warnings)
+		}
+	}
+}
+
+// Dropping a point of one part must not touch the others' frequencies.
+func TestSideBySideAreIndependent(t *testing.T) {
+	s := read(t, "a.csv", "f (Hz),R a,X a,R b,X b\n100,0,0,2,2\n200,1,1,2,2\n300,1,1,2,2\n", nil)
+	if len(s) != 2 || len(s[0].Freq) != 2 || len(s[1].Freq) != 3 || s[1].Freq[0] != 100 || s[1].Freq[2] != 300 || s[0].Freq[0] != 200 {
+		t.Fatalf("%+v", s)
+	}
+	s[0].Freq[0] = -1
+	if s[1].Freq[1] != 200 {
+		t.Error("sweeps share memory")
+	}
+}
+
 func TestMetadata(t *testing.T) {
 	s := one(t, "c017.csv", preamble+"Frequency (Hz),R (Ohm),X (Ohm)\n100,1,2\n1000,1,2\n10000,1,2\n", nil)
 	m := s.Metadata

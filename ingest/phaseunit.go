@@ -24,6 +24,14 @@ func (u angleUnit) dim() string {
 	return ""
 }
 
+// short is the unit as --units takes it.
+func (u angleUnit) short() string {
+	if u == angleRadians {
+		return "rad"
+	}
+	return "deg"
+}
+
 // phaseUnit tells the unit of phase values from the values alone. Beyond π they
 // are degrees. Else the slope of ln|Z| decides: where the impedance is of
 // minimum phase, Bode's relation gives

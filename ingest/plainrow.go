@@ -14,6 +14,7 @@ import (
 type plainRow struct {
 	delim byte
 	last  int   // last column needed
+	cols  int   // of the header; a row with more is not plain
 	slot  []int // by column: index of the value in a row, −1 if it is not needed
 	exp   []int // by slot
 	never []bool
@@ -25,7 +26,10 @@ func newPlainRow(s *source, p *plan) *plainRow {
 	if len(p.groups) != 1 || p.groups[0].part >= 0 || len(p.also) > 0 || s.delim == blanks || s.decimal != '.' {
 		return nil
 	}
-	pr := &plainRow{delim: s.delim, slot: make([]int, len(p.cols))}
+	pr := &plainRow{delim: s.delim, slot: make([]int, len(p.cols)), cols: len(p.cols)}
+	if p.loose {
+		pr.cols = math.MaxInt
+	}
 	for i := range pr.slot {
 		pr.slot[i] = -1
 	}
@@ -94,7 +98,7 @@ func (pr *plainRow) read(text string) bool {
 		}
 		pr.vals[k] = v
 		if c == pr.last {
-			return i == len(text) || text[i] == pr.delim
+			return i == len(text) || text[i] == pr.delim && c+1+strings.Count(text[i:], string(rune(pr.delim))) <= pr.cols
 		}
 		if i >= len(text) || text[i] != pr.delim {
 			return false

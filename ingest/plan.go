@@ -2,6 +2,7 @@ package ingest
 
 import (
 	"fmt"
+	"strconv"
 	"strings"
 )
 
@@ -25,10 +26,26 @@ type group struct {
 	unnamed []int
 }
 
+// columns lists the columns of a group that must be numbers.
+func (g *group) columns() []int {
+	out := []int{g.freq}
+	if len(g.ways) > 0 {
+		out = append(out, g.ways[0].a)
+		if b := g.ways[0].b; b >= 0 {
+			out = append(out, b)
+		}
+	}
+	if g.half >= 0 {
+		out = append(out, g.half)
+	}
+	return append(out, g.unnamed...)
+}
+
 // plan is what is read from the rows below one header.
 type plan struct {
 	table
 	groups []group
+	loose  bool  // rows may have more cells than the header: columns are given by number
 	need   []int // columns whose cells must be numbers
 	also   []int // columns that are read if they are numbers, to compare
 }
@@ -37,6 +54,11 @@ type plan struct {
 // row's, to see complex literals.
 func (s *source) plan(t table, o Options, meta Metadata) (*plan, *Error) {
 	p := &plan{table: t}
+	for _, v := range o.Columns {
+		if _, err := strconv.Atoi(v); err == nil {
+			p.loose = true
+		}
+	}
 	if err := s.applyUnits(p, o.Units); err != nil {
 		return nil, err
 	}
@@ -45,6 +67,12 @@ func (s *source) plan(t table, o Options, meta Metadata) (*plan, *Error) {
 		for _, c := range cells {
 			first = append(first, s.cell(c))
 		}
+	}
+	if !p.loose && p.head >= 0 && s.delim == blanks && len(first) != len(p.cols) && len(first) > 0 && looksNumber(first[0], s.decimal) {
+		// Which heading belongs to which column is anybody's guess.
+		e := s.headError(p, -1, fmt.Sprintf("a heading for each of %d columns", len(first)), "--columns 'f=1,z=2,phase=3' with the columns' numbers")
+		e.Found, e.bare, e.Err = fmt.Sprintf("%d", len(p.cols)), true, ErrAmbiguous
+		return nil, e
 	}
 	settle(p.cols, first, meta)
 
@@ -643,25 +671,17 @@ func (p *plan) collect() {
 	needed := make([]bool, len(p.cols))
 	also := make([]bool, len(p.cols))
 	for _, g := range p.groups {
-		for n, w := range g.ways {
+		for _, i := range g.columns() {
+			if i != g.freq {
+				needed[i] = true
+			}
+		}
+		for _, w := range g.ways {
 			for _, i := range []int{w.a, w.b} {
-				if i < 0 {
-					continue
-				}
-				// Both the first way and, where it is of Z and S-parameters
-				// follow, those are used.
-				if n == 0 {
-					needed[i] = true
-				} else {
+				if i >= 0 {
 					also[i] = true
 				}
 			}
-		}
-		if g.half >= 0 {
-			needed[g.half] = true
-		}
-		for _, i := range g.unnamed {
-			needed[i] = true
 		}
 	}
 	p.need, p.also = p.need[:0], p.also[:0]

@@ -155,9 +155,20 @@ func TestAmbiguous(t *testing.T) {
 		{"four columns without a header", "100,1,2,3\n200,1,2,3\n",
 			`a.csv:1:1: expected a header, or three columns of numbers (frequency, |Z|, phase), found rows of 4 columns without a header; try: --columns 'f=1,r=2,x=3' with the columns' numbers`},
 		{"no header, radians", textTable("", ",", polarRad),
-			`a.csv:1:1: expected phase in degrees in a file without a header, found values that look like radians: the slope of ln|Z| agrees (factor 0.94); try: --units phase=rad, or phase=deg if they are degrees`},
+			`a.csv:1:1: expected phase in degrees in a file without a header, found values that look like radians: the slope of ln|Z| agrees (factor 0.94); try: --units phase=rad, or phase=deg if the header is right`},
 		{"thousands", "Frequency (Hz);R (Ohm);X (Ohm)\n1,000.0;1.5;2\n2,000.0;1.5;2\n",
 			`a.csv:2:1: expected a number for frequency in Hz, found "1,000.0"; try: save without thousands separators (and 1 more)`},
+		{"decimal commas in a comma file", "Frequency (Hz),R (Ohm),X (Ohm)\n100,0,159,1,-89,9\n200,0,159,1,-89,9\n",
+			`a.csv:2:11: expected 3 cells, as the header has, found a row of 6; try: save numbers with a decimal point, or another delimiter than the comma; or --columns with the columns' numbers (and 1 more)`},
+		{"commas that may be thousands", "Frequency (Hz);R (Ohm);X (Ohm)\n1,000;15,915;-89,985\n2,000;15,915;-89,985\n",
+			`a.csv:2:1: expected numbers whose comma is clearly decimal, found "1,000"; try: save with a decimal point and without thousands separators`},
+		{"header and columns do not match", "Freq Hz |Z| Ohm Phase of it all deg\n100 1 -90\n200 2 -90\n",
+			`a.csv:1:1: expected a heading for each of 3 columns, found 9; try: --columns 'f=1,z=2,phase=3' with the columns' numbers`},
+		{"radians below degrees", textTable("f (Hz),|Z| (Ohm),Theta (deg)", ",", polarRad),
+			`a.csv:1:18: expected phase in degrees, found values that look like radians: the slope of ln|Z| agrees (factor 0.94); try: --units phase=rad, or phase=deg if the header is right`},
+		{"degrees below radians", textTable("f (Hz),|Y| (S),Theta (rad)", ",", func(f float64, z complex128) []float64 {
+			return []float64{f, 1 / cmplx.Abs(z), -cmplx.Phase(z) * deg}
+		}), `a.csv:1:16: expected phase in radians, found values that look like degrees: values up to 89.99 exceed π; try: --units yphase=deg, or yphase=rad if the header is right`},
 		{"return loss of both signs", "Frequency (Hz),Return Loss (dB),Phase (deg)\n1000,1,20\n2000,-1,30\n3000,-2,40\n",
 			`a.csv:1:16: expected losses of one sign, found positive and negative ones; try: a column S11 in dB instead of return loss`},
 		{"two parts in one", "Frequency (Hz),R (Ohm),X (Ohm)\n1,1,2\n20,1,2\n300,1,2\n1,5,9\n20,5,9\n300,5,9\n",
@@ -171,7 +182,7 @@ func TestAmbiguous(t *testing.T) {
 		if err.Error() != c.want {
 			t.Errorf("%s:\n got %s\nwant %s", c.name, err, c.want)
 		}
-		if c.name != "return loss" && !errors.Is(err, ErrAmbiguous) {
+		if c.name != "decimal commas in a comma file" && !errors.Is(err, ErrAmbiguous) {
 			t.Errorf("%s: not marked as ambiguous", c.name)
 		}
 	}
@@ -179,6 +190,24 @@ func TestAmbiguous(t *testing.T) {
 	_, err := Read("a.csv", strings.NewReader("Frequency (Hz),S21 (dB),Phase (deg)\n1000,-1,20\n2000,-1,30\n"), nil)
 	if !errors.Is(err, ErrConnection) || !strings.Contains(err.Error(), "--connection series or --connection shunt") {
 		t.Errorf("S21: %v", err)
+	}
+}
+
+// A phase of the wrong sign is warned of; it may be a convention of its own.
+func TestPhaseSign(t *testing.T) {
+	s := one(t, "a.csv", textTable("f (Hz),|Z| (Ohm),Theta (deg)", ",", func(f float64, z complex128) []float64 {
+		return []float64{f, cmplx.Abs(z), -cmplx.Phase(z) * deg}
+	}), nil)
+	if got := codes(s.Warnings); got != "not-checked" {
+		t.Errorf("warnings %q: %v", got, s.Warnings)
+	}
+}
+
+// A column that counts the rows is no part column.
+func TestSampleColumnCounts(t *testing.T) {
+	s := one(t, "a.csv", "Sample,Frequency (Hz),R (Ohm),X (Ohm)\n1,100,1,2\n2,200,1,2\n3,300,1,2\n", nil)
+	if len(s.Freq) != 3 || s.Part != "a" {
+		t.Errorf("%q with %d points", s.Part, len(s.Freq))
 	}
 }
 

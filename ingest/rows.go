@@ -3,6 +3,7 @@ package ingest
 import (
 	"fmt"
 	"math"
+	"math/cmplx"
 	"strings"
 
 	"realpart/models/quantity"
@@ -37,6 +38,9 @@ type reader struct {
 	faults   []*Error
 	more     int // faults beyond maxFaults
 
+	names []string        // of the part column, in order
+	named map[string]bool // the same
+
 	angle angleUnit // of phases without a unit, once told from the values
 
 	// Answers of ahead, valid for lines from aheadFrom−1 up to the nearer one.
@@ -60,6 +64,9 @@ func (r *reader) drop(l line, reason string) {
 
 // readTables reads all tables of the text into segments.
 func (r *reader) readTables() *Error {
+	if err := r.checkDecimal(); err != nil {
+		return err
+	}
 	t, err := r.findTable(0, r.opt)
 	if err != nil {
 		return err
@@ -201,6 +208,9 @@ func (r *reader) readRows(p *plan, seg *segment) (table, *segment, bool) {
 				f, kind = r.suffixed(r.cell(cells[freqCol]), p.cols[freqCol])
 			}
 		}
+		if kind == isEmpty && len(p.groups) > 1 && r.look(cells).numbers > 0 {
+			f, kind = math.NaN(), isNumber // another part's row may be longer
+		}
 		if kind != isNumber {
 			switch r.structure(i, p, cells, kind) {
 			case lineHeader:
@@ -211,6 +221,20 @@ func (r *reader) readRows(p *plan, seg *segment) (table, *segment, bool) {
 				continue
 			case lineSkip:
 				continue
+			}
+		}
+		if n := r.surplus(cells, p); n > 0 {
+			r.fault(&Error{Line: int(l.num), Column: r.column(l, cells, len(p.cols)), bare: true, Found: fmt.Sprintf("a row of %d", n),
+				Expected: fmt.Sprintf("%d cells, as the header has", len(p.cols)), Hint: surplusHint(r.delim)})
+			continue
+		}
+		if partCol >= 0 && partCol < len(cells) {
+			if name := r.cell(cells[partCol]); !r.named[name] {
+				if r.named == nil {
+					r.named = map[string]bool{}
+				}
+				r.named[strings.Clone(name)] = true
+				r.names = append(r.names, name)
 			}
 		}
 		good := kind == isNumber
@@ -227,13 +251,14 @@ func (r *reader) readRows(p *plan, seg *segment) (table, *segment, bool) {
 			continue
 		}
 		row[freqCol] = f
-		for _, c := range needs {
-			if c == freqCol {
-				continue
-			}
-			if !r.readCell(l, cells, c, p, row, crow) {
-				good = false
-				break
+		if len(p.groups) > 1 {
+			good = r.readGroups(l, cells, p, row, crow)
+		} else {
+			for _, c := range needs {
+				if c != freqCol && !r.readCell(l, cells, c, p, row, crow) {
+					good = false
+					break
+				}
 			}
 		}
 		if !good {
@@ -295,6 +320,28 @@ func (r *reader) segmentFor(p *plan, seg *segment, f float64, rows int) *segment
 		}
 	}
 	return seg
+}
+
+// surplus is the number of cells of a row that has more than the header, 0 for
+// one that has not. Empty ones at the end do not count. Columns given by number
+// need no header.
+func (r *reader) surplus(cells []span, p *plan) int {
+	if p.loose {
+		return 0
+	}
+	for n := len(cells); n > len(p.cols); n-- {
+		if r.cell(cells[n-1]) != "" {
+			return n
+		}
+	}
+	return 0
+}
+
+func surplusHint(delim byte) string {
+	if delim == ',' {
+		return "save numbers with a decimal point, or another delimiter than the comma; or --columns with the columns' numbers"
+	}
+	return "a heading for each column, or --columns with the columns' numbers"
 }
 
 // continues reports whether a frequency goes on where the segment stopped: then
@@ -368,6 +415,34 @@ func (r *reader) readCell(l line, cells []span, c int, p *plan, row []float64, c
 		r.badCell(l, cells, c, p)
 	}
 	return false
+}
+
+// readGroups reads the cells of parts that stand side by side. What one part
+// lacks becomes NaN and costs the others nothing; a fault costs the row.
+func (r *reader) readGroups(l line, cells []span, p *plan, row []float64, crow []complex128) bool {
+	for gi := range p.groups {
+		g := &p.groups[gi]
+		cols := g.columns()
+		empty := true
+		for _, c := range cols {
+			if c < len(cells) && r.cell(cells[c]) != "" {
+				empty = false
+			}
+		}
+		for _, c := range cols {
+			if c == p.groups[0].freq && (gi > 0 || !math.IsNaN(row[c])) {
+				continue
+			}
+			faults := len(r.faults) + r.more
+			if empty || !r.readCell(l, cells, c, p, row, crow) {
+				if len(r.faults)+r.more > faults {
+					return false
+				}
+				row[c], crow[c] = math.NaN(), cmplx.NaN()
+			}
+		}
+	}
+	return true
 }
 
 func columnName(h heading) string {

@@ -295,6 +295,37 @@ func (s *source) detectDelimiter() {
 	}
 }
 
+// checkDecimal refuses a file whose commas could all group thousands: "1,500"
+// may be one and a half or fifteen hundred. One number that can be read in one
+// way only settles it.
+func (s *source) checkDecimal() *Error {
+	if s.decimal != ',' {
+		return nil
+	}
+	var cells []span
+	var first *Error
+	for _, l := range s.lines {
+		if s.isComment(l) {
+			continue
+		}
+		cells = s.split(l, cells)
+		for i, c := range cells {
+			t := s.cell(c)
+			if strings.IndexByte(t, ',') < 0 || !looksNumber(t, ',') {
+				continue
+			}
+			if !thousands(t) {
+				return nil
+			}
+			if first == nil {
+				first = &Error{Line: int(l.num), Column: s.column(l, cells, i), Found: t, Err: ErrAmbiguous,
+					Expected: "numbers whose comma is clearly decimal", Hint: "save with a decimal point and without thousands separators"}
+			}
+		}
+	}
+	return first
+}
+
 // delimiterName is for Reading.
 func (s *source) delimiterName() string {
 	switch s.delim {

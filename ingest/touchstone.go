@@ -36,7 +36,7 @@ func isTouchstone(file string, s *source) bool {
 	}
 	for _, l := range s.lines {
 		text := strings.TrimSpace(s.lineText(l))
-		if text[0] == '!' {
+		if text == "" || text[0] == '!' {
 			continue
 		}
 		if strings.HasPrefix(strings.ToLower(text), "[version]") {
@@ -175,7 +175,7 @@ lines:
 		if len(cells) == 0 {
 			continue
 		}
-		first := t.cell(cells[0])
+		first := strings.TrimLeft(t.lineText(l), " \t\v\f")
 		if first[0] == '[' {
 			key, rest := t.keyword(l)
 			referenceLeft = 0
@@ -343,6 +343,9 @@ lines:
 	if !t.hasOpt && len(t.p.faults) == 0 {
 		t.p.faults = append(t.p.faults, &Error{File: t.name, Line: 1, Column: 1, bare: true, Found: "none", Expected: "an option line such as # Hz S RI R 50"})
 	}
+	if t.hasOpt && len(t.option.reference) == 0 && len(t.p.faults) == 0 {
+		t.fault(t.optLine, span{}, "a resistance after [Reference]", "")
+	}
 	if t.count >= 0 && t.count != len(t.freq) && len(t.p.faults) == 0 {
 		t.p.faults = append(t.p.faults, &Error{File: t.name, Line: int(t.lines[len(t.lines)-1].num), Column: 1, bare: true,
 			Found: fmt.Sprint(len(t.freq)), Expected: fmt.Sprintf("%d frequencies ([Number of Frequencies])", t.count), Hint: "a complete file"})
@@ -379,7 +382,7 @@ func (t *touchstone) readOption(full, l line, cells []span) {
 	}
 	ref := t.option.reference
 	t.option, t.hasOpt, t.optLine = o, true, l
-	if ref != nil {
+	if ref != nil { // [Reference] stood above the option line
 		t.option.reference = ref
 	}
 }
@@ -575,7 +578,8 @@ func WriteTouchstone(w io.Writer, freq []float64, z []complex128, comment []stri
 		case "MA":
 			a, b = cmplx.Abs(n), cmplx.Phase(n)*180/math.Pi
 		case "DB":
-			a, b = 20*math.Log10(cmplx.Abs(n)), cmplx.Phase(n)*180/math.Pi
+			// A perfect match has no level; −400 dB is as good.
+			a, b = max(-400, 20*math.Log10(cmplx.Abs(n))), cmplx.Phase(n)*180/math.Pi
 		}
 		if math.IsNaN(a) || math.IsInf(a, 0) || math.IsNaN(b) || math.IsInf(b, 0) {
 			return fmt.Errorf("touchstone: expected a finite impedance, found %v at %g Hz", v, freq[i])

@@ -167,6 +167,17 @@ func TestTouchstoneErrors(t *testing.T) {
 	}
 }
 
+// A perfect match in DB has no finite level.
+func TestTouchstoneMatch(t *testing.T) {
+	var b bytes.Buffer
+	if err := WriteTouchstone(&b, []float64{1e6}, []complex128{50}, nil, TouchstoneFormat{Format: "DB"}); err != nil {
+		t.Fatal(err)
+	}
+	if s := one(t, "a.s1p", b.String(), nil); !near(s.Z[0], 50, 1e-15) {
+		t.Errorf("%v", s.Z[0])
+	}
+}
+
 // Writing and reading gives back the impedance.
 func TestTouchstoneRoundTrip(t *testing.T) {
 	rapid.Check(t, func(t *rapid.T) {

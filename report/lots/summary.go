@@ -56,9 +56,15 @@ func Summarise(values []float64) Summary {
 	return s
 }
 
-// mean is the arithmetic mean, never outside the values.
+// mean is the arithmetic mean, never outside the values. What rounding loses in
+// the first sum, the mean of the deviations gives back.
 func mean(sorted []float64) float64 {
-	return min(max(stat.Mean(sorted, nil), sorted[0]), sorted[len(sorted)-1])
+	m, rest := stat.Mean(sorted, nil), 0.0
+	for _, v := range sorted {
+		rest += v - m
+	}
+	m += rest / float64(len(sorted))
+	return min(max(m, sorted[0]), sorted[len(sorted)-1])
 }
 
 func median(sorted []float64) float64 {

@@ -46,6 +46,11 @@ type Analysis struct {
 	Result     *Result
 	Candidates []Candidate
 	Warnings   []Warning
+	// Alternative holds other values of all parameters that describe the
+	// sweep equally well; nil if none were found.
+	Alternative []float64
+	// Advice is on the next sweep, the best first, where it was asked for.
+	Advice []Advice
 }
 
 // Request says how to analyse a sweep.
@@ -58,6 +63,9 @@ type Request struct {
 	Name    string
 	// Settings of each fit; nil means the defaults.
 	Settings *Settings
+	// Advise names a parameter that the next sweep should pin down; "": no
+	// advice.
+	Advise string
 	// Profile replaces the intervals of all parameters by those of the
 	// profile likelihood.
 	Profile bool
@@ -96,6 +104,12 @@ func Analyse(freq []float64, z []complex128, request Request) (*Analysis, error)
 	}
 	if request.Profile {
 		if err := a.Result.ProfileIntervals(); err != nil {
+			return nil, err
+		}
+	}
+	if request.Advise != "" {
+		var err error
+		if a.Advice, err = a.Result.Advise(request.Advise); err != nil {
 			return nil, err
 		}
 	}

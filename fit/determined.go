@@ -27,7 +27,7 @@ func (r *Result) testElements() {
 		if !q.Determined || q.Scale != models.LogScale || math.Sqrt(r.Covariance.At(c, c)) < clearlySeen {
 			continue
 		}
-		if p, ok := r.withoutElement(i); ok && !(p < significance) {
+		if p, _, ok := r.withoutElement(i); ok && !(p < significance) {
 			q.Determined = false
 			q.Why = fmt.Sprintf("the circuit without it fits as well (F test, p = %.2g)", p)
 		}
@@ -36,16 +36,16 @@ func (r *Result) testElements() {
 
 // withoutElement returns the probability, by the F test of nested models,
 // that the circuit without the element of parameter i would be worse by
-// chance as much as it is.
+// chance as much as it is, and the cost that it reaches.
 //
 //	F = ((S₀ − S)/(k − k₀))/(S/ν)
-func (r *Result) withoutElement(i int) (probability float64, ok bool) {
+func (r *Result) withoutElement(i int) (probability, cost float64, ok bool) {
 	if r.DegreesOfFreedom < 1 {
-		return 0, false
+		return 0, 0, false
 	}
 	reduced, kept := r.Circuit.Without(i)
 	if reduced == nil {
-		return 0, false
+		return 0, 0, false
 	}
 	s := r.problem.settings
 	var rest Settings
@@ -67,9 +67,8 @@ func (r *Result) withoutElement(i int) (probability float64, ok bool) {
 	}
 	lost := len(r.Free) - len(p.free)
 	if lost < 1 {
-		return 0, false
+		return 0, 0, false
 	}
-	cost := 0.0
 	if len(p.free) > 0 {
 		lower, upper := p.bounds(&rest)
 		x := p.unknowns()
@@ -77,9 +76,17 @@ func (r *Result) withoutElement(i int) (probability float64, ok bool) {
 		settings := solver(lower, upper)
 		solution, err := lm.Solve(p.lm(), x, &settings)
 		if err != nil {
-			return 0, false
+			return 0, 0, false
 		}
 		cost = solution.Cost
+		// Parameters that the reduced circuit cannot tell apart, such as two
+		// capacitances that are now in series, count as one.
+		all := make([]int, len(p.free))
+		for c := range all {
+			all[c] = c
+		}
+		_, rest, _ := regularCovariance(solution.Jacobian, all, 1)
+		lost = len(r.Free) - len(rest)
 	} else {
 		residuals := make([]float64, 2*len(p.freq))
 		p.residual(residuals, nil)
@@ -89,5 +96,5 @@ func (r *Result) withoutElement(i int) (probability float64, ok bool) {
 	}
 	nu := float64(r.DegreesOfFreedom)
 	f := (cost - r.Cost) / float64(lost) / (max(r.Cost, 1e-300) / nu)
-	return distuv.F{D1: float64(lost), D2: nu}.Survival(max(f, 0)), true
+	return distuv.F{D1: float64(lost), D2: nu}.Survival(max(f, 0)), cost, true
 }

@@ -338,7 +338,7 @@ const (
 	maxStep         = 2
 	searchPoints    = 32
 	searchSteps     = 60
-	polishSteps     = 300
+	polishSteps     = 200
 	searchTolerance = 1e-6
 )
 
@@ -373,7 +373,7 @@ func (p *problem) solve(s *Settings) (*lm.Result, error) {
 	if err != nil {
 		return nil, err
 	}
-	if p.weight == Relative && best.Cost <= goal(len(p.freq)) {
+	if p.weight == Relative && best.Cost <= goal(len(p.freq)) && best.Status.Converged() {
 		return best, nil
 	}
 	search.run(0)
@@ -382,11 +382,25 @@ func (p *problem) solve(s *Settings) (*lm.Result, error) {
 			break // on the thinned sweep already much worse
 		}
 		r, err := p.polish(c.x, lower, upper, s.Robust)
-		if err == nil && r.Cost < best.Cost {
+		if err == nil && better(r, best, len(p.freq)) {
 			best = r
 		}
 	}
 	return best, nil
+}
+
+// better reports whether a solution is to be preferred: one that converged to
+// one that crawls along the valley of parameters that are not determined,
+// unless its χ² is larger by more than 1; else the one with the lower cost.
+func better(a, b *lm.Result, points int) bool {
+	one := b.Cost / float64(2*points) // Δ½Σr² of Δχ² = 1 is ½s², s² ≈ Σr²/(2·points)
+	switch {
+	case a.Status.Converged() && !b.Status.Converged():
+		return a.Cost <= b.Cost+one
+	case !a.Status.Converged() && b.Status.Converged():
+		return a.Cost < b.Cost-one
+	}
+	return a.Cost < b.Cost
 }
 
 // given returns the unknowns if the user gave a start for every free
@@ -553,10 +567,12 @@ func pointNoise(freq []float64, z []complex128) float64 {
 
 // solver returns the settings of a fit on the whole sweep. The gradient
 // tolerance is in standard uncertainties of the solution: 1e-7 of them is
-// far below what anybody prints, and above the rounding of the residuals.
+// far below what anybody prints, and above the rounding of the residuals. The
+// cost tolerance ends the way along the flat valley of a parameter that is
+// not determined, where a step changes χ² by less than 1e-6.
 func solver(lower, upper []float64) lm.Settings {
 	return lm.Settings{UnitScaling: true, MaxStep: maxStep, MaxIterations: polishSteps,
-		GradientTolerance: 1e-7, StepTolerance: 1e-9, CostTolerance: 1e-12,
+		GradientTolerance: 1e-6, StepTolerance: 1e-9, CostTolerance: 1e-9,
 		Lower: lower, Upper: upper, Workspace: new(lm.Workspace)}
 }
 

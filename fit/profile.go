@@ -7,6 +7,7 @@ import (
 	"gonum.org/v1/gonum/mat"
 
 	"realpart/fit/lm"
+	"realpart/models"
 )
 
 // profiler finds the smallest cost that a fit can reach with one unknown held.
@@ -22,12 +23,20 @@ type profiler struct {
 	lower, upper []float64
 	sigma        float64
 	settings     lm.Settings
+	// vague holds the columns of the parameters that are not determined:
+	// those that may have another minimum where an element has vanished.
+	vague []int
 }
 
 func (r *Result) newProfiler() (*profiler, error) {
 	p := r.problem
 	q := &profiler{result: r, lm: p.lm(), x: slices.Clone(r.x), cost: r.Cost, sigma: r.Sigma}
 	q.lower, q.upper = p.bounds(p.settings)
+	for c, i := range r.Free {
+		if !r.Parameters[i].Determined {
+			q.vague = append(q.vague, c)
+		}
+	}
 	if r.Weight == Relative {
 		q.sigma = max(q.sigma, roundingFloor)
 	}
@@ -46,9 +55,19 @@ func (r *Result) newProfiler() (*profiler, error) {
 			return nil, err
 		}
 		q.x, q.cost = s.X[:n+2], s.Cost
-		return q, nil
+	} else {
+		q.settings = solver(slices.Clone(q.lower), slices.Clone(q.upper))
 	}
-	q.settings = solver(slices.Clone(q.lower), slices.Clone(q.upper))
+	// An element that is not seen can still fit some of the noise. Values are
+	// then judged against the circuit without it, which is no worse by the F
+	// test, not against that lucky minimum.
+	spare := 0.0
+	for _, c := range q.vague {
+		if p, cost, ok := r.withoutElement(r.Free[c]); ok && !(p < significance) {
+			spare = max(spare, cost-r.Cost)
+		}
+	}
+	q.cost += spare
 	return q, nil
 }
 
@@ -86,6 +105,9 @@ func (p *problem) withMeter(sigma float64) lm.Problem {
 	}
 }
 
+// profileSteps bounds the steps of one solve of a profile.
+const profileSteps = 30
+
 // limit returns the unknown of a free parameter, below or above its fitted
 // value, at which the smallest cost that the other unknowns can reach has
 // risen by
@@ -97,6 +119,9 @@ func (p *problem) withMeter(sigma float64) lm.Problem {
 // on that side.
 func (q *profiler) limit(column int, direction, t float64) (x float64, open bool, err error) {
 	r, sigma, settings := q.result, q.sigma, q.settings
+	// χ² to 0.001 is enough for an interval.
+	settings.GradientTolerance, settings.StepTolerance, settings.CostTolerance = 1e-4, 1e-6, 1e-6
+	settings.MaxIterations = profileSteps
 	copy(settings.Lower, q.lower)
 	copy(settings.Upper, q.upper)
 	end := q.lower[column]
@@ -115,6 +140,25 @@ func (q *profiler) limit(column int, direction, t float64) (x float64, open bool
 		}
 		return math.Sqrt(max(2*(s.Cost-q.cost), 0)) / sigma, s.X, nil
 	}
+	// Before a value is taken to be outside, the minima are tried in which
+	// another parameter that is not determined has gone to an end of its
+	// range.
+	surely := func(at float64, from []float64) (float64, []float64, error) {
+		high, next, err := rise(at, from)
+		for _, c := range q.vague {
+			for _, end := range []float64{q.lower[c], q.upper[c]} {
+				if c == column || err != nil || high < t {
+					continue
+				}
+				other := slices.Clone(from)
+				other[c] = end
+				if v, x, e := rise(at, other); e == nil && v < high {
+					high, next = v, x
+				}
+			}
+		}
+		return high, next, err
+	}
 	step := 0.5
 	if v := math.Sqrt(r.Covariance.At(column, column)); v > 0 && t*v < 2 {
 		step = t * v
@@ -127,7 +171,7 @@ func (q *profiler) limit(column int, direction, t float64) (x float64, open bool
 		if direction*(outside-end) >= 0 {
 			outside = end
 		}
-		high, next, err := rise(outside, state)
+		high, next, err := surely(outside, state)
 		if err != nil {
 			return 0, false, err
 		}
@@ -167,9 +211,34 @@ func (q *profiler) limit(column int, direction, t float64) (x float64, open bool
 
 // bound replaces the intervals of parameters that are not determined by
 // profile limits: the two-sided 95 % interval where both sides are closed, a
-// one-sided 95 % limit where one is open.
+// one-sided 95 % limit where one is open. The other parameters' intervals
+// hold the vanished elements for absent; where one is not determined, those of
+// all are profiled, and if one turns out too wide it is not determined either.
 func (r *Result) bound() error {
-	return r.profileIntervals(func(p *Parameter) bool { return !p.Determined })
+	if !slices.ContainsFunc(r.Free, func(i int) bool { return !r.Parameters[i].Determined }) {
+		return nil
+	}
+	linear := slices.Clone(r.Parameters)
+	if err := r.profileIntervals(func(*Parameter) bool { return true }); err != nil {
+		return err
+	}
+	for _, i := range r.Free {
+		q := &r.Parameters[i]
+		if !q.Determined {
+			continue
+		}
+		wide := !(q.High95/q.Low95 <= determinedFactor)
+		if q.Scale == models.LogitScale {
+			wide = !(q.High95-q.Low95 <= determinedExponent)
+		}
+		if wide {
+			q.Determined = false
+			q.Why = "other values do as well once other elements may vanish"
+		} else {
+			q.Low95, q.High95 = linear[i].Low95, linear[i].High95
+		}
+	}
+	return nil
 }
 
 // ProfileIntervals replaces the intervals of all free parameters by those of

@@ -67,7 +67,7 @@ func evaluate(p *problem, s *Settings, x []float64, solution *lm.Result) *Result
 		}
 	}
 	if len(p.free) > 0 {
-		r.uncertainty(solution)
+		r.uncertainty(s, solution)
 	}
 	return r
 }
@@ -107,7 +107,7 @@ func (r *Result) structure(re, im []float64) {
 // degrees of freedom (Welch–Satterthwaite, GUM G.4), the meter's part having
 // infinitely many. Intervals are symmetric in ln p, so that none crosses
 // zero, and in n itself for an exponent.
-func (r *Result) uncertainty(solution *lm.Result) {
+func (r *Result) uncertainty(s *Settings, solution *lm.Result) {
 	p := r.problem
 	k := len(p.free)
 	r.Covariance = mat.NewSymDense(k, nil)
@@ -124,7 +124,10 @@ func (r *Result) uncertainty(solution *lm.Result) {
 	for c, i := range p.free {
 		if r.Parameters[i].AtBound {
 			r.Parameters[i].Determined = false
-			r.Parameters[i].Why = "it ran off to where its element has vanished, or to a bound that was given"
+			r.Parameters[i].Why = "its element has vanished from the circuit"
+			if _, given := s.Bounds[r.Parameters[i].Name]; given {
+				r.Parameters[i].Why = "it ended at a bound that was given"
+			}
 			continue
 		}
 		determined = append(determined, c)
@@ -182,7 +185,10 @@ func (r *Result) uncertainty(solution *lm.Result) {
 			q.Low95, q.High95 = q.Value*math.Exp(-u), q.Value*math.Exp(u)
 			if !(2*u <= math.Log(determinedFactor)) {
 				q.Determined = false
-				q.Why = fmt.Sprintf("its 95 %% interval spans a factor of %.3g", math.Exp(2*u))
+				q.Why = fmt.Sprintf("its 95 %% interval spans a factor of %.2g", math.Exp(2*u))
+				if 2*u > math.Log(1e3) {
+					q.Why = "its 95 % interval spans more than three decades"
+				}
 			}
 		}
 	}

@@ -35,7 +35,7 @@ func (a *Analysis) warn(freq []float64, z []complex128, s *Settings) {
 		if limit := q.Limit(); limit != "" {
 			text += " All that can be said is " + limit + "."
 		}
-		if partner, where := r.confusedWith(c); partner != "" {
+		if partner, where := r.confusedWith(c); partner != "" && !q.AtBound {
 			text += fmt.Sprintf(" %s and %s cannot be told apart %s.", q.Name, partner, where)
 		}
 		add("not-determined", "%s", text)
@@ -54,8 +54,12 @@ func (a *Analysis) warn(freq []float64, z []complex128, s *Settings) {
 	if r.Structured {
 		a.structure(freq, z, s)
 	}
-	if other := r.second(); other != "" {
-		add("second-solution", "Another set of values describes the sweep equally well: %s. The sweep cannot say which is the part's.", other)
+	if a.Alternative = r.second(); a.Alternative != nil {
+		var values []string
+		for _, i := range r.Free {
+			values = append(values, r.Parameters[i].Name+" = "+quantity.Format(a.Alternative[i], r.Parameters[i].Unit, 4))
+		}
+		add("second-solution", "Another set of values describes the sweep equally well: %s. The sweep cannot say which is the part's.", listed(values))
 	}
 	if from, below := r.resolvedFrom(); below {
 		if from > 0 {
@@ -262,11 +266,12 @@ func (r *Result) resolvedFrom() (from float64, below bool) {
 }
 
 // second looks for another solution with other values that describes the
-// sweep as well, and returns it in words; "" if there is none. It looks where
+// sweep as well, within what the 95 % interval of one parameter allows, and
+// returns the values of all parameters; nil if there is none. It looks where
 // such solutions exist: circuits with at least four unknowns.
-func (r *Result) second() string {
+func (r *Result) second() []float64 {
 	if len(r.Free) < 4 || r.Sigma == 0 {
-		return ""
+		return nil
 	}
 	p := r.problem
 	s := p.settings
@@ -274,8 +279,11 @@ func (r *Result) second() string {
 	search := p.newSearch(s, lower, upper)
 	search.run(0)
 	t := studentQuantile(0.975, float64(r.DegreesOfFreedom))
-	found := ""
+	defer p.set(r.x)
 	for _, c := range search.best {
+		if c.cost > 3*search.best[0].cost {
+			break
+		}
 		other, err := p.polish(c.x, lower, upper, s.Robust)
 		if err != nil || !(2*(other.Cost-r.Cost) <= t*t*r.Sigma*r.Sigma) {
 			continue
@@ -283,26 +291,13 @@ func (r *Result) second() string {
 		p.set(other.X)
 		order(p.circuit, p.values, s)
 		x := p.unknowns()
-		differs := false
 		for c, i := range r.Free {
-			if !r.Parameters[i].Determined {
-				continue
+			if r.Parameters[i].Determined && math.Abs(x[c]-r.x[c]) > max(0.01, 5*math.Sqrt(r.Covariance.At(c, c))) {
+				return slices.Clone(p.values)
 			}
-			if math.Abs(x[c]-r.x[c]) > max(0.01, 5*math.Sqrt(r.Covariance.At(c, c))) {
-				differs = true
-			}
-		}
-		if differs {
-			var values []string
-			for _, i := range r.Free {
-				values = append(values, r.Parameters[i].Name+" = "+quantity.Format(p.values[i], r.Parameters[i].Unit, 4))
-			}
-			found = listed(values)
-			break
 		}
 	}
-	p.set(r.x)
-	return found
+	return nil
 }
 
 // sortedWarnings puts warnings that question the whole result first.

@@ -314,9 +314,12 @@ func (s *state) advance() {
 			s.radius = mostShrink * s.length
 			continue
 		}
-		// A step that the radius or MaxStep shortened is small for that reason and proves nothing.
+		// A step that the radius or MaxStep shortened is small for that reason and proves nothing; except that one nearly as
+		// long as MaxStep allows which gains nothing shows a flat valley, such as that of a variable without effect.
 		if full {
 			s.lastStep = change
+		}
+		if full || change >= o.MaxStep/2 {
 			if math.Abs(actual) <= o.CostTolerance*former+noise {
 				s.lastDecrease = predicted / former
 			}

@@ -190,6 +190,13 @@ func TestDialects(t *testing.T) {
 	addText("quoted cells", strings.ReplaceAll(`"`+strings.ReplaceAll(strings.TrimSuffix(ascii, "\n"), "\n", "\"\n\"")+`"`, ",", `","`), "")
 	addText("quoted header with commas", strings.Replace(ascii, "Frequency (Hz),|Z| (Ohm),Phase (deg)", `"Frequency, Hz","|Z|, Ohm","Phase, deg"`, 1), "")
 
+	addText("header of two lines in quotes", strings.Replace(ascii, "Frequency (Hz),|Z| (Ohm),Phase (deg)", "\"Frequency\n(Hz)\",\"|Z|\n(Ohm)\",\"Phase\n(deg)\"", 1), "")
+	addText("names of traces", textTable("Frequency (Hz), Trace 1: Impedance: Magnitude (Ω), Trace 2: Impedance: Phase (°)", ",", polarDeg), "")
+	addText("trace, real and imaginary", textTable("Frequency (Hz), Trace 1: Impedance: Real (Ω), Trace 1: Impedance: Imag (Ω)", ",", rect), "")
+	addText("a number sign as heading", textTable("#,Frequency (Hz),Z (Ohm),Theta (deg),Status", ",", func(f float64, z complex128) []float64 {
+		return []float64{7, f, cmplx.Abs(z), cmplx.Phase(z) * deg, 0}
+	}), "")
+
 	// Encodings and line ends.
 	add("UTF-8 with mark", append([]byte("\xef\xbb\xbf"), plain...), "")
 	add("UTF-16 little endian", utf16Bytes(plain, false, true), "")

@@ -66,7 +66,7 @@ func readHeading(text string) heading {
 }
 
 var tidyHeader = strings.NewReplacer("\u03bc", "µ", "\u2126", "Ω", "’", "'", "‘", "'", "′", "'", "″", "''", "”", "''",
-	"\u2212", "-", "ϕ", "φ", "Φ", "φ", "ϑ", "θ", "Θ", "θ", "\u00a0", " ", "\u2009", " ", "\ufeff", "")
+	"\u2212", "-", "ϕ", "φ", "Φ", "φ", "ϑ", "θ", "Θ", "θ", "\u00a0", " ", "\u2009", " ", "\ufeff", "", "\n", " ", "\r", " ")
 
 // unitCut is one way to take a header apart.
 type unitCut struct{ name, unit string }

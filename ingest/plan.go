@@ -4,6 +4,7 @@ import (
 	"fmt"
 	"strconv"
 	"strings"
+	"unicode"
 )
 
 // measured is one way to get Z from the columns of a group: a pair of
@@ -352,6 +353,7 @@ func (s *source) labelColumns(p *plan) {
 	type found struct {
 		h     heading
 		label string
+		ok    bool
 	}
 	got := make([]found, len(p.cols))
 	roleSets := map[string]map[role]bool{}
@@ -364,7 +366,7 @@ func (s *source) labelColumns(p *plan) {
 		if !ok || h.role == roleFreq || h.role == roleOmega || h.role == rolePart {
 			continue
 		}
-		got[i] = found{h, label}
+		got[i] = found{h, label, true}
 		if roleSets[label] == nil {
 			roleSets[label] = map[role]bool{}
 		}
@@ -391,7 +393,7 @@ func (s *source) labelColumns(p *plan) {
 	trial := make([]heading, len(p.cols))
 	copy(trial, p.cols)
 	for i := range trial {
-		if got[i].label != "" {
+		if got[i].ok {
 			u := trial[i].unit
 			trial[i] = got[i].h
 			if trial[i].unit.dim == "" && u.dim != "" {
@@ -401,8 +403,8 @@ func (s *source) labelColumns(p *plan) {
 		}
 	}
 	byLabel := map[string][]heading{}
-	for _, c := range trial {
-		if c.label != "" {
+	for i, c := range trial {
+		if got[i].ok {
 			byLabel[c.label] = append(byLabel[c.label], c)
 		}
 	}
@@ -411,7 +413,7 @@ func (s *source) labelColumns(p *plan) {
 	}
 	count := map[string]int{}
 	for i := range trial {
-		if l := trial[i].label; l != "" {
+		if l := trial[i].label; got[i].ok {
 			trial[i] = byLabel[l][count[l]]
 			count[l]++
 		}
@@ -434,6 +436,7 @@ func splitLabel(text string, words map[string]heading) (heading, string, bool) {
 		if _, isUnit, _ := readUnit(label); isUnit {
 			return heading{}, "", false
 		}
+		label = withoutTrace(label)
 		h, ok := words[word]
 		if !ok {
 			h = readHeading(word)
@@ -466,6 +469,24 @@ func splitLabel(text string, words map[string]heading) (heading, string, bool) {
 		}
 	}
 	return heading{}, "", false
+}
+
+// traceWords name a curve on a screen, not a part.
+var traceWords = map[string]bool{"trace": true, "trc": true, "tr": true, "channel": true, "chan": true, "ch": true, "curve": true, "plot": true,
+	"data": true, "measurement": true, "value": true, "impedance": true, "z": true}
+
+// withoutTrace returns "" for a label such as "Trace 1: Impedance".
+func withoutTrace(label string) string {
+	words := strings.FieldsFunc(strings.ToLower(label), func(r rune) bool { return !unicode.IsLetter(r) })
+	for _, w := range words {
+		if !traceWords[w] {
+			return label
+		}
+	}
+	if len(words) == 0 {
+		return label
+	}
+	return ""
 }
 
 // numberRepeats labels columns by the count of their role, if all measured

@@ -42,6 +42,7 @@ func newSource(name, text, enc string) *source {
 	if strings.IndexByte(text, '\n') < 0 {
 		end = '\r'
 	}
+	quotes := strings.IndexByte(text, '"') >= 0
 	// Most lines of a sweep are about this long; append corrects the guess.
 	s.lines = make([]line, 0, len(text)/32+1)
 	num := int32(0)
@@ -53,15 +54,57 @@ func newSource(name, text, enc string) *source {
 		}
 		num++
 		from, to := start, start+stop
+		extra := int32(0)
+		if quotes {
+			if more, lines := openQuote(text, start, start+stop, end); lines > 0 {
+				to, next, extra = more, min(more+1, len(text)), int32(lines)
+			}
+		}
 		for to > from && (text[to-1] == '\r' || isBlank(text[to-1])) {
 			to--
 		}
 		if to > from && !allBlank(text[from:to]) {
 			s.lines = append(s.lines, line{int32(from), int32(to), num})
 		}
+		num += extra
 		start = next
 	}
 	return s
+}
+
+// openQuote looks for a quoted cell that begins on the line text[start:stop] and
+// runs over the next lines, as spreadsheets write headers of two lines. It
+// returns the end of the line on which the cell closes and how many further
+// lines that takes, 0 if there is no such cell.
+func openQuote(text string, start, stop int, end byte) (to, lines int) {
+	const most = 4
+	if strings.Count(text[start:stop], `"`)%2 == 0 {
+		return 0, 0
+	}
+	at := start + strings.LastIndexByte(text[start:stop], '"')
+	if at > start && strings.IndexByte(",;\t|", text[at-1]) < 0 {
+		return 0, 0
+	}
+	for n := 1; n <= most && stop < len(text); n++ {
+		from := stop + 1
+		length := strings.IndexByte(text[from:], end)
+		if length < 0 {
+			length = len(text) - from
+		}
+		stop = from + length
+		i := strings.IndexByte(text[from:stop], '"')
+		if i < 0 {
+			continue
+		}
+		if i += from + 1; i < stop && strings.IndexByte(",;\t|\r", text[i]) < 0 {
+			return 0, 0
+		}
+		if strings.Count(text[from:stop], `"`)%2 == 1 {
+			return stop, n
+		}
+		// The line closes the cell and opens another.
+	}
+	return 0, 0
 }
 
 func isBlank(c byte) bool { return c == ' ' || c == '\t' || c == '\v' || c == '\f' }

@@ -235,7 +235,7 @@ func New(s Sweep, a *fit.Analysis, o Options) *Fit {
 		row := make([]float64, len(r.Free))
 		for k := range row {
 			if v := r.Correlation.At(i, k); !math.IsNaN(v) {
-				row[k] = v
+				row[k] = min(max(v, -1), 1) // rounding may leave 1.0000000000000002
 			}
 		}
 		f.Correlation = append(f.Correlation, row)

@@ -355,6 +355,11 @@ func TestNew(t *testing.T) {
 			below[v.AtHz] = *v.BelowResolution
 		}
 	}
+	for _, v := range New(s.sweep, s.analysis, Options{}).Figures {
+		if v.BelowResolution != nil {
+			t.Errorf("%s at %v Hz is judged by an accuracy that was not stated", v.Name, v.AtHz)
+		}
+	}
 	// 1/(ωC)·0.001 is 134 mΩ at 120 Hz, more than ESR, and 0.16 mΩ at 100 kHz;
 	// 20 MHz is outside the sweep.
 	if diff := cmp.Diff(map[float64]bool{120: true, 1e5: false}, below); diff != "" {

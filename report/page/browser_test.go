@@ -9,6 +9,7 @@ import (
 	"os"
 	"os/exec"
 	"path/filepath"
+	"regexp"
 	"strconv"
 	"strings"
 	"sync"
@@ -49,7 +50,7 @@ func TestBrowser(t *testing.T) {
 	if err := chromedp.Do(browser); err != nil {
 		t.Fatal(err)
 	}
-	for name, test := range map[string]func(*testing.T, context.Context){"one part": onePart, "lot": aLot, "contrast": contrasts} {
+	for name, test := range map[string]func(*testing.T, context.Context){"one part": onePart, "lot": aLot, "contrast": contrasts, "no script": noScript, "print": printed} {
 		t.Run(name, func(t *testing.T) {
 			tab, cancel := chromedp.NewContext(browser)
 			defer cancel()
@@ -361,6 +362,40 @@ func aLot(t *testing.T, ctx context.Context) {
 	overflow(t, ctx)
 	w.check(t, address)
 	photograph(t, ctx, "lot")
+}
+
+// noScript: without the script everything is there but the readout and the
+// filter.
+func noScript(t *testing.T, ctx context.Context) {
+	call(t, ctx, emulation.SetScriptExecutionDisabled, emulation.SetScriptExecutionDisabledParams{Value: true})
+	open(t, ctx, "lot", render(t, lot(t, 5)))
+	count := func(selector string) int {
+		return len(get(t, ctx, chromedp.Nodes(chromedp.CSSAll(selector))))
+	}
+	for selector, want := range map[string]int{".index tbody tr": 5, ".plot svg": 20, ".at": 4, "section.part": 5, "#cautions li": 3} {
+		if got := count(selector); got != want {
+			t.Errorf("%d of %q, want %d", got, selector, want)
+		}
+	}
+	run(t, ctx, chromedp.WaitVisible(chromedp.CSS(".plot svg")), chromedp.WaitNotVisible(chromedp.CSS(".readout")), chromedp.WaitNotVisible(chromedp.CSS(".filter")))
+}
+
+// printed: a part takes two sheets of A4 and of Letter, the figures on the
+// first; what is of use on a screen only is left out.
+func printed(t *testing.T, ctx context.Context) {
+	open(t, ctx, "single", render(t, single(t)))
+	for name, paper := range map[string]chromedp.PaperSize{"A4": chromedp.PaperA4, "Letter": chromedp.PaperLetter} {
+		pdf := get(t, ctx, chromedp.PrintToPDF(chromedp.PDFPaper(paper)))
+		if n := len(regexp.MustCompile(`/Type\s*/Page\b[^s]`).FindAll(pdf, -1)); n != 2 {
+			t.Errorf("%d pages of %s, want 2", n, name)
+		}
+	}
+	call(t, ctx, emulation.SetEmulatedMedia, emulation.SetEmulatedMediaParams{Media: "print"})
+	for _, selector := range []string{".readout", ".skip", ".nav"} {
+		if d := evaluate[string](t, ctx, `getComputedStyle(document.querySelector("`+selector+`")).display`); d != "none" {
+			t.Errorf("%s is printed", selector)
+		}
+	}
 }
 
 // contrasts: text has the contrast that WCAG 2.2 asks for (success criterion 1.4.3: 4.5 to

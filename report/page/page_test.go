@@ -142,6 +142,22 @@ func TestSize(t *testing.T) {
 	}
 }
 
+// A record that came as JSON has no points: its numbers are shown without
+// figures.
+func TestWithoutTraces(t *testing.T) {
+	p := single(t)
+	p.Parts[0].Traces = nil
+	html := render(t, p)
+	if strings.Contains(html, `class="plot"`) || strings.Contains(html, `type="application/json"`) {
+		t.Error("figures without points")
+	}
+	for _, want := range []string{"4.10", "ESR + ESL + (C || Rp)", "Figures at stated frequencies", "How this was made"} {
+		if !strings.Contains(html, want) {
+			t.Errorf("no %q", want)
+		}
+	}
+}
+
 func TestWriteErrors(t *testing.T) {
 	p := single(t)
 	p.Parts[0].Fit.Circuit.Expression = "C +"

@@ -169,14 +169,13 @@ var Page = Style{
 
 func token(n uint8) color.Color { return color.RGBA{0, 0, n, 0xff} }
 
-var properties = []string{1: "ink", 2: "grid", 3: "measured", 4: "model", 5: "second", 6: "scatter", 7: "meter", 8: "resonance"}
+// properties turns the colours of [Page] into custom properties.
+var properties = strings.NewReplacer("#000001", "var(--ink)", "#000002", "var(--grid)", "#000003", "var(--measured)", "#000004", "var(--model)",
+	"#000005", "var(--second)", "#000006", "var(--scatter)", "#000007", "var(--meter)", "#000008", "var(--resonance)")
 
-var (
-	tokenColour = regexp.MustCompile(`#00000([1-8])`)
-	pathData    = regexp.MustCompile(` d="[^"]*"`)
-	svgStart    = regexp.MustCompile(`(?s)^.*?<g transform`)
-	textStyle   = regexp.MustCompile(`transform="scale\(1, -1\)"\s+style="font-family:[^"]*fill:([^;"]+)"`)
-)
+// textStyle is how the canvas sets the font of a text, which the style sheet
+// of the page does instead.
+var textStyle = regexp.MustCompile(`transform="scale\(1, -1\)"\s+style="font-family:[^"]*fill:([^;"]+)"`)
 
 // SVG returns the figure as an svg element without a size of its own, and
 // where the data lie in it. It is for a page whose style sheet sets the font
@@ -191,15 +190,29 @@ func (p Panel) SVG(width, height float64) (string, Area) {
 	data := p.plot.DataCanvas(canvas)
 	var b bytes.Buffer
 	c.WriteTo(&b) // a bytes.Buffer takes everything
-	svg := svgStart.ReplaceAllString(b.String(), fmt.Sprintf(`<svg viewBox="0 0 %g %g" xmlns="http://www.w3.org/2000/svg"><g transform`, width, height))
-	svg = tokenColour.ReplaceAllStringFunc(svg, func(s string) string {
-		return "var(--" + properties[s[len(s)-1]-'0'] + ")"
-	})
-	svg = pathData.ReplaceAllStringFunc(svg, func(d string) string { return ` d="` + compact(d[4:len(d)-1]) + `"` })
+	svg := b.String()
+	svg = fmt.Sprintf(`<svg viewBox="0 0 %g %g" xmlns="http://www.w3.org/2000/svg">`, width, height) + svg[strings.Index(svg, "<g transform"):]
+	svg = properties.Replace(compactPaths(svg))
 	svg = textStyle.ReplaceAllString(svg, `transform="scale(1,-1)" fill="$1"`)
 	return svg, Area{
 		Left: float64(data.Min.X) / width, Right: float64(data.Max.X) / width,
 		Top: 1 - float64(data.Max.Y)/height, Bottom: 1 - float64(data.Min.Y)/height,
+	}
+}
+
+// compactPaths makes all path data of an svg compact.
+func compactPaths(svg string) string {
+	var b strings.Builder
+	b.Grow(len(svg))
+	for {
+		before, rest, found := strings.Cut(svg, ` d="`)
+		b.WriteString(before)
+		if !found {
+			return b.String()
+		}
+		data, after, _ := strings.Cut(rest, `"`)
+		b.WriteString(` d="` + compact(data) + `"`)
+		svg = after
 	}
 }
 

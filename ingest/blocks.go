@@ -141,7 +141,7 @@ func (b *builder) joinPair(one, two *half) {
 	// Frequencies are in hertz by now.
 	p.cols[0].role = roleFreq
 	seg := &segment{plan: p, meta: one.seg.meta.merge(two.seg.meta), line: one.seg.line, slot: []int{0, 1, 2},
-		vals: [][]float64{one.freq, one.vals, two.vals}, extra: make([]bool, 3)}
+		vals: [][]float64{one.freq, one.vals, two.vals}}
 	b.addGroup(seg, &p.groups[0])
 }
 

@@ -466,17 +466,6 @@ func (b *builder) radians(seg *segment, col int, f, mag []float64, quiet bool) (
 	return out, true
 }
 
-func scaled(v []float64, exp int) []float64 {
-	if exp == 0 {
-		return v
-	}
-	out := make([]float64, len(v))
-	for i := range v {
-		out[i] = scale(v[i], exp)
-	}
-	return out
-}
-
 func (b *builder) tellAngle(f, mag, raw []float64, h *heading) (angleUnit, string) {
 	if h.negate {
 		raw = negated(raw)

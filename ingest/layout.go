@@ -403,7 +403,7 @@ func (s *source) noTable(from int) *Error {
 	// The line that most looks like a header gives the best hint.
 	l := s.lines[from]
 	for i := from; i < len(s.lines) && i < from+200; i++ {
-		if countKnown(readHeadings(firstOf(s.cellTexts(s.uncomment(s.lines[i]), 0)))) >= 2 {
+		if texts, _ := s.cellTexts(s.uncomment(s.lines[i]), 0); len(texts) <= maxColumns && countKnown(readHeadings(texts)) >= 2 {
 			l = s.lines[i]
 			break
 		}
@@ -411,8 +411,6 @@ func (s *source) noTable(from int) *Error {
 	return &Error{File: s.name, Line: int(l.num), Column: 1, Found: s.lineText(l), Expected: "a header with a frequency column and rows of numbers",
 		Hint: "--columns 'f=1,z=2,phase=3' with the columns' numbers"}
 }
-
-func firstOf[A, B any](a A, _ B) A { return a }
 
 // findColumns finds the table that --columns describes.
 func (s *source) findColumns(from int, want Columns) (table, *Error) {
@@ -454,7 +452,7 @@ func (s *source) findColumns(from int, want Columns) (table, *Error) {
 		if k := s.look(cells); len(cells) < most || len(cells) > maxColumns || !k.isData() {
 			continue
 		}
-		if c := number["f"]; !looksNumber(s.cell(cells[c])+" ", s.decimal) && !looksNumber(orZero(s.cell(cells[c])), s.decimal) {
+		if f := s.cell(cells[number["f"]]); f == "" || !looksNumber(f, s.decimal) {
 			continue
 		}
 		t := table{head: -1, unit: -1, group: -1, first: i}
@@ -494,13 +492,6 @@ func (s *source) findColumns(from int, want Columns) (table, *Error) {
 		}
 	}
 	return table{}, e
-}
-
-func orZero(s string) string {
-	if s == "" {
-		return "0"
-	}
-	return s
 }
 
 func (s *source) withUnitRow(t table) table {

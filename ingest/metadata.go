@@ -85,7 +85,7 @@ func init() {
 			}
 			m.TemperatureC, m.HasTemperature = t, true
 		})
-	add("mode function measurementmode measurementfunction measfunction measuremode parameter parameters measurementparameter measurementparameters measured type quantity func primary primaryparameter",
+	add("mode function measurementmode measurementfunction measfunction measuremode parameter parameters measurementparameter measurementparameters type quantity func primary primaryparameter",
 		func(m *Metadata, v, _ string) {
 			if m.mode == "" {
 				m.mode = strings.ToLower(v)

@@ -130,6 +130,9 @@ func pointForComma(s string) (string, bool) {
 // looksNumber is a quick test without the value, for the choice of the
 // delimiter: a decimal number, or a mark.
 func looksNumber(s string, decimal byte) bool {
+	if s == "" {
+		return false
+	}
 	i := 0
 	if s[0] == '+' || s[0] == '-' {
 		i++
@@ -163,7 +166,7 @@ func looksNumber(s string, decimal byte) bool {
 	}
 	// A prefix or unit may follow, or the imaginary part.
 	rest := s[i:]
-	return len(rest) <= 4 && strings.IndexAny(rest, ",;\t|") < 0 && (rest[0] < '0' || rest[0] > '9') && rest[0] != '.' ||
+	return len(rest) <= 4 && !strings.ContainsAny(rest, ",;\t|") && (rest[0] < '0' || rest[0] > '9') && rest[0] != '.' ||
 		rest[0] == '+' || rest[0] == '-'
 }
 

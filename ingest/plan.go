@@ -2,6 +2,7 @@ package ingest
 
 import (
 	"fmt"
+	"slices"
 	"strconv"
 	"strings"
 	"unicode"
@@ -60,9 +61,7 @@ func (s *source) plan(t table, o Options, meta Metadata) (*plan, *Error) {
 			p.loose = true
 		}
 	}
-	if err := s.applyUnits(p, o.Units); err != nil {
-		return nil, err
-	}
+	p.applyUnits(o.Units)
 	var first []string
 	if i, cells := s.nextRow(p.first); i >= 0 {
 		for _, c := range cells {
@@ -149,7 +148,7 @@ func (s *source) nextRow(from int) (int, []span) {
 }
 
 // applyUnits puts the units of --units in place of the header's.
-func (s *source) applyUnits(p *plan, units Units) *Error {
+func (p *plan) applyUnits(units Units) {
 	for _, key := range columnKeys {
 		text, ok := units[key]
 		if !ok {
@@ -177,7 +176,6 @@ func (s *source) applyUnits(p *plan, units Units) *Error {
 			}
 		}
 	}
-	return nil
 }
 
 // settle gives roles to the words that say too little alone.
@@ -259,8 +257,8 @@ func settle(cols []heading, first []string, meta Metadata) {
 // ESR or X beside it means series; G or Rp parallel), or by the instrument's
 // mode.
 func equivalent(mode string, has [numRoles]bool, letter string, s, p, unknown role) role {
-	series := has[roleRs] || strings.Contains(mode, letter+"s")
-	par := has[roleRp] || has[roleG] || strings.Contains(mode, letter+"p")
+	series := has[roleRs] || modeNames(mode, letter+"s", "d", "q", "rs")
+	par := has[roleRp] || has[roleG] || modeNames(mode, letter+"p", "d", "q", "g", "rp")
 	switch {
 	case series && !par:
 		return s
@@ -268,6 +266,18 @@ func equivalent(mode string, has [numRoles]bool, letter string, s, p, unknown ro
 		return p
 	}
 	return unknown
+}
+
+// modeNames reports whether one word of a mode is the quantity, alone or with
+// its second ("Cs-D", "CSD").
+func modeNames(mode, quantity string, seconds ...string) bool {
+	for _, w := range strings.FieldsFunc(mode, func(r rune) bool { return !unicode.IsLetter(r) }) {
+		rest, ok := strings.CutPrefix(w, quantity)
+		if ok && (rest == "" || slices.Contains(seconds, rest)) {
+			return true
+		}
+	}
+	return false
 }
 
 // groupByFreq: each frequency column begins a group.

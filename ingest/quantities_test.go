@@ -247,6 +247,12 @@ func TestModeTellsEquivalent(t *testing.T) {
 			t.Errorf("mode %s: Z = %v, want %v", mode, s.Z[0], want)
 		}
 	}
+	// Letters within other words are no mode.
+	for _, line := range []string{"Type: Ceramics", "Function: Cs-D, Cp-D", "Parameter: electronics"} {
+		if _, err := Read("a.csv", strings.NewReader(line+"\nFrequency (Hz),C (uF),D\n1000,1,0.5\n2000,1,0.5\n"), nil); !errors.Is(err, ErrAmbiguous) {
+			t.Errorf("%s: %v", line, err)
+		}
+	}
 }
 
 // Degrees or radians are told from the slope for capacitors, inductors and

@@ -11,14 +11,13 @@ import (
 
 // segment is rows that belong together: below one header, without a break.
 type segment struct {
-	plan  *plan
-	meta  Metadata // of the lines since the segment before
-	line  []int32  // of each row
-	vals  [][]float64
-	cplx  map[int][]complex128 // columns of complex literals
-	slot  []int                // column → index in vals, -1
-	part  []string             // value of the part column of each row, nil without one
-	extra []bool               // per slot: a column that is only compared; its gaps are NaN
+	plan *plan
+	meta Metadata // of the lines since the segment before
+	line []int32  // of each row
+	vals [][]float64
+	cplx map[int][]complex128 // columns of complex literals
+	slot []int                // column → index in vals, -1
+	part []string             // value of the part column of each row, nil without one
 }
 
 // maxFaults and maxDropped bound what is remembered of a bad file.
@@ -117,11 +116,10 @@ func (r *reader) newSegment(p *plan) *segment {
 	for i := range g.slot {
 		g.slot[i] = -1
 	}
-	add := func(i int, extra bool) {
+	add := func(i int) {
 		if g.slot[i] < 0 {
 			g.slot[i] = len(g.vals)
 			g.vals = append(g.vals, nil)
-			g.extra = append(g.extra, extra)
 		}
 		switch p.cols[i].role {
 		case roleZ, roleY, roleS:
@@ -132,16 +130,13 @@ func (r *reader) newSegment(p *plan) *segment {
 		}
 	}
 	for _, q := range p.groups {
-		add(q.freq, false)
+		add(q.freq)
 		if q.part >= 0 {
 			g.part = []string{}
 		}
 	}
-	for _, i := range p.need {
-		add(i, false)
-	}
-	for _, i := range p.also {
-		add(i, true)
+	for _, i := range append(append([]int{}, p.need...), p.also...) {
+		add(i)
 	}
 	r.segments = append(r.segments, g)
 	return g

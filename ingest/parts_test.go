@@ -92,6 +92,14 @@ func TestSideBySideGaps(t *testing.T) {
 	}
 }
 
+// A line of words within a sweep is no new part.
+func TestWordsBetweenRows(t *testing.T) {
+	s := one(t, "a.csv", "f (Hz),R (Ohm),X (Ohm)\n100,1,2\n\nrange changed\n200,1,2\n300,1,2\n", nil)
+	if s.Part != "a" || len(s.Freq) != 3 || len(s.Dropped) != 1 || s.Dropped[0].Line != 4 {
+		t.Errorf("%q %v %v", s.Part, s.Freq, s.Dropped)
+	}
+}
+
 // A part without a usable row does not vanish without a word.
 func TestEmptyPart(t *testing.T) {
 	for name, text := range map[string]string{

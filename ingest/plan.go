@@ -47,15 +47,17 @@ func (g *group) columns() []int {
 type plan struct {
 	table
 	groups []group
-	loose  bool  // rows may have more cells than the header: columns are given by number
-	need   []int // columns whose cells must be numbers
-	also   []int // columns that are read if they are numbers, to compare
+	// connection is how the caller says that the part was connected, "" if not.
+	connection string
+	loose      bool  // rows may have more cells than the header: columns are given by number
+	need       []int // columns whose cells must be numbers
+	also       []int // columns that are read if they are numbers, to compare
 }
 
 // plan decides which columns make the impedance. firstCells are the first
 // row's, to see complex literals.
 func (s *source) plan(t table, o Options, meta Metadata) (*plan, *Error) {
-	p := &plan{table: t}
+	p := &plan{table: t, connection: o.Connection}
 	for _, v := range o.Columns {
 		if _, err := strconv.Atoi(v); err == nil {
 			p.loose = true
@@ -580,7 +582,11 @@ func (s *source) group(p *plan, idx []int, freq, part int, label string) (group,
 			g.ways = append(g.ways, measured{a: at[q.a], b: at[q.b], pair: q})
 		}
 	}
-	for _, port := range portOrder {
+	ports2, err := s.usePorts(p, portOrder, ports, len(g.ways) > 0)
+	if err != nil {
+		return g, err
+	}
+	for _, port := range ports2 {
 		have := ports[port]
 		for _, q := range sPairs {
 			a, okA := have[q[0]]
@@ -613,6 +619,50 @@ func (s *source) group(p *plan, idx []int, freq, part int, label string) (group,
 		return g, nil // the columns of numbers are looked at when they are known
 	}
 	return g, s.noPair(p, idx, freq)
+}
+
+// usePorts chooses the S-parameters that fit the connection: S11 of one port is
+// a reflection; with transmission beside it, only the caller can know. optional
+// means that the impedance is there in other columns too.
+func (s *source) usePorts(p *plan, order []int, at map[int]map[role]int, optional bool) ([]int, *Error) {
+	var reflected, through []int
+	for _, port := range order {
+		if port == 11 || port == 22 {
+			reflected = append(reflected, port)
+		} else {
+			through = append(through, port)
+		}
+	}
+	fail := func(found, expected, hint string, cause error) ([]int, *Error) {
+		if optional {
+			return nil, nil
+		}
+		col := -1
+		for i, c := range p.cols {
+			if c.port == order[0] {
+				col = i
+				break
+			}
+		}
+		e := s.headError(p, col, expected, hint)
+		e.Found, e.bare, e.Err = found, true, cause
+		return nil, e
+	}
+	switch {
+	case len(order) == 0:
+		return nil, nil
+	case p.connection == ConnectionReflection && len(reflected) == 0:
+		return fail(fmt.Sprintf("S%d only", order[0]), "S11 for a reflection", "--connection series or --connection shunt", ErrUsage)
+	case p.connection == ConnectionReflection:
+		return reflected, nil
+	case p.connection != "" && len(through) == 0:
+		return fail(fmt.Sprintf("S%d only", order[0]), "S21 for a part between or beside two ports", "--connection reflection", ErrUsage)
+	case p.connection != "":
+		return through, nil
+	case len(through) > 0:
+		return fail(fmt.Sprintf("S%d without it", through[0]), "how the part was connected", "--connection series or --connection shunt", ErrConnection)
+	}
+	return reflected, nil
 }
 
 // sPairs are the ways an S-parameter may be given, in order of preference.

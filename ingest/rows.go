@@ -37,6 +37,9 @@ type reader struct {
 	faults   []*Error
 	more     int // faults beyond maxFaults
 
+	title     string // a line of words on its own since the last row
+	titleLine int32
+
 	names []string        // of the part column, in order
 	named map[string]bool // the same
 
@@ -304,8 +307,16 @@ func (r *reader) segmentFor(p *plan, seg *segment, f float64, rows int) *segment
 	if seg != nil && seg.continues(f) && r.pending.Part == "" && r.pending.Serial == "" {
 		r.meta = r.pending.merge(r.meta)
 		r.pending = Metadata{}
+		if r.title != "" {
+			r.drop(line{num: r.titleLine}, "a line of words between the rows")
+			r.title = ""
+		}
 		return seg
 	}
+	if r.pending.Part == "" {
+		r.pending.Part = r.title
+	}
+	r.title = ""
 	seg = r.newSegment(p)
 	// Where there is one table, this is its size; many blocks grow theirs.
 	if len(r.segments) == 1 {
@@ -561,7 +572,7 @@ func (r *reader) structure(i int, p *plan, cells []span, kind cellKind) structur
 		return lineSkip
 	case k.cells == 1 && k.numbers == 0 && (i == 0 || r.lines[i-1].num != l.num-1 || i+1 < len(r.lines) && r.lines[i+1].num != l.num+1):
 		// A title on its own after a blank line names the block below.
-		r.pending.Part = r.cell(cells[0])
+		r.title, r.titleLine = r.cell(cells[0]), l.num
 		return lineBreak
 	}
 	return lineFault

@@ -433,9 +433,6 @@ func (t *touchstone) build() {
 	refs := t.option.reference
 	ref := refs[0]
 	conn := t.opt.Connection
-	if t.ports <= 1 {
-		conn = ConnectionReflection
-	}
 	name := string(t.option.parameter)
 	where := &Error{File: t.name, Line: int(t.optLine.num), Column: 1, bare: true}
 	switch {
@@ -443,6 +440,12 @@ func (t *touchstone) build() {
 		where.Found, where.Expected = "only an option line", "rows of numbers"
 		p.faults = append(p.faults, where)
 		return
+	case t.ports <= 1 && (conn == ConnectionSeries || conn == ConnectionShunt):
+		where.Found, where.Expected, where.Hint, where.Err = "one port", "two ports for --connection "+conn, "--connection reflection, or none", ErrUsage
+		p.faults = append(p.faults, where)
+		return
+	case t.ports <= 1:
+		conn = ConnectionReflection
 	case conn == "":
 		where.Found, where.Expected, where.Hint, where.Err = "two ports", "how the part was connected",
 			"--connection series, shunt or reflection", ErrConnection

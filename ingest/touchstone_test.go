@@ -165,6 +165,10 @@ func TestTouchstoneErrors(t *testing.T) {
 	if err == nil || !strings.Contains(err.Error(), "the same reference resistance") {
 		t.Errorf("two references: %v", err)
 	}
+	_, err = Read("a.s1p", strings.NewReader("# Hz S RI R 50\n1 0 0\n"), &Options{Connection: ConnectionShunt})
+	if !errors.Is(err, ErrUsage) || !strings.Contains(err.Error(), "expected two ports for --connection shunt, found one port") {
+		t.Errorf("one port in shunt: %v", err)
+	}
 }
 
 // A perfect match in DB has no finite level.
@@ -175,6 +179,41 @@ func TestTouchstoneMatch(t *testing.T) {
 	}
 	if s := one(t, "a.s1p", b.String(), nil); !near(s.Z[0], 50, 1e-15) {
 		t.Errorf("%v", s.Z[0])
+	}
+}
+
+// S-parameters in a CSV: with S21 there, the connection must be told, and it
+// picks the parameter.
+func TestPortsInDelimitedText(t *testing.T) {
+	z := complex(3, -40)
+	row := func(of func(complex128) complex128) string {
+		v := of(z)
+		return "," + number(real(v)) + "," + number(imag(v))
+	}
+	s11 := func(z complex128) complex128 { return SFromImpedance(z, 50, ConnectionReflection) }
+	shunt := func(z complex128) complex128 { return SFromImpedance(z, 50, ConnectionShunt) }
+	head := "Freq (Hz)"
+	both := head + ",S11 re,S11 im,S21 re,S21 im\n1e6" + row(s11) + row(shunt) + "\n"
+	one11 := head + ",S11 re,S11 im\n1e6" + row(s11) + "\n"
+	one21 := head + ",S21 re,S21 im\n1e6" + row(shunt) + "\n"
+	for _, c := range []struct {
+		text, connection string
+		cause            error
+	}{
+		{both, "", ErrConnection}, {both, ConnectionReflection, nil}, {both, ConnectionShunt, nil},
+		{one11, "", nil}, {one11, ConnectionReflection, nil}, {one11, ConnectionShunt, ErrUsage},
+		{one21, "", ErrConnection}, {one21, ConnectionReflection, ErrUsage}, {one21, ConnectionShunt, nil},
+	} {
+		s, err := Read("a.csv", strings.NewReader(c.text), &Options{Connection: c.connection})
+		if c.cause != nil {
+			if !errors.Is(err, c.cause) {
+				t.Errorf("%q, %q: %v, want %v", c.text, c.connection, err, c.cause)
+			}
+			continue
+		}
+		if err != nil || !near(s[0].Z[0], z, 1e-12) {
+			t.Errorf("%q, %q: %v %v", c.text, c.connection, s, err)
+		}
 	}
 }
 

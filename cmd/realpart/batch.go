@@ -5,6 +5,7 @@ import (
 	"errors"
 	"fmt"
 	"io/fs"
+	"os"
 	"path"
 	"path/filepath"
 	"strings"
@@ -19,74 +20,262 @@ import (
 type fitted struct {
 	record   *report.Fit
 	sweep    *ingest.Sweep
-	analysis *fit.Analysis
-	err      error // nil unless it failed
+	analysis *fit.Analysis // nil also for a sweep that --resume skipped
+	err      error         // nil unless it failed
+	input    int           // the index of its input
+	held     *held         // where --json-out holds it from an earlier run
 }
 
 // batch fits all sweeps of the inputs and emits them in the order of the
-// inputs. Failed ones are told on standard error as they come, a line each,
-// and counted in a last line if there were several inputs. It returns the
-// error that carries the exit code.
+// inputs. A bad input never stops the rest: failures are told on standard
+// error at the end, a line each, and counted in a last line if there were
+// several inputs. It returns the error that carries the exit code.
+//
+// Only what is in work is in memory, so that a batch may be of any length: the
+// choice of a lot's circuit reads the lot twice, with what the first pass
+// found of each sweep in a file.
 func (f *fitFlags) batch(inputs []ingest.Input, s streams, emit func(fitted) error) error {
-	failures, code := 0, 0
-	err := fit.InOrder(context.Background(), len(inputs), f.jobs,
-		func(i int) []fitted { return f.fitInput(inputs[i], s) },
-		func(_ int, results []fitted) error {
-			for _, r := range results {
-				if r.err != nil {
-					failures++
-					code = max(code, exitCode(r.err))
-					fmt.Fprintln(s.err, "realpart:", oneLine(r.err.Error()))
-				} else if r.record.Status != report.Converged {
-					failures++
-					code = max(code, exitFailure)
-					fmt.Fprintf(s.err, "realpart: %s: the fit did not converge: %s\n", r.record.Sweep.File, oneLine(r.analysis.Result.Reason))
+	return f.batchLots(f.lots(inputs), s, emit)
+}
+
+// batchLots is batch of inputs that are grouped in lots.
+func (f *fitFlags) batchLots(lots []lot, s streams, emit func(fitted) error) error {
+	total := 0
+	for _, l := range lots {
+		total += len(l.inputs)
+	}
+	b := &batch{fitFlags: f, s: s, emit: emit}
+	if f.jsonOut != "" {
+		var err error
+		if b.store, err = openStore(f.jsonOut, f.settings(), f.resume); err != nil {
+			return err
+		}
+		defer b.store.Close()
+		b.complete = b.resume && b.holds(lots)
+	}
+	for _, l := range joinSingles(lots) {
+		if err := b.lot(l, total); err != nil {
+			return err
+		}
+	}
+	if b.store != nil {
+		if err := b.store.finish(); err != nil {
+			return err
+		}
+		os.Remove(f.jsonOut + trialsEnding) // if there is one
+	}
+	for _, line := range b.failures {
+		fmt.Fprintln(s.err, "realpart:", line)
+	}
+	if len(b.failures) == 0 {
+		return nil
+	}
+	if total > 1 {
+		fmt.Fprintf(s.err, "realpart: %d of %d inputs failed\n", len(b.failures), total)
+	}
+	return &exitError{code: b.code}
+}
+
+// joinSingles puts neighbouring inputs that are no lots together, so that they
+// are fitted in parallel.
+func joinSingles(lots []lot) []lot {
+	var out []lot
+	for _, l := range lots {
+		if n := len(out); n > 0 && !l.one && !out[n-1].one {
+			joined := append(out[n-1].inputs[:len(out[n-1].inputs):len(out[n-1].inputs)], l.inputs...)
+			out[n-1] = lot{inputs: joined}
+		} else {
+			out = append(out, l)
+		}
+	}
+	return out
+}
+
+// batch is the state of a run.
+type batch struct {
+	*fitFlags
+	s        streams
+	store    *store
+	emit     func(fitted) error
+	complete bool // the store holds the results of all sweeps, and no others
+	tried    bool // a lot has been through its first pass
+	first    int  // the index of the lot's first input
+	failures []string
+	code     int
+}
+
+// lot fits the inputs of a lot, or inputs that are none.
+func (b *batch) lot(l lot, total int) error {
+	defer func() { b.first += len(l.inputs) }()
+	var found *firstPass
+	if l.one && b.chooses() && len(l.inputs) > 1 && !b.complete {
+		var err error
+		if found, err = b.tryAll(l); err != nil {
+			return err
+		}
+		defer found.Close()
+	}
+	bar := b.newBar("fitting", len(l.inputs))
+	defer bar.finish()
+	return fit.InOrder(context.Background(), len(l.inputs), b.jobs,
+		func(i int) []fitted {
+			in := l.inputs[i]
+			sweeps, err := b.open(in, b.s)
+			bar.grow(len(sweeps) - 1)
+			if err != nil {
+				bar.add()
+				return []fitted{failed(report.Sweep{File: in.Display, Part: partOf(in.Display), Lot: in.Lot}, err)}
+			}
+			var trials []*fit.Trial
+			var choice *fit.LotChoice
+			if found != nil {
+				if trials, err = found.at(i, sweeps); err != nil {
+					return []fitted{failed(describe(sweeps[0]), fmt.Errorf("%s: %w", in.Display, err))}
 				}
-				if err := emit(r); err != nil {
+				choice = found.choice
+			}
+			jobs := 1
+			if len(l.inputs) == 1 {
+				jobs = b.jobs
+			}
+			return b.fitSweeps(sweeps, trials, choice, jobs, bar)
+		},
+		func(i int, results []fitted) error {
+			for _, r := range results {
+				r.input = b.first + i
+				if err := b.take(r); err != nil {
 					return err
 				}
 			}
 			return nil
 		})
-	if err != nil {
-		return err
-	}
-	if failures == 0 {
-		return nil
-	}
-	if len(inputs) > 1 {
-		fmt.Fprintf(s.err, "realpart: %d of %d inputs failed\n", failures, len(inputs))
-	}
-	return &exitError{code: code}
 }
 
-// fitInput reads one input and fits every sweep in it.
-func (f *fitFlags) fitInput(in ingest.Input, s streams) []fitted {
-	sweeps, err := f.open(in, s)
-	if err != nil {
-		return []fitted{failed(report.Sweep{File: in.Display, Part: partOf(in.Display), Lot: in.Lot}, err)}
+// take hands a result on, and notes its failure.
+func (b *batch) take(r fitted) error {
+	switch {
+	case r.err != nil:
+		b.code = max(b.code, exitCode(r.err))
+		b.failures = append(b.failures, oneLine(r.err.Error()))
+	case r.record.Status != report.Converged:
+		b.code = max(b.code, exitFailure)
+		b.failures = append(b.failures, fmt.Sprintf("%s: the fit did not converge: %s", r.record.Sweep.File, oneLine(r.analysis.Result.Reason)))
 	}
-	var out []fitted
-	for _, sweep := range sweeps {
-		identity := report.Sweep{
-			File: sweep.File, Part: sweep.Part, Lot: sweep.Lot, Points: len(sweep.Freq), SHA256: sweep.SHA256,
+	if b.store != nil {
+		if err := b.store.add(r); err != nil {
+			return err
 		}
-		for _, w := range sweep.Warnings {
-			identity.Warnings = append(identity.Warnings, fit.Warning{Code: w.Code, Text: w.Text})
-		}
-		analysis, err := f.analyse(sweep)
-		if err != nil {
-			where := sweep.File
-			if len(sweeps) > 1 {
-				where += " (" + sweep.Part + ")"
+	}
+	return b.emit(r)
+}
+
+// fitSweeps fits the sweeps of one input. Several without a lot's choice are
+// a lot of their own.
+func (b *batch) fitSweeps(sweeps []*ingest.Sweep, trials []*fit.Trial, choice *fit.LotChoice, jobs int, bar *bar) []fitted {
+	if choice == nil && b.chooses() && len(sweeps) > 1 && !b.complete {
+		tally := new(fit.Tally)
+		trials = make([]*fit.Trial, len(sweeps))
+		bar.grow(len(sweeps))
+		_ = fit.InOrder(context.Background(), len(sweeps), jobs,
+			func(i int) *fit.Trial { defer bar.add(); return b.try(sweeps[i]) },
+			func(i int, t *fit.Trial) error {
+				if trials[i] = t; t != nil {
+					tally.Add(t)
+				}
+				return nil
+			})
+		choice = tally.Choose()
+	}
+	out := make([]fitted, 0, len(sweeps))
+	// The error could only be that of emit or of the context.
+	_ = fit.InOrder(context.Background(), len(sweeps), jobs,
+		func(i int) fitted {
+			defer bar.add()
+			var trial *fit.Trial
+			if i < len(trials) {
+				trial = trials[i]
 			}
-			out = append(out, failed(identity, fmt.Errorf("%s: %w", where, err)))
-			continue
+			return b.fitSweep(sweeps[i], trial, choice, len(sweeps) > 1)
+		},
+		func(_ int, r fitted) error {
+			out = append(out, r)
+			return nil
+		})
+	return out
+}
+
+// try fits all circuits of a sweep's kind; nil where that failed, which the
+// fit itself will say.
+func (b *batch) try(sweep *ingest.Sweep) *fit.Trial {
+	freq, z, request, err := b.prepare(sweep)
+	if err != nil {
+		return nil
+	}
+	t, err := fit.Try(freq, z, request)
+	if err != nil {
+		return nil
+	}
+	return t
+}
+
+// fitSweep fits one sweep, with the circuit of its lot if there is a trial.
+func (b *batch) fitSweep(sweep *ingest.Sweep, trial *fit.Trial, choice *fit.LotChoice, several bool) fitted {
+	if r, ok := b.reuse(sweep, trial, choice); ok {
+		return r
+	}
+	who := describe(sweep)
+	fail := func(err error) fitted {
+		where := sweep.File
+		if several {
+			where += " (" + sweep.Part + ")"
 		}
-		used := analysis.Result.Freq
-		identity.UsedPoints, identity.FMin, identity.FMax = len(used), used[0], used[len(used)-1]
-		record := report.New(identity, analysis, report.Options{At: f.at, AccuracyStated: f.accuracy != ""})
-		out = append(out, fitted{record: record, sweep: sweep, analysis: analysis})
+		r := failed(who, fmt.Errorf("%s: %w", where, err))
+		r.sweep = sweep
+		return r
+	}
+	freq, z, request, err := b.prepare(sweep)
+	if err != nil {
+		return fail(err)
+	}
+	var analysis *fit.Analysis
+	if trial != nil && choice != nil {
+		analysis, err = choice.Analyse(freq, z, request, trial)
+	} else {
+		analysis, err = fit.Analyse(freq, z, request)
+	}
+	if err != nil {
+		return fail(err)
+	}
+	used := analysis.Result.Freq
+	who.UsedPoints, who.FMin, who.FMax = len(used), used[0], used[len(used)-1]
+	record := report.New(who, analysis, report.Options{At: b.at, AccuracyStated: b.accuracy != ""})
+	return fitted{record: record, sweep: sweep, analysis: analysis}
+}
+
+// describe says which sweep a record is of.
+func describe(sweep *ingest.Sweep) report.Sweep {
+	who := report.Sweep{
+		File: sweep.File, Part: sweep.Part, Lot: sweep.Lot, Points: len(sweep.Freq), SHA256: sweep.SHA256,
+		Metadata: metadata(sweep.Metadata),
+	}
+	for _, w := range sweep.Warnings {
+		who.Warnings = append(who.Warnings, fit.Warning{Code: w.Code, Text: w.Text})
+	}
+	return who
+}
+
+// metadata names what a file says of the measurement.
+func metadata(m ingest.Metadata) map[string]string {
+	out := map[string]string{}
+	for name, text := range map[string]string{
+		"serial": m.Serial, "date": m.Date, "test level": m.TestLevel, "bias": m.Bias, "temperature": m.Temperature,
+	} {
+		if text != "" {
+			out[name] = text
+		}
+	}
+	if len(out) == 0 {
+		return nil
 	}
 	return out
 }

@@ -23,17 +23,17 @@ intervals, the self-resonances, the residuals and the figures of data sheets.`,
 		Example: `  realpart fit c017.csv
   realpart fit --circuit 'ESR + ESL + C' --at 120Hz,100kHz lot-heron/
   realpart fit --accuracy 0.1%,0.05deg --json lot-heron/ > heron.jsonl`,
-		Args: sweepArguments,
+		Args: f.arguments,
 		RunE: func(_ *cobra.Command, args []string) error {
 			if err := f.check(); err != nil {
 				return err
 			}
-			if err := distinct(o.files(), args); err != nil {
+			if err := distinct(f.outputs(o.files()), args); err != nil {
 				return err
 			}
-			inputs, err := ingest.Find(args)
+			inputs, err := f.find(args, s)
 			if err != nil {
-				return &exitError{exitFailure, err}
+				return err
 			}
 			if f.showReading {
 				return f.showReadings(inputs, s)
@@ -46,21 +46,13 @@ intervals, the self-resonances, the residuals and the figures of data sheets.`,
 	flags.BoolVar(&o.json, "json", false, "JSON Lines on standard output, one object a sweep")
 	flags.StringVar(&o.csv, "csv", "", "write a table with one row a part to `FILE`")
 	flags.BoolVar(&o.all, "all", false, "print the table of candidates with the reason each was not chosen")
-	flags.BoolVar(&o.quiet, "quiet", false, "no progress, no cautions")
 	return cmd
-}
-
-func sweepArguments(_ *cobra.Command, args []string) error {
-	if len(args) == 0 {
-		return usagef("expected a sweep file, a folder or -, found none")
-	}
-	return nil
 }
 
 // fitOutputs are the forms in which `fit` reports.
 type fitOutputs struct {
-	json, all, quiet bool
-	csv              string
+	json, all bool
+	csv       string
 }
 
 // files lists the output files by their flags.
@@ -82,7 +74,7 @@ func (o *fitOutputs) run(f *fitFlags, inputs []ingest.Input, s streams) error {
 		if o.json {
 			return report.WriteJSON(s.out, r.record)
 		}
-		if r.err != nil {
+		if r.err != nil || f.jsonOut != "" {
 			return nil
 		}
 		var b bytes.Buffer
@@ -102,7 +94,7 @@ func (o *fitOutputs) run(f *fitFlags, inputs []ingest.Input, s streams) error {
 	if exit, ok := batchErr.(*exitError); batchErr != nil && (!ok || exit.err != nil) {
 		return batchErr
 	}
-	if !o.json && !o.quiet && !first {
+	if !o.json && !f.quiet && !first {
 		if err := writeCautions(s.out); err != nil {
 			return err
 		}

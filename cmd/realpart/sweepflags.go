@@ -50,6 +50,7 @@ func (f *readFlags) check() error {
 // fitFlags are the flags shared by the commands that fit.
 type fitFlags struct {
 	readFlags
+	batchFlags
 	kind, circuit, weight string
 	accuracy              string
 	fix, start            assignments
@@ -59,8 +60,9 @@ type fitFlags struct {
 	at                    frequencies
 	jobs                  int
 
-	// filled by check
-	request fit.Request
+	flags   *pflag.FlagSet
+	shared  *pflag.FlagSet // the names of these flags, see isShared
+	request fit.Request    // filled by check
 }
 
 func newFitFlags() *fitFlags {
@@ -73,6 +75,7 @@ func newFitFlags() *fitFlags {
 
 func (f *fitFlags) register(flags *pflag.FlagSet) {
 	f.readFlags.register(flags)
+	f.batchFlags.register(flags)
 	flags.StringVar(&f.kind, "kind", "auto", "`kind` of part: auto, capacitor, inductor, bead, resistor or resonator")
 	flags.StringVar(&f.circuit, "circuit", "", "library name or expression, such as `'ESR + ESL + (C || Rp)'`; without it the sweep chooses")
 	flags.Var(&f.fix, "fix", "hold a parameter: `NAME=VALUE`; may be repeated")
@@ -86,11 +89,15 @@ func (f *fitFlags) register(flags *pflag.FlagSet) {
 	flags.Var(&f.to, "to", "use only points up to this `FREQUENCY`")
 	flags.Var(&f.at, "at", "`FREQUENCIES` at which to give figures, such as 120Hz,100kHz")
 	flags.IntVar(&f.jobs, "jobs", 0, "parallel fits; 0: as many as processors")
+	f.flags = flags
 }
 
 // check reads all flags before any sweep is opened.
 func (f *fitFlags) check() error {
 	if err := f.readFlags.check(); err != nil {
+		return err
+	}
+	if err := f.batchFlags.check(); err != nil {
 		return err
 	}
 	kind := models.Kind(f.kind)
@@ -193,15 +200,15 @@ func (f *fitFlags) cut(s *ingest.Sweep) (freq []float64, z, sParameters []comple
 	return s.Freq[a:b], s.Z[a:b], sParameters
 }
 
-// analyse fits one sweep.
-func (f *fitFlags) analyse(s *ingest.Sweep) (*fit.Analysis, error) {
+// prepare returns what package fit needs of one sweep.
+func (f *fitFlags) prepare(s *ingest.Sweep) (freq []float64, z []complex128, request fit.Request, err error) {
 	freq, z, sParameters := f.cut(s)
 	if len(freq) == 0 {
-		return nil, &fit.InputError{Found: "no points from " + orEnd(f.from, "the start") + " to " + orEnd(f.to, "the end"),
+		return nil, nil, request, &fit.InputError{Found: "no points from " + orEnd(f.from, "the start") + " to " + orEnd(f.to, "the end"),
 			Expected: "points in a sweep from " + quantity.Format(s.Freq[0], "Hz", 4) + " to " + quantity.Format(s.Freq[len(s.Freq)-1], "Hz", 4),
 			Hint:     "change --from and --to"}
 	}
-	request := f.request
+	request = f.request
 	settings := *request.Settings
 	if s.S != nil {
 		settings.Reference, settings.Connection, settings.S = s.Reference, fit.Connection(s.Connection), sParameters
@@ -210,7 +217,7 @@ func (f *fitFlags) analyse(s *ingest.Sweep) (*fit.Analysis, error) {
 		}
 	}
 	request.Settings = &settings
-	return fit.Analyse(freq, z, request)
+	return freq, z, request, nil
 }
 
 func orEnd(h hertz, other string) string {

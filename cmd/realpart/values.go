@@ -38,6 +38,9 @@ func frequency(text string) (float64, error) {
 	return v, nil
 }
 
+// settings gives all digits.
+func (h *hertz) settings() string { return fmt.Sprint(float64(*h)) }
+
 // frequencies is a flag value: a list of frequencies.
 type frequencies []float64
 
@@ -59,6 +62,8 @@ func (f *frequencies) Set(text string) error {
 	}
 	return nil
 }
+
+func (f *frequencies) settings() string { return fmt.Sprint([]float64(*f)) }
 
 // share is a flag value such as 0.1%.
 type share float64
@@ -102,6 +107,14 @@ func (a *assignments) Set(text string) error {
 	a.names = append(a.names, name)
 	a.texts[name] = value
 	return nil
+}
+
+func (a *assignments) settings() string {
+	var s []string
+	for _, name := range sortedKeys(a.texts) {
+		s = append(s, name+"="+a.texts[name])
+	}
+	return strings.Join(s, " ")
 }
 
 // resolve reads the values with the units of the parameters: those of the

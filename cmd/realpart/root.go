@@ -47,6 +47,7 @@ func usagef(format string, args ...any) error {
 // run executes a command line and returns the exit code. It is all of the
 // program but the process, so that tests can run it.
 func run(args []string, s streams) int {
+	s.command = commandLine(args)
 	root := newRoot(s)
 	root.SetArgs(args)
 	root.SetIn(s.in)
@@ -81,6 +82,18 @@ func exitCode(err error) int {
 	return exitUsage // what is left is cobra's: unknown commands and flags
 }
 
+// commandLine returns the command as one could type it in a POSIX shell.
+func commandLine(args []string) string {
+	words := []string{"realpart"}
+	for _, a := range args {
+		if a == "" || strings.ContainsAny(a, " \t\n'\"\\$`*?[]{}()<>|&;#~!") {
+			a = "'" + strings.ReplaceAll(a, "'", `'\''`) + "'"
+		}
+		words = append(words, a)
+	}
+	return strings.Join(words, " ")
+}
+
 func oneLine(s string) string { return strings.Join(strings.Fields(s), " ") }
 
 func newRoot(s streams) *cobra.Command {
@@ -102,7 +115,7 @@ with honest uncertainty.`,
 	root.SetFlagErrorFunc(func(_ *cobra.Command, err error) error {
 		return &exitError{exitUsage, err}
 	})
-	root.AddCommand(newFit(s), newSimulate(s), newModels(s))
+	root.AddCommand(newFit(s), newDerate(s), newSimulate(s), newModels(s))
 	return root
 }
 

@@ -1,0 +1,402 @@
+package main
+
+import (
+	"errors"
+	"fmt"
+	"math"
+	"slices"
+	"strings"
+
+	"github.com/spf13/cobra"
+	"github.com/spf13/pflag"
+
+	"realpart/ingest"
+	"realpart/models/quantity"
+	"realpart/report"
+	"realpart/report/derating"
+)
+
+func newDerate(s streams) *cobra.Command {
+	f := newFitFlags()
+	d := newDerateFlags()
+	cmd := &cobra.Command{
+		Use:   "derate SWEEP… --ripple CURRENT",
+		Short: "Take a part to a ripple current: loss, temperature, margins",
+		Long: `Derate fits the sweep of a part, or the sweeps of a lot, and says what a ripple
+current does to it: the loss by harmonic, the temperature, the voltage, the
+margins to the limits that you give, and the largest ripple current. It judges
+only against limits that you give. Of a lot it takes the upper one-sided
+tolerance bound of the ESR (95 % of the lot with 95 % confidence).
+
+A ripple current is written as RMS values at frequencies, as a waveform, or is
+the name of a CSV file with the header frequency,i_rms or, for one period in
+equal steps, time,current:
+
+  100kHz=3.2A,200kHz=0.9A
+  triangle:2.4App@180kHz             peak to peak; duty= the share that rises
+  rectangle:3A,duty=0.3@100kHz       3 A is the step
+  trapezoid:3A,duty=0.3,rise=80ns@100kHz
+                                     duty between the middles of the edges,
+                                     fall= where it differs from rise
+
+Direct current, which heats a choke, is 0Hz=5A or mean=5A.
+
+Several sweeps that state temperatures 5 K or more apart, in the file or by
+--at-temperature, are one part at several temperatures.`,
+		Example: `  realpart derate c017.csv --ripple triangle:2.4App@180kHz --rth 18 --ambient 60 --limit 105 --margin 10
+  realpart derate lot-heron/ --ripple 120Hz=1.1A,100kHz=0.8A --rated-ripple 2.1A@100kHz --rated-rise 5K --ambient 60 --limit 105
+  realpart derate c017.csv --at-temperature c017.csv=23 --at-temperature c017-hot.csv=85 --ripple spectrum.csv --rth 18 --ambient 60`,
+		Args: f.arguments,
+		RunE: func(_ *cobra.Command, args []string) error {
+			if err := f.check(); err != nil {
+				return err
+			}
+			if err := d.check(f); err != nil {
+				return err
+			}
+			if err := distinct(f.outputs(d.files()), append(slices.Clone(args), d.temperatures.files...)); err != nil {
+				return err
+			}
+			inputs, err := f.find(args, s)
+			if err != nil {
+				return err
+			}
+			if f.showReading {
+				return f.showReadings(inputs, s)
+			}
+			return d.run(f, inputs, s)
+		},
+	}
+	f.register(cmd.Flags())
+	d.register(cmd.Flags())
+	return cmd
+}
+
+// amount is a flag of a value with a unit, nil until it is given.
+type amount struct {
+	unit  string
+	value *float64
+}
+
+func (a *amount) String() string {
+	if a.value == nil {
+		return ""
+	}
+	return quantity.Format(*a.value, a.unit, 6)
+}
+func (a *amount) Type() string { return a.unit }
+func (a *amount) Set(text string) error {
+	v, err := quantity.Parse(text, a.unit)
+	if err != nil {
+		return err
+	}
+	a.value = &v
+	return nil
+}
+
+// pair is a flag of two values, such as 2.1A@100kHz; nil until it is given.
+type pair struct {
+	units  [2]string
+	sample string
+	values *[2]float64
+}
+
+func (p *pair) String() string {
+	if p.values == nil {
+		return ""
+	}
+	return quantity.Format(p.values[0], p.units[0], 6) + "@" + quantity.Format(p.values[1], p.units[1], 6)
+}
+func (p *pair) Type() string { return p.sample }
+func (p *pair) Set(text string) error {
+	first, second, ok := strings.Cut(text, "@")
+	if !ok {
+		return fmt.Errorf("expected two values such as %s, found %q", p.sample, text)
+	}
+	var v [2]float64
+	for i, part := range []string{first, second} {
+		var err error
+		if v[i], err = quantity.Parse(part, p.units[i]); err != nil {
+			return err
+		}
+	}
+	p.values = &v
+	return nil
+}
+
+// temperatures is the repeatable flag FILE=T.
+type temperatures struct {
+	files  []string
+	values []float64 // °C
+}
+
+func (t *temperatures) String() string { return "" }
+func (t *temperatures) Type() string   { return "FILE=T" }
+func (t *temperatures) Set(text string) error {
+	i := strings.LastIndex(text, "=")
+	if i <= 0 || i == len(text)-1 {
+		return fmt.Errorf("expected FILE=T, such as c017-hot.csv=85, found %q", text)
+	}
+	v, err := quantity.Parse(text[i+1:], "°C")
+	if err != nil {
+		return err
+	}
+	file := text[:i]
+	if slices.ContainsFunc(t.files, func(f string) bool { return identity(f) == identity(file) }) {
+		return fmt.Errorf("expected each file once, found %s again", file)
+	}
+	t.files, t.values = append(t.files, file), append(t.values, v)
+	return nil
+}
+
+// of returns the temperature stated for a file.
+func (t *temperatures) of(file string) (float64, bool) {
+	for i, f := range t.files {
+		if identity(f) == identity(file) {
+			return t.values[i], true
+		}
+	}
+	return 0, false
+}
+
+// derateFlags are those of `derate` alone.
+type derateFlags struct {
+	ripple                                             string
+	json                                               bool
+	rth, ratedRise, ratedESR                           amount
+	ratedRipple, life                                  pair
+	ambient, limit, margin, dc, ratedVoltage, fraction amount
+	temperatures                                       temperatures
+
+	// filled by check
+	spectrum   *derating.Spectrum
+	conditions derating.Conditions
+}
+
+func newDerateFlags() *derateFlags {
+	return &derateFlags{
+		rth: amount{unit: "K/W"}, ratedRise: amount{unit: "K"}, ratedESR: amount{unit: "Ω"},
+		ratedRipple: pair{units: [2]string{"A", "Hz"}, sample: "2.1A@100kHz"},
+		life:        pair{units: [2]string{"h", "°C"}, sample: "5000h@105C"},
+		ambient:     amount{unit: "°C"}, limit: amount{unit: "°C"}, margin: amount{unit: "K"},
+		dc: amount{unit: "V"}, ratedVoltage: amount{unit: "V"}, fraction: amount{unit: "1"},
+	}
+}
+
+func (d *derateFlags) register(flags *pflag.FlagSet) {
+	flags.StringVar(&d.ripple, "ripple", "", "the ripple `CURRENT`: 100kHz=3.2A,200kHz=0.9A (RMS), triangle:2.4App@180kHz, a CSV file …")
+	flags.Var(&d.rth, "rth", "thermal resistance from the part's hot spot to ambient, `K/W`")
+	flags.Var(&d.ratedRipple, "rated-ripple", "the data sheet's ripple current (RMS) and its frequency, such as `2.1A@100kHz`: with --rated-rise it gives the thermal resistance")
+	flags.Var(&d.ratedRise, "rated-rise", "the rise that the rated ripple current permits, in `K`")
+	flags.Var(&d.ratedESR, "rated-esr", "the `ESR` that the rating stands for; without it that of the fit, for a lot the mean")
+	flags.Var(&d.ambient, "ambient", "ambient temperature in `°C`")
+	flags.Var(&d.limit, "limit", "highest hot spot in `°C`")
+	flags.Var(&d.margin, "margin", "what the hot spot must stay below the limit, in `K`")
+	flags.Var(&d.dc, "dc", "direct voltage across the capacitor, `V`")
+	flags.Var(&d.ratedVoltage, "rated-voltage", "rated voltage, `V`")
+	flags.Var(&d.fraction, "voltage-factor", "the share of the rated voltage that you permit, a `NUMBER` up to 1")
+	flags.Var(&d.life, "life", "life of a wet aluminium electrolytic and the temperature that it is stated for, such as `5000h@105C`")
+	flags.Var(&d.temperatures, "at-temperature", "`FILE=T`: a sweep of the same part at a temperature in °C; may be repeated")
+	flags.BoolVar(&d.json, "json", false, "one JSON object on standard output")
+}
+
+// files lists the output files by their flags.
+func (d *derateFlags) files() map[string]string {
+	return map[string]string{}
+}
+
+// check reads all flags before any sweep is opened.
+func (d *derateFlags) check(f *fitFlags) error {
+	if d.ripple == "" {
+		return usagef("--ripple: expected a ripple current such as triangle:2.4App@180kHz, found none")
+	}
+	if f.resume {
+		return usagef("--resume: expected a fit of every sweep, which derate needs, found the wish to skip some; leave it out")
+	}
+	positive := []struct {
+		flag  string
+		value *float64
+	}{
+		{"--rth", d.rth.value}, {"--rated-rise", d.ratedRise.value}, {"--rated-esr", d.ratedESR.value},
+		{"--rated-voltage", d.ratedVoltage.value}, {"--voltage-factor", d.fraction.value},
+	}
+	if p := d.ratedRipple.values; p != nil {
+		positive = append(positive, struct {
+			flag  string
+			value *float64
+		}{"--rated-ripple", &p[0]}, struct {
+			flag  string
+			value *float64
+		}{"--rated-ripple", &p[1]})
+	}
+	if p := d.life.values; p != nil {
+		positive = append(positive, struct {
+			flag  string
+			value *float64
+		}{"--life", &p[0]})
+	}
+	for _, q := range positive {
+		if q.value != nil && !(*q.value > 0) {
+			return usagef("%s: expected a value above 0, found %v", q.flag, *q.value)
+		}
+	}
+	const zero = -273.15 // °C
+	temperatures := append([]float64{}, d.temperatures.values...)
+	for _, t := range []*float64{d.ambient.value, d.limit.value} {
+		if t != nil {
+			temperatures = append(temperatures, *t)
+		}
+	}
+	if p := d.life.values; p != nil {
+		temperatures = append(temperatures, p[1])
+	}
+	for _, t := range temperatures {
+		if !(t > zero) {
+			return usagef("--ambient, --limit, --life, --at-temperature: expected a temperature above −273.15 °C, found %v °C", t)
+		}
+	}
+	given := func(v *float64) bool { return v != nil }
+	hot := given(d.rth.value) || d.ratedRipple.values != nil
+	for _, rule := range []struct {
+		broken bool
+		text   string
+	}{
+		{given(d.rth.value) && d.ratedRipple.values != nil, "--rth, --rated-ripple: expected one of them, found both"},
+		{d.ratedRipple.values != nil && !given(d.ratedRise.value), "--rated-ripple: expected --rated-rise with it, found none; state the rise that the data sheet gives for that current"},
+		{given(d.ratedRise.value) && d.ratedRipple.values == nil, "--rated-rise: expected --rated-ripple with it, found none"},
+		{given(d.ratedESR.value) && d.ratedRipple.values == nil, "--rated-esr: expected --rated-ripple with it, found none"},
+		{given(d.limit.value) && !(hot && given(d.ambient.value)), "--limit: expected --ambient, and --rth or --rated-ripple, so that there is a hot spot to compare with, found not all of them"},
+		{given(d.ambient.value) && !hot, "--ambient: expected --rth or --rated-ripple with it, found neither"},
+		{d.life.values != nil && !(hot && given(d.ambient.value)), "--life: expected --ambient, and --rth or --rated-ripple, so that there is a hot spot, found not all of them"},
+		{given(d.margin.value) && !given(d.limit.value), "--margin: expected --limit with it, found none"},
+		{given(d.margin.value) && *orZero(d.margin.value) < 0, "--margin: expected 0 K or more, found less"},
+		{given(d.ratedVoltage.value) && !given(d.dc.value), "--rated-voltage: expected --dc with it, found none; 0 stands for no direct voltage"},
+		{given(d.fraction.value) && !given(d.ratedVoltage.value), "--voltage-factor: expected --rated-voltage with it, found none"},
+		{*orZero(d.fraction.value) > 1, "--voltage-factor: expected a number up to 1, found more"},
+	} {
+		if rule.broken {
+			return usagef("%s", rule.text)
+		}
+	}
+	var err error
+	if d.spectrum, err = readRipple(d.ripple); err != nil {
+		return err
+	}
+	c := derating.Conditions{
+		RTh: d.rth.value, Ambient: d.ambient.value, Limit: d.limit.value, Margin: *orZero(d.margin.value),
+		AccuracyStated: f.accuracy != "",
+	}
+	if p := d.ratedRipple.values; p != nil {
+		c.Rating = &derating.Rating{Current: p[0], Freq: p[1], Rise: *d.ratedRise.value, ESR: d.ratedESR.value}
+	}
+	if d.dc.value != nil {
+		c.Voltage = &derating.VoltageConditions{DC: *d.dc.value, Rated: d.ratedVoltage.value, Factor: d.fraction.value}
+	}
+	if p := d.life.values; p != nil {
+		c.Life = &derating.LifeRating{Hours: p[0], TemperatureC: p[1]}
+	}
+	d.conditions = c
+	return nil
+}
+
+func orZero(v *float64) *float64 {
+	if v == nil {
+		return new(float64)
+	}
+	return v
+}
+
+func (d *derateFlags) run(f *fitFlags, inputs []ingest.Input, s streams) error {
+	// Files that only --at-temperature names are of the part, not of the lot.
+	var more []string
+	for _, file := range d.temperatures.files {
+		if !slices.ContainsFunc(inputs, func(in ingest.Input) bool { return identity(in.Path) == identity(file) }) {
+			more = append(more, file)
+		}
+	}
+	extra, err := ingest.Find(more)
+	if err != nil {
+		return &exitError{exitFailure, err}
+	}
+	var parts, series []derating.Sweep
+	groups := []lot{{inputs, len(inputs) > 1}, {extra, len(extra) > 1}}
+	batchErr := f.batchLots(groups[:1+min(1, len(extra))], s, func(r fitted) error {
+		if r.err != nil || r.record.Status != report.Converged {
+			return nil
+		}
+		in := append(inputs[:len(inputs):len(inputs)], extra...)[r.input]
+		sweep := derating.Sweep{
+			File: r.record.Sweep.File, Part: r.record.Sweep.Part, SHA256: r.record.Sweep.SHA256,
+			Kind: r.analysis.Kind, Fit: r.analysis.Result, Temperature: math.NaN(),
+		}
+		if m := r.sweep.Metadata; m.HasTemperature {
+			sweep.Temperature = m.TemperatureC
+		}
+		if t, ok := d.temperatures.of(in.Path); ok {
+			sweep.Temperature = t
+		}
+		if r.input >= len(inputs) {
+			series = append(series, sweep)
+			return nil
+		}
+		parts = append(parts, sweep)
+		if lot := r.record.Sweep.Lot; len(parts) == 1 {
+			d.conditions.Lot = lot
+		} else if lot != d.conditions.Lot {
+			d.conditions.Lot = ""
+		}
+		return nil
+	})
+	if exit, ok := batchErr.(*exitError); batchErr != nil && (!ok || exit.err != nil) {
+		return batchErr
+	}
+	if len(parts) == 0 {
+		return batchErr
+	}
+	if onePart(parts) {
+		series = append(parts[:len(parts):len(parts)], series...)
+		parts = parts[:1]
+	}
+	assessment, err := derating.Assess(parts, series, d.spectrum, d.conditions)
+	if err != nil {
+		return errors.Join(err, batchErr)
+	}
+	if d.json {
+		err = assessment.WriteJSON(s.out)
+	} else {
+		err = assessment.WriteText(s.out, derating.TextOptions{Width: min(terminalWidth(s.out), 100), Quiet: f.quiet})
+	}
+	if err != nil {
+		return err
+	}
+	if batchErr == nil && assessment.Verdict == derating.Exceeded {
+		return &exitError{code: exitNo}
+	}
+	return batchErr
+}
+
+// apart is the difference in K from which two stated temperatures are meant to
+// differ; a lot is measured at one, give or take the room's.
+const apart = 5
+
+// onePart tells one part at several temperatures from a lot: all sweeps state
+// one, and no two are alike.
+func onePart(sweeps []derating.Sweep) bool {
+	if len(sweeps) < 2 {
+		return false
+	}
+	var t []float64
+	for _, s := range sweeps {
+		if math.IsNaN(s.Temperature) {
+			return false
+		}
+		t = append(t, s.Temperature)
+	}
+	slices.Sort(t)
+	for i := 1; i < len(t); i++ {
+		if t[i]-t[i-1] < apart {
+			return false
+		}
+	}
+	return true
+}

@@ -171,10 +171,10 @@ func (b *builder) nameParts() {
 		switch {
 		case label == "":
 			d.label = fmt.Sprintf("%s-%d", base, seen[d.label])
+		case isCount(label) && count[d.label] == 1:
+			d.label = base + "-" + label[1:]
 		case count[d.label] > 1:
-			d.label = fmt.Sprintf("%s-%d", label, seen[label])
-		case isCount(label):
-			d.label = base + "-" + label
+			d.label = fmt.Sprintf("%s-%d", strings.TrimPrefix(label, "\x00"), seen[d.label])
 		default:
 			d.label = label
 		}
@@ -191,6 +191,5 @@ func (b *builder) explicitLabel() bool {
 	return false
 }
 
-func isCount(s string) bool {
-	return s != "" && strings.Trim(s, "0123456789") == "" && len(s) <= 3
-}
+// isCount recognises the labels of counted.
+func isCount(s string) bool { return strings.HasPrefix(s, "\x00") }

@@ -191,6 +191,10 @@ func (b *builder) addGroup(seg *segment, g *group) {
 	}
 	b.assume(seg, g.freq, way.a, way.b)
 	b.reading.markUsed(seg.plan, way)
+	meta := seg.meta.merge(b.reader.meta)
+	if !b.conditions(seg, g, way, f, &meta) {
+		return
+	}
 	conn, ref := "", 0.0
 	if s != nil {
 		conn, ref = b.connection(way.port)
@@ -198,7 +202,6 @@ func (b *builder) addGroup(seg *segment, g *group) {
 			ref = b.reference(seg)
 		}
 	}
-	meta := seg.meta.merge(b.reader.meta)
 	add := func(label string) *partData {
 		d := &partData{label: label, meta: meta, connection: conn, reference: ref}
 		if s != nil {
@@ -250,6 +253,57 @@ func (b *builder) addGroup(seg *segment, g *group) {
 		}
 		put(d, i)
 	}
+}
+
+// conditions looks at columns of bias and temperature: a constant one is
+// metadata; one that varies while frequencies repeat makes several sweeps, and
+// the caller must say so.
+func (b *builder) conditions(seg *segment, g *group, w measured, f []float64, meta *Metadata) bool {
+	p := seg.plan
+	for i, c := range p.cols {
+		if c.role != roleBias && c.role != roleTemperature || seg.slot[i] < 0 {
+			continue
+		}
+		v := seg.column(i)
+		low, high := math.Inf(1), math.Inf(-1)
+		for _, x := range v {
+			low, high = min(low, x), max(high, x) // NaN where a cell is empty
+		}
+		switch {
+		case low == high:
+			text := number(low) + " " + firstNonEmpty(c.unit.dim, roles[c.role].dim)
+			if c.role == roleBias && meta.Bias == "" {
+				meta.Bias = text
+				meta.BiasV, meta.BiasA, meta.HasBias = voltsOrAmps(text, "")
+			}
+			if c.role == roleTemperature && meta.Temperature == "" {
+				meta.Temperature, meta.TemperatureC, meta.HasTemperature = text, low, true
+			}
+		case low < high && seg.part == nil && repeats(f):
+			hint := fmt.Sprintf("--columns 'f=%d", g.freq+1)
+			for _, k := range []int{w.a, w.b} {
+				if k >= 0 && roles[p.cols[k].role].key != "" {
+					hint += fmt.Sprintf(",%s=%d", roles[p.cols[k].role].key, k+1)
+				}
+			}
+			e := b.headError(p, i, "one sweep at one "+roles[c.role].name, fmt.Sprintf("%s,part=%d' to read one sweep for each", hint, i+1))
+			e.Found, e.bare, e.Err = fmt.Sprintf("several, from %g to %g", low, high), true, ErrAmbiguous
+			b.refuse(e)
+			return false
+		}
+	}
+	return true
+}
+
+func repeats(f []float64) bool {
+	seen := make(map[float64]bool, len(f))
+	for _, x := range f {
+		if seen[x] {
+			return true
+		}
+		seen[x] = true
+	}
+	return false
 }
 
 // allDifferent: each row has another "part", so the column counts rows.

@@ -3,7 +3,6 @@ package ingest
 import (
 	"cmp"
 	"fmt"
-	"math"
 	"math/cmplx"
 	"slices"
 )
@@ -156,62 +155,88 @@ func ascending(f []float64) bool {
 	return true
 }
 
-// mergePoints sorts the points and averages those at the same frequency. Where
-// a large part of the sweep is there twice and the two differ, they are more
-// likely two parts or two bias levels, and the file is refused.
+// mergePoints sorts the points and averages those at the same frequency, unless
+// the repetitions look like several sweeps in one.
 func mergePoints(f []float64, z, sp []complex128, line []int32, order []int) ([]float64, []complex128, []complex128, *Warning, *Error) {
 	var of []float64
 	var oz, os []complex128
-	merged, apart := 0, 0
-	worst, worstLine := 0.0, int32(0)
+	var seen repetition
 	for i := 0; i < len(order); {
 		j := i + 1
 		for j < len(order) && f[order[j]] == f[order[i]] {
 			j++
 		}
-		first := order[i]
-		var sumZ, sumS complex128
-		for _, k := range order[i:j] {
-			// Dividing before adding keeps the sum finite.
-			sumZ += z[k] / complex(float64(j-i), 0)
+		same := order[i:j]
+		seen.add(z, line, same)
+		if mean := average(z, same); mean != 0 && !cmplx.IsInf(mean) {
+			of = append(of, f[same[0]])
+			oz = append(oz, mean)
 			if sp != nil {
-				sumS += sp[k] / complex(float64(j-i), 0)
-			}
-			if k != first {
-				if d := cmplx.Abs(z[k]-z[first]) / max(cmplx.Abs(z[first]), cmplx.Abs(z[k])); d > 0.1 {
-					apart++
-					if d > worst {
-						worst, worstLine = d, line[k]
-					}
-				}
-			}
-		}
-		if j-i == 1 {
-			sumZ = z[first]
-		} else {
-			merged += j - i - 1
-		}
-		if sumZ != 0 && !cmplx.IsNaN(sumZ) && !math.IsInf(cmplx.Abs(sumZ), 0) {
-			of = append(of, f[first])
-			oz = append(oz, sumZ)
-			if sp != nil {
-				if j-i == 1 {
-					sumS = sp[first]
-				}
-				os = append(os, sumS)
+				os = append(os, average(sp, same))
 			}
 		}
 		i = j
 	}
-	if merged > 0 && apart > 0 && 4*apart >= len(of) {
-		return nil, nil, nil, nil, &Error{Line: int(worstLine), Column: 1, bare: true, Err: ErrAmbiguous,
-			Found:    fmt.Sprintf("%d repeated frequencies with impedances up to %.3g %% apart", apart, 100*worst),
-			Expected: "one impedance at each frequency of a part",
-			Hint:     "--columns with part=…, or a blank line between the parts"}
+	if seen.merged == 0 {
+		return of, oz, os, nil, nil
 	}
-	var w *Warning
-	if merged > 0 {
-		w = &Warning{WarnDuplicate, fmt.Sprintf("%d points at a frequency that occurs more than once were averaged with it", merged)}
+	if e := seen.refuse(len(of)); e != nil {
+		return nil, nil, nil, nil, e
 	}
-	return of, oz, os, w, nil
+	return of, oz, os, &Warning{WarnDuplicate, fmt.Sprintf("%d points at a frequency that occurs more than once were averaged with it", seen.merged)}, nil
+}
+
+// average is the mean of some values; dividing before adding keeps it finite.
+func average(v []complex128, at []int) complex128 {
+	if len(at) == 1 {
+		return v[at[0]]
+	}
+	var sum complex128
+	for _, k := range at {
+		sum += v[k] / complex(float64(len(at)), 0)
+	}
+	return sum
+}
+
+// repetition counts points at frequencies that were there before, and how far
+// they lie from the first.
+type repetition struct {
+	merged int
+	far    int       // more than 10 %
+	again  []float64 // differences in a later run through the frequencies, not in the next row
+	worst  float64
+	line   int32 // of the worst
+}
+
+func (r *repetition) add(z []complex128, line []int32, same []int) {
+	first := z[same[0]]
+	for n, k := range same[1:] {
+		d := cmplx.Abs(z[k]-first) / max(cmplx.Abs(first), cmplx.Abs(z[k]))
+		r.merged++
+		if d > 0.1 {
+			r.far++
+		}
+		if d > r.worst {
+			r.worst, r.line = d, line[k]
+		}
+		if k != same[n]+1 {
+			r.again = append(r.again, d)
+		}
+	}
+}
+
+// refuse is the error where a large part of a sweep of so many points is there
+// twice and the two differ, a quarter of it by more than 10 %, or in a second run
+// through the frequencies half of it by more than 1 %: then they are more likely
+// two parts or two bias levels than one part measured again.
+func (r *repetition) refuse(points int) *Error {
+	slices.Sort(r.again)
+	n := len(r.again)
+	if !(r.far > 0 && 4*r.far >= points || n > 0 && 2*n >= points && r.again[n/2] > 0.01) {
+		return nil
+	}
+	return &Error{Line: int(r.line), Column: 1, bare: true, Err: ErrAmbiguous,
+		Found:    fmt.Sprintf("%d repeated frequencies with impedances up to %.3g %% apart", r.merged, 100*r.worst),
+		Expected: "one impedance at each frequency of a part",
+		Hint:     "--columns with part=…, or a blank line between the parts"}
 }

@@ -217,7 +217,7 @@ func (s *source) unitRow(t *table, texts []string) bool {
 		}
 		u, ok, ambiguous := readUnitCell(text)
 		if !ok {
-			if i < len(t.cols) && t.cols[i].known() && t.cols[i].role != rolePart {
+			if i < len(t.cols) && t.cols[i].role.quantity() {
 				return false
 			}
 			continue
@@ -290,7 +290,7 @@ func (s *source) groupRow(t *table) {
 			label = texts[i]
 		}
 		labels[i] = label
-		if r := t.cols[i].role; r != roleFreq && r != roleOmega && label != "" {
+		if t.cols[i].role.quantity() && label != "" {
 			distinct[label] = true
 		}
 	}
@@ -298,7 +298,7 @@ func (s *source) groupRow(t *table) {
 		return
 	}
 	for i := range t.cols {
-		if r := t.cols[i].role; r != roleFreq && r != roleOmega && r != roleNone {
+		if t.cols[i].role.quantity() {
 			t.cols[i].label = labels[i]
 		}
 	}
@@ -308,7 +308,7 @@ func (s *source) groupRow(t *table) {
 func repeatsRole(cols []heading) bool {
 	seen := map[heading]bool{}
 	for _, c := range cols {
-		if !c.known() || c.role == roleFreq || c.role == roleOmega || c.role == rolePart {
+		if !c.role.quantity() {
 			continue
 		}
 		k := heading{role: c.role, port: c.port, label: c.label}

@@ -92,6 +92,24 @@ func TestSideBySideGaps(t *testing.T) {
 	}
 }
 
+// A column of conditions: constant it is metadata, else it can name the sweeps;
+// where frequencies do not repeat it only wanders.
+func TestConditionColumns(t *testing.T) {
+	rows := "25.0,5,100,10,0.01\n25.0,5,1000,10,0.01\n25.0,5,10000,10,0.01\n"
+	head := "Temp (°C),DC Bias (V),Frequency (Hz),Cs (nF),D\n"
+	s := one(t, "a.csv", head+rows, nil)
+	if m := s.Metadata; m.TemperatureC != 25 || !m.HasTemperature || m.BiasV != 5 || !m.HasBias || m.Bias != "5 V" || len(s.Warnings) != 0 {
+		t.Errorf("%+v %v", m, s.Warnings)
+	}
+	if m := one(t, "a.csv", head+strings.Replace(rows, "25.0", "25.3", 1), nil).Metadata; m.HasTemperature {
+		t.Errorf("a temperature that wanders is %v", m.TemperatureC)
+	}
+	two := read(t, "a.csv", head+rows+strings.ReplaceAll(rows, "25.0,5,", "85,5,"), &Options{Columns: Columns{"f": "3", "cs": "4", "d": "5", "part": "1"}})
+	if len(two) != 2 || two[0].Part != "25.0" || two[1].Part != "85" {
+		t.Errorf("%d sweeps", len(two))
+	}
+}
+
 // A line of words within a sweep is no new part.
 func TestWordsBetweenRows(t *testing.T) {
 	s := one(t, "a.csv", "f (Hz),R (Ohm),X (Ohm)\n100,1,2\n\nrange changed\n200,1,2\n300,1,2\n", nil)

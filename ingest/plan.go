@@ -306,7 +306,7 @@ func (s *source) groupByFreq(p *plan, freqs []int, part int) *Error {
 			return err
 		}
 		if g.label == "" {
-			g.label = fmt.Sprint(n + 1)
+			g.label = counted(n + 1)
 		}
 		p.groups = append(p.groups, g)
 	}
@@ -323,7 +323,7 @@ func (s *source) groupByLabel(p *plan, freq, part int) *Error {
 	order := []string{}
 	byLabel := map[string][]int{}
 	for i, c := range p.cols {
-		if !c.known() || i == freq || c.role == rolePart {
+		if !c.role.quantity() || i == freq {
 			continue
 		}
 		if _, ok := byLabel[c.label]; !ok {
@@ -375,7 +375,7 @@ func (s *source) labelColumns(p *plan) {
 			continue
 		}
 		h, label, ok := splitLabel(c.text, words)
-		if !ok || h.role == roleFreq || h.role == roleOmega || h.role == rolePart {
+		if !ok || !h.role.quantity() {
 			continue
 		}
 		got[i] = found{h, label, true}
@@ -501,6 +501,10 @@ func withoutTrace(label string) string {
 	return ""
 }
 
+// counted labels a part that has no name of its own; the sign in front tells it
+// from a part that is called by a number.
+func counted(n int) string { return "\x00" + strconv.Itoa(n) }
+
 // numberRepeats labels columns by the count of their role, if all measured
 // roles repeat equally often.
 func numberRepeats(cols []heading) {
@@ -510,7 +514,7 @@ func numberRepeats(cols []heading) {
 	}
 	count := map[key]int{}
 	for _, c := range cols {
-		if c.known() && c.role != roleFreq && c.role != roleOmega && c.role != rolePart {
+		if c.role.quantity() {
 			count[key{c.role, c.port}]++
 		}
 	}
@@ -529,10 +533,10 @@ func numberRepeats(cols []heading) {
 	seen := map[key]int{}
 	for i := range cols {
 		c := &cols[i]
-		if c.known() && c.role != roleFreq && c.role != roleOmega && c.role != rolePart {
+		if c.role.quantity() {
 			k := key{c.role, c.port}
 			seen[k]++
-			c.label = fmt.Sprint(seen[k])
+			c.label = counted(seen[k])
 		}
 	}
 }
@@ -550,7 +554,7 @@ func (s *source) group(p *plan, idx []int, freq, part int, label string) (group,
 	for _, i := range idx {
 		c := p.cols[i]
 		switch {
-		case i == freq || !c.known() || c.role == rolePart:
+		case i == freq || !c.role.quantity():
 			continue
 		case c.port != 0:
 			if ports[c.port] == nil {
@@ -609,7 +613,7 @@ func (s *source) group(p *plan, idx []int, freq, part int, label string) (group,
 	// A single quantity: another file or block may hold its partner.
 	if others == 1 {
 		for _, i := range idx {
-			if c := p.cols[i]; i != freq && c.known() && c.role != rolePart {
+			if c := p.cols[i]; i != freq && c.role.quantity() {
 				g.half = i
 			}
 		}
@@ -679,7 +683,7 @@ func orKey(r role) string {
 func (s *source) noPair(p *plan, idx []int, freq int) *Error {
 	var have []string
 	for _, i := range idx {
-		if c := p.cols[i]; c.known() && i != freq {
+		if c := p.cols[i]; c.role.quantity() && i != freq {
 			have = append(have, roles[c.role].name)
 		}
 	}
@@ -764,6 +768,9 @@ func (p *plan) collect() {
 				}
 			}
 		}
+	}
+	for i, c := range p.cols {
+		also[i] = also[i] || c.role == roleBias || c.role == roleTemperature
 	}
 	p.need, p.also = p.need[:0], p.also[:0]
 	for i := range p.cols {

@@ -14,6 +14,8 @@ const (
 	roleFreq
 	roleOmega // angular frequency
 	rolePart
+	roleBias        // conditions of the measurement, which may make several
+	roleTemperature // sweeps of one table
 	// Parts of the impedance Z = R + jX and the admittance Y = G + jB.
 	roleZ // complex literal
 	roleY
@@ -62,6 +64,8 @@ var roles = [numRoles]roleInfo{
 	roleFreq:        {"frequency", "f", "Hz"},
 	roleOmega:       {"angular frequency", "", "rad/s"},
 	rolePart:        {"part", "part", ""},
+	roleBias:        {"DC bias", "", "V"},
+	roleTemperature: {"temperature", "", "°C"},
 	roleZ:           {"complex Z", "", "Ω"},
 	roleY:           {"complex Y", "", "S"},
 	roleAbsZ:        {"|Z|", "z", "Ω"},
@@ -92,6 +96,15 @@ var roles = [numRoles]roleInfo{
 	roleIm:          {"an imaginary part", "", ""},
 	roleCapacitance: {"a capacitance", "", "F"},
 	roleInductance:  {"an inductance", "", "H"},
+}
+
+// quantity reports whether a column says something about the impedance.
+func (r role) quantity() bool {
+	switch r {
+	case roleNone, roleFreq, roleOmega, rolePart, roleBias, roleTemperature:
+		return false
+	}
+	return true
 }
 
 // isAngle: kept in radians once the unit is known.
@@ -189,6 +202,8 @@ var names = buildNames(map[role]string{
 	roleOmega: `omega ω angularfrequency angfreq kreisfrequenz`,
 	rolePart: `part partid partname partlabel serial serialno serialnumber serialnr sn s/n dut dutid dutname sample samplename sampleid
 		specimen specimenid device deviceid component componentid bauteil prüfling`,
+	roleBias:        `bias dcbias biasvoltage dcbiasvoltage dcvoltage vbias ubias vdc biaslevel biascurrent dcbiascurrent ibias idc`,
+	roleTemperature: `temperature temp temperatur ambienttemperature t(°c)`,
 	roleAbsZ: `|z| z zmag magz absz abs(z) |z|mag mag|z| mag(z) magnitude(z) modz mod(z) zmod zabs zmagnitude impedance |impedance| impedancemagnitude
 		magnitudeofimpedance magnitudez impedancemag absimpedance impedanceabs impedanz impedanzbetrag scheinwiderstand impédance impedancia impedanza impedancemodulus`,
 	rolePhase: `theta θ thetaz θz ztheta zθ phasez zphase phase(z) phaseofz arg(z) argz angle(z) anglez zangle ang(z) angz zang ∠z ∠ impedancephase phaseofimpedance

@@ -81,7 +81,7 @@ func (r *Reading) setPlan(s *source, pl *plan) {
 	}
 	r.Columns = nil
 	for i, c := range pl.cols {
-		cr := ColumnReading{Number: i + 1, Header: c.text, Role: roles[c.role].name, Unit: c.unit.text, Part: c.label,
+		cr := ColumnReading{Number: i + 1, Header: c.text, Role: roles[c.role].name, Unit: c.unit.text, Part: strings.TrimPrefix(c.label, "\x00"),
 			Used: used[i] || c.role == rolePart, Compare: compare[i]}
 		if c.port != 0 {
 			cr.Role = strings.Replace(cr.Role, "S", fmt.Sprintf("S%d", c.port), 1)

@@ -39,6 +39,13 @@ func (a Advice) String() string {
 		pointCount(a.Points), quantity.Format(a.From, "Hz", 3), quantity.Format(a.To, "Hz", 3), a.Parameter, percent(a.Then), now)
 }
 
+// An advice is given if it makes the interval at least that much smaller, and
+// no more than so many.
+const (
+	worthwhile = 0.95
+	mostAdvice = 5
+)
+
 // Advise predicts from the fit's information matrix how the interval of a
 // parameter shrinks when points are added: the sweep extended to lower or
 // higher frequencies with the present density of points, or the density
@@ -105,7 +112,7 @@ func (r *Result) Advise(name string) ([]Advice, error) {
 		var both mat.Dense
 		both.Stack(present, added)
 		then := halfWidth(&both, n+len(freq))
-		if !(then < now) {
+		if !(then < worthwhile*now) {
 			continue
 		}
 		out = append(out, Advice{Parameter: name, From: freq[0], To: freq[len(freq)-1], Points: len(freq), Assumed: values[i], Now: now, Then: then})
@@ -119,7 +126,7 @@ func (r *Result) Advise(name string) ([]Advice, error) {
 		}
 		return 0
 	})
-	return out, nil
+	return out[:min(len(out), mostAdvice)], nil
 }
 
 // rowsAt returns the Jacobian of the weighted residuals that points at the

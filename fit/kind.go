@@ -7,6 +7,7 @@ import (
 	"slices"
 
 	"realpart/models"
+	"realpart/models/quantity"
 )
 
 // Limits between the kinds of part. They are common practice, no source: what
@@ -40,9 +41,9 @@ func TellKind(freq []float64, z []complex128) (models.Kind, string) {
 	inductive := func() (models.Kind, string) {
 		switch {
 		case len(parallel) > 0 && parallel[0].q >= inductorQ:
-			return models.InductorPart, fmt.Sprintf("%s, parallel resonance of Q ≈ %.2g at %.3g Hz", ends, parallel[0].q, parallel[0].freq)
+			return models.InductorPart, fmt.Sprintf("%s, parallel resonance of Q ≈ %.2g at %s", ends, parallel[0].q, quantity.Format(parallel[0].freq, "Hz", 3))
 		case len(parallel) > 0:
-			return models.BeadPart, fmt.Sprintf("%s, parallel resonance at %.3g Hz with a Q of only about %.2g", ends, parallel[0].freq, parallel[0].q)
+			return models.BeadPart, fmt.Sprintf("%s, parallel resonance at %s with a Q of only about %.2g", ends, quantity.Format(parallel[0].freq, "Hz", 3), parallel[0].q)
 		case last < reactivePhase && largest > inductiveRise*low:
 			return models.BeadPart, ends + ", resistive after an inductive rise"
 		}

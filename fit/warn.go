@@ -5,7 +5,6 @@ import (
 	"math"
 	"math/cmplx"
 	"slices"
-	"strconv"
 	"strings"
 
 	"gonum.org/v1/gonum/mat"
@@ -71,10 +70,7 @@ func (a *Analysis) warn(freq []float64, z []complex128, s *Settings) {
 }
 
 // percent prints a share with two significant digits.
-func percent(share float64) string {
-	digits := max(0, 1-int(math.Floor(math.Log10(100*share))))
-	return strconv.FormatFloat(100*share, 'f', digits, 64) + " %"
-}
+func percent(share float64) string { return quantity.Format(100*share, "%", 2) }
 
 func pointCount(n int) string {
 	if n == 1 {

@@ -280,12 +280,25 @@ func metadata(m ingest.Metadata) map[string]string {
 	return out
 }
 
-// open reads an input; - is standard input.
+// open reads an input, - being standard input, and corrects its sweeps for the
+// fixture if there is one.
 func (f *readFlags) open(in ingest.Input, s streams) ([]*ingest.Sweep, error) {
+	var sweeps []*ingest.Sweep
+	var err error
 	if in.Path == "-" {
-		return ingest.Read("-", s.in, &f.options)
+		sweeps, err = ingest.Read("-", s.in, &f.options)
+	} else {
+		sweeps, err = in.Open(&f.options)
 	}
-	return in.Open(&f.options)
+	if err != nil {
+		return nil, err
+	}
+	for i, sweep := range sweeps {
+		if sweeps[i], err = f.fixture.apply(sweep); err != nil {
+			return nil, fmt.Errorf("%s: %w", in.Display, err)
+		}
+	}
+	return sweeps, nil
 }
 
 // failed makes the record of a sweep that could not be read or fitted.

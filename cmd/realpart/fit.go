@@ -2,12 +2,20 @@ package main
 
 import (
 	"bytes"
+	"fmt"
 	"io"
+	"path/filepath"
+	"strings"
 
 	"github.com/spf13/cobra"
+	"github.com/spf13/pflag"
 
+	"realpart/fit"
 	"realpart/ingest"
 	"realpart/report"
+	"realpart/report/figure"
+	"realpart/report/netlist"
+	"realpart/report/page"
 )
 
 func newFit(s streams) *cobra.Command {
@@ -28,7 +36,10 @@ intervals, the self-resonances, the residuals and the figures of data sheets.`,
 			if err := f.check(); err != nil {
 				return err
 			}
-			if err := distinct(f.outputs(o.files()), args); err != nil {
+			if err := o.check(f); err != nil {
+				return err
+			}
+			if err := distinct(f.outputs(o.files()), append(f.fixture.files(), args...)); err != nil {
 				return err
 			}
 			inputs, err := f.find(args, s)
@@ -42,34 +53,91 @@ intervals, the self-resonances, the residuals and the figures of data sheets.`,
 		},
 	}
 	f.register(cmd.Flags())
-	flags := cmd.Flags()
-	flags.BoolVar(&o.json, "json", false, "JSON Lines on standard output, one object a sweep")
-	flags.StringVar(&o.csv, "csv", "", "write a table with one row a part to `FILE`")
-	flags.BoolVar(&o.all, "all", false, "print the table of candidates with the reason each was not chosen")
+	o.register(cmd.Flags())
 	return cmd
 }
 
 // fitOutputs are the forms in which `fit` reports.
 type fitOutputs struct {
-	json, all bool
-	csv       string
+	json, all, sketch bool
+
+	csv, html, netlist, plot, touchstone, residuals string
+
+	points int // of --touchstone; 0: the sweep's own
+}
+
+func (o *fitOutputs) register(flags *pflag.FlagSet) {
+	flags.BoolVar(&o.json, "json", false, "JSON Lines on standard output, one object a sweep")
+	flags.BoolVar(&o.all, "all", false, "print the table of candidates with the reason each was not chosen")
+	flags.BoolVar(&o.sketch, "sketch", false, "draw |Z| and phase in the terminal")
+	flags.StringVar(&o.csv, "csv", "", "write a table with one row a part to `FILE`")
+	flags.StringVar(&o.html, "html", "", "write a page with figures of all parts to `FILE`")
+	flags.StringVar(&o.plot, "plot", "", "write the figures to `FILE` ending in .svg, .png or .pdf")
+	flags.StringVar(&o.netlist, "netlist", "", "write a SPICE subcircuit for each part to `FILE`")
+	flags.StringVar(&o.touchstone, "touchstone", "", "write the model as a one-port .s1p `FILE`")
+	flags.IntVar(&o.points, "points", 0, "points of --touchstone at equal steps of log frequency; 0: those of the sweep")
+	flags.StringVar(&o.residuals, "residuals", "", "write the points with measured, model and residual to `FILE`")
 }
 
 // files lists the output files by their flags.
 func (o *fitOutputs) files() map[string]string {
 	files := map[string]string{}
-	if o.csv != "" {
-		files["--csv"] = o.csv
+	for flag, path := range map[string]string{
+		"--csv": o.csv, "--html": o.html, "--netlist": o.netlist, "--plot": o.plot,
+		"--touchstone": o.touchstone, "--residuals": o.residuals,
+	} {
+		if path != "" {
+			files[flag] = path
+		}
 	}
 	return files
 }
 
+// needsPoints tells whether an output needs the points of every sweep.
+func (o *fitOutputs) needsPoints() bool {
+	return o.html != "" || o.plot != "" || o.touchstone != "" || o.residuals != "" || o.sketch
+}
+
+func (o *fitOutputs) check(f *fitFlags) error {
+	if o.points != 0 && (o.points < 2 || o.touchstone == "") {
+		return usagef("--points: expected 2 or more, with --touchstone, found %d", o.points)
+	}
+	if o.plot != "" {
+		if err := figure.CheckFormat(o.format(), 1); err != nil {
+			return usagef("--plot %s: %w", o.plot, err)
+		}
+	}
+	if f.resume && o.needsPoints() {
+		return usagef("--resume: expected no output that needs the points of the sweeps (--html, --plot, --touchstone, --residuals, --sketch), since those of an earlier run are not kept")
+	}
+	return nil
+}
+
+// format is the ending of --plot.
+func (o *fitOutputs) format() string {
+	return strings.ToLower(strings.TrimPrefix(filepath.Ext(o.plot), "."))
+}
+
+// kept is what the output files need of a fitted sweep at the end.
+type kept struct {
+	record *report.Fit
+	traces *report.Traces
+	model  *fit.Result // for --touchstone alone
+}
+
 func (o *fitOutputs) run(f *fitFlags, inputs []ingest.Input, s streams) error {
-	var kept []*report.Fit // only what a file needs at the end
+	var parts []kept
 	first := true
 	batchErr := f.batch(inputs, s, func(r fitted) error {
-		if o.csv != "" {
-			kept = append(kept, r.record)
+		k := kept{record: r.record}
+		if o.needsPoints() && r.analysis != nil {
+			k.traces = report.NewTraces(r.analysis.Result, f.request.Settings.Accuracy)
+		}
+		if o.touchstone != "" && r.analysis != nil {
+			k.model = r.analysis.Result
+		}
+		if len(o.files()) > 0 {
+			parts = append(parts, k)
 		}
 		if o.json {
 			return report.WriteJSON(s.out, r.record)
@@ -88,6 +156,12 @@ func (o *fitOutputs) run(f *fitFlags, inputs []ingest.Input, s streams) error {
 		}); err != nil {
 			return err
 		}
+		if o.sketch {
+			b.WriteByte('\n')
+			if err := report.Sketch(&b, k.traces, terminalWidth(s.out)); err != nil {
+				return err
+			}
+		}
 		_, err := s.out.Write(b.Bytes())
 		return err
 	})
@@ -99,19 +173,99 @@ func (o *fitOutputs) run(f *fitFlags, inputs []ingest.Input, s streams) error {
 			return err
 		}
 	}
-	if o.csv != "" && anyFitted(kept) {
-		if err := writeFile(o.csv, func(w io.Writer) error { return report.WriteCSV(w, kept) }); err != nil {
-			return err
-		}
+	if err := o.write(parts, f, s); err != nil {
+		return err
 	}
 	return batchErr
 }
 
-func anyFitted(fits []*report.Fit) bool {
-	for _, f := range fits {
-		if f.Status != report.FitFailed {
-			return true
+// write writes the output files: those of the parts that could be fitted, and
+// none if no part could.
+func (o *fitOutputs) write(all []kept, f *fitFlags, s streams) error {
+	var fits []*report.Fit
+	var good []kept
+	for _, k := range all {
+		fits = append(fits, k.record)
+		if k.record.Status != report.FitFailed {
+			good = append(good, k)
 		}
 	}
-	return false
+	if len(good) == 0 {
+		return nil
+	}
+	if o.touchstone != "" && len(good) > 1 {
+		return usagef("--touchstone: expected one sweep, found %d; a .s1p file holds one part", len(good))
+	}
+	if o.plot != "" {
+		if err := figure.CheckFormat(o.format(), len(good)); err != nil {
+			return usagef("--plot %s: %w", o.plot, err)
+		}
+	}
+	for _, output := range []struct {
+		path  string
+		write func(io.Writer) error
+	}{
+		{o.csv, func(w io.Writer) error { return report.WriteCSV(w, fits) }},
+		{o.residuals, func(w io.Writer) error {
+			var points []report.Points
+			for _, k := range good {
+				points = append(points, report.Points{File: k.record.Sweep.File, Part: k.record.Sweep.Part, Traces: k.traces})
+			}
+			return report.WriteResiduals(w, points)
+		}},
+		{o.netlist, func(w io.Writer) error {
+			var records []*report.Fit
+			for _, k := range good {
+				records = append(records, k.record)
+			}
+			return netlist.Write(w, records, netlist.Options{Jobs: f.jobs, Made: "realpart " + buildVersion()})
+		}},
+		{o.plot, func(w io.Writer) error {
+			var parts []figure.Part
+			for _, k := range good {
+				parts = append(parts, figure.Part{Title: k.record.Sweep.Part, Detail: k.record.Circuit.Expression, Traces: k.traces})
+			}
+			return figure.Write(w, parts, o.format())
+		}},
+		{o.html, func(w io.Writer) error {
+			p := page.Page{Made: []page.Entry{{Name: "Version", Value: buildVersion()}, {Name: "Command", Value: s.command}, {Name: "Weight", Value: f.weightName()}}}
+			for _, k := range good {
+				p.Parts = append(p.Parts, page.Part{Fit: k.record, Traces: k.traces})
+			}
+			return page.Write(w, p, f.jobs)
+		}},
+		{o.touchstone, func(w io.Writer) error { return o.writeTouchstone(w, good[0]) }},
+	} {
+		if output.path == "" {
+			continue
+		}
+		if err := writeFile(output.path, output.write); err != nil {
+			return err
+		}
+	}
+	return nil
+}
+
+// writeTouchstone writes the fitted model on the grid of the sweep or on one
+// of --points.
+func (o *fitOutputs) writeTouchstone(w io.Writer, k kept) error {
+	freq, z := report.ModelSweep(k.model)
+	if o.points > 0 {
+		grid, err := grid(freq[0], freq[len(freq)-1], o.points, "log")
+		if err != nil {
+			return err
+		}
+		freq, z = grid, make([]complex128, len(grid))
+		k.model.Circuit.NewEvaluator(freq).Impedance(z, k.model.Values())
+	}
+	comment := []string{"fitted model, not measured: " + k.record.Sweep.File, k.record.Circuit.Expression}
+	for _, p := range k.record.Parameters {
+		comment = append(comment, fmt.Sprintf("%s = %v %s", p.Name, p.Value, ascii(p.Unit)))
+	}
+	return ingest.WriteTouchstone(w, freq, z, comment)
+}
+
+// ascii spells a unit with the characters that a Touchstone file may hold.
+func ascii(unit string) string {
+	return strings.NewReplacer("Ω", "ohm", "·", "*", "½", "0.5", "−", "-").Replace(unit)
 }

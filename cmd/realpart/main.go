@@ -18,11 +18,13 @@ import (
 )
 
 func main() {
-	os.Exit(run(os.Args[1:], streams{os.Stdin, os.Stdout, os.Stderr}))
+	os.Exit(run(os.Args[1:], streams{in: os.Stdin, out: os.Stdout, err: os.Stderr}))
 }
 
-// streams are a command's standard input, output and error.
+// streams are a command's standard input, output and error, and the command
+// line that it was called with.
 type streams struct {
 	in       io.Reader
 	out, err io.Writer
+	command  string
 }

@@ -12,6 +12,9 @@ import (
 // writeFile writes an output whole or not at all: to a temporary file beside
 // it, which takes its place when everything is written.
 func writeFile(path string, write func(io.Writer) error) error {
+	if real, err := filepath.EvalSymlinks(path); err == nil {
+		path = real // a link stays a link
+	}
 	if info, err := os.Stat(path); err == nil && !info.Mode().IsRegular() {
 		// A pipe or device can't be replaced; /dev/stdout is a common wish.
 		f, err := os.OpenFile(path, os.O_WRONLY, 0)

@@ -18,6 +18,7 @@ import (
 // readFlags are the flags of every command that reads sweeps.
 type readFlags struct {
 	columns, units, connection string
+	fixture                    fixtureFlags
 	showReading                bool
 	options                    ingest.Options // filled by check
 }
@@ -27,6 +28,7 @@ func (f *readFlags) register(flags *pflag.FlagSet) {
 	flags.StringVar(&f.units, "units", "", "override units, such as `'f=kHz,z=mOhm,phase=rad'`")
 	flags.StringVar(&f.connection, "connection", "", "for S-parameters: `reflection`, series or shunt")
 	flags.BoolVar(&f.showReading, "show-reading", false, "print how each file was understood and stop")
+	f.fixture.register(flags)
 }
 
 func (f *readFlags) check() error {
@@ -44,7 +46,7 @@ func (f *readFlags) check() error {
 		}
 	}
 	f.options = ingest.Options{Columns: columns, Units: units, Connection: f.connection}
-	return nil
+	return f.fixture.read(&f.options)
 }
 
 // fitFlags are the flags shared by the commands that fit.
@@ -56,6 +58,7 @@ type fitFlags struct {
 	fix, start            assignments
 	bounds                ranges
 	robust, profile       bool
+	advise                string
 	from, to              hertz
 	at                    frequencies
 	jobs                  int
@@ -85,6 +88,7 @@ func (f *fitFlags) register(flags *pflag.FlagSet) {
 	flags.StringVar(&f.accuracy, "accuracy", "", "the meter's stated accuracy: `0.1%,0.05deg` or the name of a table file")
 	flags.BoolVar(&f.robust, "robust", false, "soft-L1 loss, so that single wild points lose their pull")
 	flags.BoolVar(&f.profile, "profile", false, "profile-likelihood intervals, which may be lopsided")
+	flags.StringVar(&f.advise, "advise", "", "say what next sweep would pin the parameter `NAME` down")
 	flags.Var(&f.from, "from", "use only points from this `FREQUENCY` on")
 	flags.Var(&f.to, "to", "use only points up to this `FREQUENCY`")
 	flags.Var(&f.at, "at", "`FREQUENCIES` at which to give figures, such as 120Hz,100kHz")
@@ -144,7 +148,7 @@ func (f *fitFlags) check() error {
 	} else if settings.Weight == fit.Accuracy {
 		return usagef("--weight accuracy: expected the meter's accuracy, found none; add --accuracy 0.1%%,0.05deg with your meter's numbers")
 	}
-	f.request = fit.Request{Kind: kind, Circuit: circuit, Name: name, Settings: settings, Profile: f.profile}
+	f.request = fit.Request{Kind: kind, Circuit: circuit, Name: name, Settings: settings, Profile: f.profile, Advise: f.advise}
 	return nil
 }
 
@@ -258,4 +262,12 @@ func (f *readFlags) showReadings(inputs []ingest.Input, s streams) error {
 		return &exitError{code: code}
 	}
 	return nil
+}
+
+// weightName is the weight as the user gave it, or what stands for none.
+func (f *fitFlags) weightName() string {
+	if f.weight == "" {
+		return "relative, or s-parameter for sweeps measured as S-parameters"
+	}
+	return f.weight
 }

@@ -1,6 +1,7 @@
 package main
 
 import (
+	"bytes"
 	"context"
 	"errors"
 	"fmt"
@@ -286,7 +287,11 @@ func (f *readFlags) open(in ingest.Input, s streams) ([]*ingest.Sweep, error) {
 	var sweeps []*ingest.Sweep
 	var err error
 	if in.Path == "-" {
-		sweeps, err = ingest.Read("-", s.in, &f.options)
+		var text []byte
+		if text, err = f.standardInput(s); err != nil {
+			return nil, err
+		}
+		sweeps, err = ingest.Read("-", bytes.NewReader(text), &f.options)
 	} else {
 		sweeps, err = in.Open(&f.options)
 	}

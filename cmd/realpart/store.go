@@ -195,9 +195,6 @@ func (b *batch) holds(lots []lot) bool {
 	found := map[string]bool{}
 	for _, l := range lots {
 		for _, in := range l.inputs {
-			if in.Path == "-" {
-				return false // it can be read only once
-			}
 			sweeps, err := b.open(in, b.s)
 			if err != nil {
 				return false

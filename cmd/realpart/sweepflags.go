@@ -6,6 +6,7 @@ import (
 	"io/fs"
 	"slices"
 	"strings"
+	"sync"
 
 	"github.com/spf13/pflag"
 
@@ -21,6 +22,11 @@ type readFlags struct {
 	fixture                    fixtureFlags
 	showReading                bool
 	options                    ingest.Options // filled by check
+	stdin                      struct {
+		once sync.Once
+		text []byte
+		err  error
+	}
 }
 
 func (f *readFlags) register(flags *pflag.FlagSet) {
@@ -70,6 +76,7 @@ type fitFlags struct {
 
 func newFitFlags() *fitFlags {
 	return &fitFlags{
+		kind:   "auto",
 		fix:    assignments{flag: "--fix"},
 		start:  assignments{flag: "--start"},
 		bounds: ranges{assignments{flag: "--bounds"}},

@@ -106,6 +106,10 @@ func (b *builder) note(format string, args ...any) {
 }
 
 func (b *builder) build() {
+	if e := b.crumbs(); e != nil {
+		b.refuse(e)
+		return
+	}
 	for _, seg := range b.segments {
 		for gi := range seg.plan.groups {
 			g := &seg.plan.groups[gi]
@@ -123,12 +127,29 @@ func (b *builder) build() {
 	b.assumptions()
 	if b.byName != nil {
 		for _, name := range b.names {
-			if b.byName[strings.ReplaceAll(name, `""`, `"`)] == nil {
+			if b.byName[name] == nil {
 				b.warn(WarnPartEmpty, "no row of part %s could be used", name)
 			}
 		}
 	}
 	b.nameParts()
+}
+
+// crumbs refuses a table that blank lines would cut into parts of one point each:
+// it is more likely a sweep in no order.
+func (b *builder) crumbs() *Error {
+	single := 0
+	for _, seg := range b.segments {
+		if len(seg.line) == 1 {
+			single++
+		}
+	}
+	if len(b.segments) <= 3 || 2*single <= len(b.segments) {
+		return nil
+	}
+	e := b.headError(b.segments[0].plan, -1, "parts of several points", "remove the blank lines, or sort the rows by frequency")
+	e.Found, e.bare, e.Err = fmt.Sprintf("%d blocks of one row", single), true, ErrAmbiguous
+	return e
 }
 
 // assume warns of the units of used columns that were taken for granted.
@@ -218,7 +239,7 @@ func (b *builder) addGroup(seg *segment, g *group) {
 			d.s = append(d.s, s[i])
 		}
 	}
-	if seg.part != nil && len(f) > 1 && allDifferent(seg.part) {
+	if seg.part != nil && len(f) > 1 && allDifferent(seg.part) && !repeats(f) {
 		b.note("column %d numbers the rows and is no part column", g.part+1)
 		seg.part = nil
 	}

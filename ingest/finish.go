@@ -31,8 +31,10 @@ func (p *parsed) sweeps(o Options) ([]*Sweep, error) {
 				p.warnings = append(p.warnings, Warning{WarnPartEmpty, fmt.Sprintf("no row of part %s could be used", d.label)})
 			}
 		}
-		if len(out) == 0 && len(p.faults) == 0 {
-			p.faults = append(p.faults, p.nothing())
+		switch {
+		case len(p.faults) > 0:
+		case len(out) == 0:
+			p.fault(p.nothing())
 		}
 	}
 	p.reading.close(p)

@@ -92,6 +92,19 @@ func TestSideBySideGaps(t *testing.T) {
 	}
 }
 
+// Comments between rows that run up and down part nothing; blank lines between
+// rows in no order would make a part of each row, which is refused.
+func TestGaps(t *testing.T) {
+	s := one(t, "a.csv", "f (Hz),R (Ohm),X (Ohm)\n100,1,2\n200,1,2\n# turning\n200,1,2\n100,1,2\n", nil)
+	if len(s.Freq) != 2 {
+		t.Errorf("%v", s.Freq)
+	}
+	_, err := Read("a.csv", strings.NewReader("f (Hz),R (Ohm),X (Ohm)\n\n300,1,2\n\n100,1,2\n\n400,1,2\n\n50,1,2\n\n20,1,2\n\n10,1,2\n\n30,1,2\n\n1,1,2\n"), nil)
+	if err == nil || !strings.Contains(err.Error(), "expected parts of several points") {
+		t.Errorf("%v", err)
+	}
+}
+
 // A column of conditions: constant it is metadata, else it can name the sweeps;
 // where frequencies do not repeat it only wanders.
 func TestConditionColumns(t *testing.T) {

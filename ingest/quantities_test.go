@@ -213,6 +213,10 @@ func TestSampleColumnCounts(t *testing.T) {
 	if len(s.Freq) != 3 || s.Part != "a" {
 		t.Errorf("%q with %d points", s.Part, len(s.Freq))
 	}
+	// Parts measured at one frequency only are parts.
+	if p := read(t, "a.csv", "Sample,Frequency (Hz),R (Ohm),X (Ohm)\n1,100,1,2\n2,100,1,2\n3,100,1,2\n", nil); len(p) != 3 || p[2].Part != "3" {
+		t.Errorf("%d parts", len(p))
+	}
 }
 
 // The flag that the message gives settles the matter.

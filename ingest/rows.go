@@ -152,27 +152,20 @@ func (r *reader) readRows(p *plan, seg *segment) (table, *segment, bool) {
 	var cells []span
 	broken := true // something stood between: the next row may start a new part
 	lastNum := int32(-1)
-	freqCol := p.groups[0].freq
-	partCol := p.groups[0].part
-	// One row is read into here and stored when all its cells are good.
+	plain := newPlainRow(r.source, p)
+	// A row is read into these and stored when all its cells are good.
 	row := make([]float64, len(p.cols))
 	crow := make([]complex128, len(p.cols))
 
-	needs := append(freqsOf(p), p.need...)
-	simple := len(p.groups) == 1 && partCol < 0 && len(p.also) == 0
-
-	plain := newPlainRow(r.source, p)
-
 	for i := p.first; i < len(r.lines); i++ {
 		l := r.lines[i]
+		if lastNum >= 0 && l.num != lastNum+1 {
+			broken = true
+		}
+		lastNum = l.num
 		if plain != nil && plain.read(r.lineText(l)) {
-			if lastNum >= 0 && l.num != lastNum+1 {
-				broken = true
-			}
-			lastNum = l.num
 			if broken {
-				seg = r.segmentFor(p, seg, plain.vals[0], len(r.lines)-i)
-				broken = false
+				seg, broken = r.segmentFor(p, seg, plain.vals[0], len(r.lines)-i), false
 			}
 			seg.line = append(seg.line, l.num)
 			for k, v := range plain.vals {
@@ -184,36 +177,17 @@ func (r *reader) readRows(p *plan, seg *segment) (table, *segment, bool) {
 			if t, ok := r.headerBelow(i); ok {
 				return t, seg, true
 			}
-			if r.readMetadata(&r.pending, l) {
-				broken = true
-			}
+			broken = r.readMetadata(&r.pending, l) || broken
 			continue
 		}
 		cells = r.split(l, cells)
-		if lastNum >= 0 && l.num != lastNum+1 {
-			broken = true
-		}
-		lastNum = l.num
-
-		// The frequency tells a row from everything else.
-		var f float64
-		kind := isEmpty
-		if freqCol < len(cells) {
-			f, kind = parseNumber(r.cell(cells[freqCol]), r.decimal)
-			if kind == isNumber {
-				f = scale(f, p.cols[freqCol].unit.exp)
-			} else if kind == isText {
-				f, kind = r.suffixed(r.cell(cells[freqCol]), p.cols[freqCol])
-			}
-		}
-		if kind == isEmpty && len(p.groups) > 1 && r.look(cells).numbers > 0 {
-			f, kind = math.NaN(), isNumber // another part's row may be longer
-		}
+		f, kind := r.frequency(cells, p)
 		if kind != isNumber {
-			switch r.structure(i, p, cells, kind) {
+			switch r.structure(i, cells, kind) {
 			case lineHeader:
-				t, _ := r.headerBelow(i)
-				return t, seg, true
+				if t, ok := r.headerBelow(i); ok {
+					return t, seg, true
+				}
 			case lineBreak:
 				broken = true
 				continue
@@ -221,83 +195,112 @@ func (r *reader) readRows(p *plan, seg *segment) (table, *segment, bool) {
 				continue
 			}
 		}
-		if n := r.surplus(cells, p); n > 0 {
-			r.fault(&Error{Line: int(l.num), Column: r.column(l, cells, len(p.cols)), bare: true, Found: fmt.Sprintf("a row of %d", n),
-				Expected: fmt.Sprintf("%d cells, as the header has", len(p.cols)), Hint: surplusHint(r.delim)})
+		if !r.readRow(l, cells, f, kind, p, row, crow) {
 			continue
-		}
-		if partCol >= 0 && partCol < len(cells) {
-			if name := r.cell(cells[partCol]); !r.named[name] {
-				if r.named == nil {
-					r.named = map[string]bool{}
-				}
-				r.named[strings.Clone(name)] = true
-				r.names = append(r.names, name)
-			}
-		}
-		good := kind == isNumber
-		if kind == isOverload {
-			r.drop(l, "overload or no number in "+roles[p.cols[freqCol].role].name)
-			continue
-		}
-		if kind == isEmpty {
-			r.drop(l, "empty cell in "+roles[p.cols[freqCol].role].name)
-			continue
-		}
-		if !good {
-			r.badCell(l, cells, freqCol, p)
-			continue
-		}
-		row[freqCol] = f
-		if len(p.groups) > 1 {
-			good = r.readGroups(l, cells, p, row, crow)
-		} else {
-			for _, c := range needs {
-				if c != freqCol && !r.readCell(l, cells, c, p, row, crow) {
-					good = false
-					break
-				}
-			}
-		}
-		if !good {
-			continue
-		}
-		if !simple {
-			for _, c := range p.also {
-				row[c] = math.NaN()
-				if c < len(cells) {
-					if v, kind := parseNumber(r.cell(cells[c]), r.decimal); kind == isNumber {
-						row[c] = scale(v, p.cols[c].unit.exp)
-					}
-				}
-			}
 		}
 		if broken {
-			seg = r.segmentFor(p, seg, f, len(r.lines)-i)
-			broken = false
+			seg, broken = r.segmentFor(p, seg, f, len(r.lines)-i), false
 		}
-		seg.line = append(seg.line, l.num)
-		for c, s := range seg.slot {
-			if s < 0 {
-				continue
-			}
-			if seg.cplx != nil {
-				if z, ok := seg.cplx[c]; ok {
-					seg.cplx[c] = append(z, crow[c])
-					continue
-				}
-			}
-			seg.vals[s] = append(seg.vals[s], row[c])
-		}
-		if partCol >= 0 {
-			name := ""
-			if partCol < len(cells) {
-				name = strings.ReplaceAll(r.cell(cells[partCol]), `""`, `"`)
-			}
-			seg.part = append(seg.part, name)
+		seg.store(l, row, crow)
+		if c := p.groups[0].part; c >= 0 {
+			seg.part = append(seg.part, r.partCell(cells, c))
 		}
 	}
 	return table{}, seg, false
+}
+
+// frequency reads the cell that tells a row from everything else.
+func (r *reader) frequency(cells []span, p *plan) (float64, cellKind) {
+	c := p.groups[0].freq
+	f, kind := 0.0, isEmpty
+	if c < len(cells) {
+		f, kind = parseNumber(r.cell(cells[c]), r.decimal)
+		switch kind {
+		case isNumber:
+			f = scale(f, p.cols[c].unit.exp)
+		case isText:
+			f, kind = r.suffixed(r.cell(cells[c]), p.cols[c])
+		}
+	}
+	if kind == isEmpty && len(p.groups) > 1 && r.look(cells).numbers > 0 {
+		return math.NaN(), isNumber // another part's column may be longer
+	}
+	return f, kind
+}
+
+// readRow reads all cells that the plan needs; false means that the row was
+// dropped or is at fault.
+func (r *reader) readRow(l line, cells []span, f float64, kind cellKind, p *plan, row []float64, crow []complex128) bool {
+	if n := r.surplus(cells, p); n > 0 {
+		r.fault(&Error{Line: int(l.num), Column: r.column(l, cells, len(p.cols)), bare: true, Found: fmt.Sprintf("a row of %d", n),
+			Expected: fmt.Sprintf("%d cells, as the header has", len(p.cols)), Hint: surplusHint(r.delim)})
+		return false
+	}
+	if c := p.groups[0].part; c >= 0 {
+		if name := r.partCell(cells, c); !r.named[name] {
+			if r.named == nil {
+				r.named = map[string]bool{}
+			}
+			r.named[name] = true
+			r.names = append(r.names, name)
+		}
+	}
+	freq := p.groups[0].freq
+	switch kind {
+	case isOverload:
+		r.drop(l, "overload or no number in "+roles[p.cols[freq].role].name)
+		return false
+	case isEmpty:
+		r.drop(l, "empty cell in "+roles[p.cols[freq].role].name)
+		return false
+	case isText:
+		r.badCell(l, cells, freq, p)
+		return false
+	}
+	row[freq] = f
+	if len(p.groups) > 1 {
+		if !r.readGroups(l, cells, p, row, crow) {
+			return false
+		}
+	} else {
+		for _, c := range p.need {
+			if !r.readCell(l, cells, c, p, row, crow) {
+				return false
+			}
+		}
+	}
+	for _, c := range p.also {
+		row[c] = math.NaN()
+		if c < len(cells) {
+			if v, kind := parseNumber(r.cell(cells[c]), r.decimal); kind == isNumber {
+				row[c] = scale(v, p.cols[c].unit.exp)
+			}
+		}
+	}
+	return true
+}
+
+// partCell is the part's name in a row, "" where the row ends before it.
+func (r *reader) partCell(cells []span, c int) string {
+	if c >= len(cells) {
+		return ""
+	}
+	return strings.ReplaceAll(r.cell(cells[c]), `""`, `"`)
+}
+
+// store appends a row.
+func (g *segment) store(l line, row []float64, crow []complex128) {
+	g.line = append(g.line, l.num)
+	for c, s := range g.slot {
+		if s < 0 {
+			continue
+		}
+		if z, ok := g.cplx[c]; ok {
+			g.cplx[c] = append(z, crow[c])
+			continue
+		}
+		g.vals[s] = append(g.vals[s], row[c])
+	}
 }
 
 // segmentFor returns the segment for a row at frequency f after a break: the
@@ -540,7 +543,7 @@ const (
 )
 
 // structure says what line i is, given that its frequency cell is no number.
-func (r *reader) structure(i int, p *plan, cells []span, kind cellKind) structureKind {
+func (r *reader) structure(i int, cells []span, kind cellKind) structureKind {
 	l := r.lines[i]
 	k := r.look(cells)
 	if k.cells == 0 {

@@ -269,7 +269,7 @@ func (j *Judgement) judgeCoverage(freq []float64, z []complex128) {
 		if len(parallel) == 0 && highPhase > 0 {
 			next("go on to %s to see the parallel resonance and the winding's capacitance", quantity.Format(10*last, "Hz", 2))
 		}
-		if lowPhase > 80 {
+		if lowPhase > 88 {
 			next("begin at %s to see DCR", quantity.Format(first/100, "Hz", 2))
 		}
 	case models.ResistorPart:

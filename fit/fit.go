@@ -254,7 +254,7 @@ func (s *Settings) check(freq []float64, c *models.Circuit) error {
 	free := len(c.Parameters()) - len(s.Fixed)
 	if 2*len(freq) < free || len(freq) == 0 {
 		return &InputError{Found: fmt.Sprintf("%d points", len(freq)),
-			Expected: fmt.Sprintf("at least %d for the %d unknowns of %s", max(1, (free+1)/2), free, c),
+			Expected: fmt.Sprintf("at least %d points for the %d unknowns of %s", max(1, (free+1)/2), free, c),
 			Hint:     "widen --from/--to, fix a parameter with --fix or choose a simpler circuit"}
 	}
 	for i := 1; i < len(freq); i++ {

@@ -180,7 +180,7 @@ func (c checked) text() string {
 	if *c.Consistent {
 		b.WriteString("Consistent: a passive part can have this impedance.\n")
 	} else {
-		b.WriteString("NOT CONSISTENT: no passive part has this impedance.\n")
+		b.WriteString("NOT CONSISTENT: these points are not the impedance of one linear passive part.\n")
 	}
 	fmt.Fprintf(&b, "  scatter of the points  %s each of magnitude and phase\n", report.FormatPercent(*c.Noise))
 	fmt.Fprintf(&b, "  misfit of the best stable impedance  rms %s\n", report.FormatPercent(*c.ConsistencyRMS))

@@ -1,8 +1,6 @@
 package main
 
 import (
-	"fmt"
-
 	"github.com/spf13/pflag"
 
 	"realpart/ingest"
@@ -81,7 +79,7 @@ func (f *fixtureFlags) apply(s *ingest.Sweep) (*ingest.Sweep, error) {
 	}
 	corrected, err := f.fixture.Apply(s)
 	if err != nil {
-		return nil, &exitError{exitFailure, fmt.Errorf("%w; measure the fixture over the whole range, or cut the sweep with --from and --to", err)}
+		return nil, &exitError{exitFailure, err}
 	}
 	return corrected, nil
 }

@@ -16,12 +16,13 @@ part() {
 mkdir -p heron otter
 # Normal spread from part to part, by Box and Muller from awk's own generator
 # written out here (Park and Miller's: every awk then gives the same): C 2 %,
-# ESR and R1 3 %, ESL and C1 1.5 %. The lot otter has an ESR 12 % higher, and
+# ESR and R1 3 %, ESL and C1 1.5 %. The seed is one with which no other part is
+# flagged as an outlier by chance. The lot otter has an ESR 12 % higher, and
 # its part 17 has dried out: C is 15 % lower and R1 twice as high.
 awk 'function uniform() { state = (16807*state) % 2147483647; return state/2147483647 }
   function normal(  r) { r = sqrt(-2*log(uniform())); return r*cos(6.283185307179586*uniform()) }
   BEGIN {
-    state = 20260401
+    state = 16
     for (lot = 1; lot <= 2; lot++) for (i = 1; i <= 24; i++) {
       c = 452*(1 + 0.02*normal()); esr = 31*(1 + 0.03*normal()); esl = 14*(1 + 0.015*normal())
       r1 = 58*(1 + 0.03*normal()); c1 = 240*(1 + 0.015*normal())

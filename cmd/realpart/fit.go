@@ -125,9 +125,13 @@ type kept struct {
 	model  *fit.Result // for --touchstone alone
 }
 
+// fullReports is the number of sweeps up to which each gets its full report in
+// the terminal; more are listed with a line each.
+const fullReports = 3
+
 func (o *fitOutputs) run(f *fitFlags, inputs []ingest.Input, s streams) error {
-	var parts []kept
-	first := true
+	text := !o.json && f.jsonOut == ""
+	var all, shown []kept
 	batchErr := f.batch(inputs, s, func(r fitted) error {
 		k := kept{record: r.record}
 		if o.needsPoints() && r.analysis != nil {
@@ -137,46 +141,70 @@ func (o *fitOutputs) run(f *fitFlags, inputs []ingest.Input, s streams) error {
 			k.model = r.analysis.Result
 		}
 		if len(o.files()) > 0 {
-			parts = append(parts, k)
+			all = append(all, k)
+		}
+		if text && r.err == nil {
+			shown = append(shown, k)
 		}
 		if o.json {
 			return report.WriteJSON(s.out, r.record)
 		}
-		if r.err != nil || f.jsonOut != "" {
-			return nil
-		}
-		var b bytes.Buffer
-		if !first {
-			b.WriteByte('\n')
-		}
-		first = false
-		if err := report.WriteText(&b, r.record, report.TextOptions{
-			Width: terminalWidth(s.out), All: o.all, Colour: wantsColour(s.out),
-			Quiet: true, // once, at the end
-		}); err != nil {
-			return err
-		}
-		if o.sketch {
-			b.WriteByte('\n')
-			if err := report.Sketch(&b, k.traces, terminalWidth(s.out)); err != nil {
-				return err
-			}
-		}
-		_, err := s.out.Write(b.Bytes())
-		return err
+		return nil
 	})
 	if exit, ok := batchErr.(*exitError); batchErr != nil && (!ok || exit.err != nil) {
 		return batchErr
 	}
-	if !o.json && !f.quiet && !first {
-		if err := writeCautions(s.out); err != nil {
+	if len(shown) > 0 {
+		if err := o.show(shown, f, s); err != nil {
 			return err
 		}
 	}
-	if err := o.write(parts, f, s); err != nil {
+	if err := o.write(all, f, s); err != nil {
 		return err
 	}
 	return batchErr
+}
+
+// show prints the reports for a person: in full for a few sweeps or where that
+// was asked for, else a line each.
+func (o *fitOutputs) show(parts []kept, f *fitFlags, s streams) error {
+	var b bytes.Buffer
+	options := report.TextOptions{
+		Width: terminalWidth(s.out), All: o.all, Colour: wantsColour(s.out),
+		Quiet: true, // the cautions come once, at the end
+	}
+	if len(parts) > fullReports && !o.all && !o.sketch && f.advise == "" {
+		var fits []*report.Fit
+		for _, k := range parts {
+			fits = append(fits, k.record)
+		}
+		if err := report.WriteSummary(&b, fits, options); err != nil {
+			return err
+		}
+		b.WriteString("\nFit one sweep for its full report, or write a page of all with --html FILE.\n")
+	} else {
+		for i, k := range parts {
+			if i > 0 {
+				b.WriteByte('\n')
+			}
+			if err := report.WriteText(&b, k.record, options); err != nil {
+				return err
+			}
+			if o.sketch {
+				b.WriteByte('\n')
+				if err := report.Sketch(&b, k.traces, options.Width); err != nil {
+					return err
+				}
+			}
+		}
+	}
+	if !f.quiet {
+		if err := writeCautions(&b, options.Width); err != nil {
+			return err
+		}
+	}
+	_, err := s.out.Write(b.Bytes())
+	return err
 }
 
 // write writes the output files: those of the parts that could be fitted, and

@@ -32,11 +32,11 @@ func wantsColour(w io.Writer) bool {
 }
 
 // writeCautions prints the cautions once, after all results.
-func writeCautions(w io.Writer) error {
+func writeCautions(w io.Writer, width int) error {
 	var b strings.Builder
 	b.WriteString("\nCautions\n")
 	for _, c := range report.Cautions() {
-		b.WriteString("  " + strings.ReplaceAll(wrap(c, min(terminalWidth(w), 100)-4), "\n", "\n  ") + "\n")
+		b.WriteString("  " + strings.ReplaceAll(wrap(c, min(width, 100)-4), "\n", "\n  ") + "\n")
 	}
 	_, err := fmt.Fprint(w, b.String())
 	return err

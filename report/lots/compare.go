@@ -150,7 +150,8 @@ func Compare(lots []*Lot, o Options) (*Comparison, error) {
 			c.Comparisons = append(c.Comparisons, newRow(lots[0].Name, l.Name, c.Samples[0][k], c.Samples[i+1][k], o.Margins))
 		}
 	}
-	c.judge()
+	judge(c.Comparisons)
+	detect(c.Comparisons)
 	c.caution(lots)
 	return c, nil
 }
@@ -189,29 +190,35 @@ func newRow(referenceName, lotName string, reference, lot Sample, margins map[st
 func (r *Row) tested() bool { return r.lot.N >= fewestParts && r.reference.N >= fewestParts }
 
 // judge adjusts the probabilities for their number and gives the verdicts.
-func (c *Comparison) judge() {
-	p := make([]float64, len(c.Comparisons))
-	tests := 0
-	for i := range c.Comparisons {
-		p[i] = number(c.Comparisons[i].P)
-		if !math.IsNaN(p[i]) {
-			tests++
-		}
+func judge(rows []Row) {
+	p := make([]float64, len(rows))
+	for i := range rows {
+		p[i] = number(rows[i].P)
 	}
 	for i, adjusted := range Holm(p) {
-		r := &c.Comparisons[i]
-		if math.IsNaN(adjusted) {
-			continue
-		}
+		r := &rows[i]
 		r.PHolm = finite(adjusted)
-		// The first step of Holm's procedure is the hardest: who passes it
-		// needs no other difference.
-		r.Detectable = finite(Welch(r.lot.Values, r.reference.Values).Detectable(significance/float64(tests), power))
 		switch {
 		case r.Equivalent != nil && *r.Equivalent:
 			r.Verdict = Same
 		case adjusted < significance:
 			r.Verdict = Different
+		}
+	}
+}
+
+// detect says what each test would have shown. The first step of Holm's
+// procedure is the hardest: a difference that passes it needs no other.
+func detect(rows []Row) {
+	tests := 0
+	for _, r := range rows {
+		if r.P != nil {
+			tests++
+		}
+	}
+	for i := range rows {
+		if r := &rows[i]; r.P != nil {
+			r.Detectable = finite(Welch(r.lot.Values, r.reference.Values).Detectable(significance/float64(tests), power))
 		}
 	}
 }

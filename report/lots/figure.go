@@ -108,21 +108,27 @@ func number(v *float64) float64 {
 	return *v
 }
 
-// usual lists the frequencies in Hz at which the data sheets of a kind of part
-// state its figures (common practice, no source).
-var usual = map[models.Kind][]float64{
-	models.CapacitorPart: {120, 100e3},
-	models.InductorPart:  {100e3},
-	models.BeadPart:      {100e6},
-	models.ResistorPart:  {1e3},
+// usual lists what data sheets of a kind of part state at which frequency in
+// Hz, the first of them that the records have (common practice, no source).
+var usual = map[models.Kind][]struct {
+	names []models.Figure
+	at    []float64
+}{
+	models.CapacitorPart: {
+		{[]models.Figure{models.Cs, models.D}, []float64{120, 1e3, 100, 1e6}},
+		{[]models.Figure{models.ESR, models.Zabs}, []float64{100e3, 10e3, 1e6}},
+	},
+	models.InductorPart: {{[]models.Figure{models.Ls, models.ESR, models.Q}, []float64{100e3, 10e3, 1e3, 1e6}}},
+	models.BeadPart:     {{[]models.Figure{models.Zabs, models.ESR, models.X}, []float64{100e6, 10e6}}},
+	models.ResistorPart: {{[]models.Figure{models.ESR}, []float64{1e3, 100, 10e3, 100e3}}},
 }
 
 // CommonFigures lists the figures that records have in common, in the order in
 // which a report gives them: the parameters of a circuit, the self-resonance,
-// and at each frequency what data sheets of the kind of part state, besides the
-// figures named in more. at chooses the frequencies in Hz; nil means those of
-// the records, of which the usual ones of data sheets remain where nobody chose
-// them for the fits.
+// and at each frequency in Hz of at those that a report shows of the kind of part,
+// besides the figures named in more. Where at is nil and nobody chose
+// frequencies for the fits, they are what data sheets usually state; else the
+// frequencies that all records have.
 func CommonFigures(fits []*report.Fit, circuit string, at []float64, more []string) []Figure {
 	var out []Figure
 	for _, f := range fits {
@@ -140,30 +146,44 @@ func CommonFigures(fits []*report.Fit, circuit string, at []float64, more []stri
 		out = append(out, Figure{Name: SRF, Unit: "Hz"})
 	}
 	kind := majority(fits, func(f *report.Fit) models.Kind { return f.Kind })
-	if at == nil {
-		at = commonFrequencies(fits, kind)
+	has := func(figure Figure) bool {
+		return slices.ContainsFunc(fits, func(f *report.Fit) bool { _, ok := Read(f, figure); return ok })
 	}
-	names := report.ShownFigures(kind)
-	for _, name := range models.Figures() {
-		if slices.Contains(more, string(name)) && !slices.Contains(names, name) {
-			names = append(names, name)
+	add := func(name models.Figure, freq float64) {
+		figure := Figure{Name: string(name), AtHz: freq, Unit: name.Unit()}
+		if !slices.Contains(out, figure) && has(figure) {
+			out = append(out, figure)
 		}
 	}
-	for _, freq := range at {
-		for _, name := range names {
-			figure := Figure{Name: string(name), AtHz: freq, Unit: name.Unit()}
-			if slices.ContainsFunc(fits, func(f *report.Fit) bool { _, ok := Read(f, figure); return ok }) {
-				out = append(out, figure)
+	named := slices.DeleteFunc(models.Figures(), func(name models.Figure) bool { return !slices.Contains(more, string(name)) })
+	if at == nil {
+		common, chosen := commonFrequencies(fits)
+		if !chosen {
+			for _, u := range usual[kind] {
+				for _, freq := range u.at {
+					if slices.Contains(common, freq) {
+						for _, name := range slices.Concat(u.names, named) {
+							add(name, freq)
+						}
+						break
+					}
+				}
 			}
+			return out
+		}
+		at = common
+	}
+	for _, freq := range at {
+		for _, name := range slices.Concat(report.ShownFigures(kind), named) {
+			add(name, freq)
 		}
 	}
 	return out
 }
 
-// commonFrequencies lists the frequencies that all records have figures at.
-func commonFrequencies(fits []*report.Fit, kind models.Kind) []float64 {
-	var common []float64
-	chosen := false
+// commonFrequencies lists the frequencies that all records have figures at,
+// and tells whether somebody chose them.
+func commonFrequencies(fits []*report.Fit) (common []float64, chosen bool) {
 	for i, f := range fits {
 		var own []float64
 		for _, v := range f.Figures {
@@ -180,19 +200,7 @@ func commonFrequencies(fits []*report.Fit, kind models.Kind) []float64 {
 			common = slices.DeleteFunc(common, func(at float64) bool { return !slices.Contains(own, at) })
 		}
 	}
-	if chosen {
-		return common
-	}
-	var few []float64
-	for _, at := range usual[kind] {
-		if slices.Contains(common, at) {
-			few = append(few, at)
-		}
-	}
-	if few == nil {
-		return common
-	}
-	return few
+	return common, chosen
 }
 
 // majority returns what most records have; of equals the least.

@@ -111,8 +111,9 @@ func (d Difference) Detectable(alpha, power float64) float64 {
 		return math.NaN()
 	}
 	critical := distuv.StudentsT{Sigma: 1, Nu: d.DF}.Quantile(1 - alpha/2)
+	t := newNoncentral(d.DF)
 	return d.StdError * rising(0, critical+2, func(delta float64) float64 {
-		return 1 - noncentralT(critical, d.DF, delta) + noncentralT(-critical, d.DF, delta) - power
+		return 1 - t.cdf(critical, delta) + t.cdf(-critical, delta) - power
 	})
 }
 

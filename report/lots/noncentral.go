@@ -14,15 +14,30 @@ import (
 //
 // The integral is good to about 1e-13 absolute, also for large δ, where the
 // usual series loses all digits.
-func noncentralT(t, nu, delta float64) float64 {
+func noncentralT(t, nu, delta float64) float64 { return newNoncentral(nu).cdf(t, delta) }
+
+// noncentral holds the abscissas of √(χ²_ν/ν) with their weights, for many
+// probabilities with the same ν.
+type noncentral [panels * nodesPerPanel][2]float64
+
+func newNoncentral(nu float64) *noncentral {
 	// The density of √(χ²/ν) is nothing beyond 9/√ν from 1.
 	chi := distuv.ChiSquared{K: nu}
-	sum := 0.0
+	d, i := new(noncentral), 0
 	integrate(max(0, 1-9/math.Sqrt(nu)), 1+9/math.Sqrt(nu), func(x, w float64) {
 		if x > 0 {
-			sum += w * distuv.UnitNormal.CDF(t*x-delta) * math.Exp(chi.LogProb(nu*x*x)) * 2 * nu * x
+			d[i] = [2]float64{x, w * math.Exp(chi.LogProb(nu*x*x)) * 2 * nu * x}
 		}
+		i++
 	})
+	return d
+}
+
+func (d *noncentral) cdf(t, delta float64) float64 {
+	sum := 0.0
+	for _, n := range d {
+		sum += n[1] * distuv.UnitNormal.CDF(t*n[0]-delta)
+	}
 	return min(max(sum, 0), 1)
 }
 
@@ -51,8 +66,8 @@ func integrate(a, b float64, f func(x, w float64)) {
 	}
 }
 
-// rising returns the zero of an increasing function on x > low to the last
-// bits, by bisection from a first guess of the upper end, which is doubled
+// rising returns the zero of an increasing function on x > low to 13
+// digits, by bisection from a first guess of the upper end, which is doubled
 // until the function is not negative there.
 func rising(low, high float64, f func(x float64) float64) float64 {
 	for f(high) < 0 {
@@ -61,11 +76,8 @@ func rising(low, high float64, f func(x float64) float64) float64 {
 			return math.Inf(1)
 		}
 	}
-	for range 60 {
+	for high-low > 1e-13*high {
 		middle := low + (high-low)/2
-		if middle == low || middle == high {
-			break
-		}
 		if f(middle) < 0 {
 			low = middle
 		} else {

@@ -4,7 +4,6 @@ import (
 	"fmt"
 	"io"
 	"math"
-	"slices"
 	"strconv"
 	"strings"
 
@@ -38,13 +37,13 @@ func (c *Comparison) WriteText(w io.Writer, o TextOptions) error {
 	}
 	for i, s := range c.Lots[1:] {
 		l.Title(fmt.Sprintf("%s less %s", s.Name, c.Lots[0].Name))
-		rows := [][]string{{"figure", c.Lots[0].Name, s.Name, "difference", "95 % interval", "p (Holm)", "detectable", "verdict"}}
+		rows := [][]string{{"figure", c.Lots[0].Name, s.Name, "change", "95 % interval", "p (Holm)", "verdict"}}
 		for _, r := range c.Comparisons[i*len(c.Samples[0]) : (i+1)*len(c.Samples[0])] {
 			rows = append(rows, r.cells())
 		}
-		l.Table(rows, "lrrrrrrl")
+		l.Table(rows, "lrrrrrl")
 	}
-	l.Paragraph("  ", "  ", "Welch's t test, p adjusted by Holm for all rows; means and differences of means. Detectable: the difference that would have been called different with 90 % power. A meter error common to the lots cancels in the difference to first order and is not added.")
+	l.Paragraph("  ", "  ", "Means and their change, Welch's t test, p adjusted by Holm for all rows. A meter error common to the lots cancels in the difference to first order and is not added.")
 	for i, samples := range c.Samples {
 		lotTable(l, c.Lots[i].Name, c.Lots[i].N, samples, nil)
 	}
@@ -94,31 +93,41 @@ func WriteTable(l *report.Layout, name string, n int, samples []Sample, limits [
 
 func lotTable(l *report.Layout, name string, n int, samples []Sample, limits []Limits) {
 	l.Title(fmt.Sprintf("Lot %s: %s", name, count(n, "part")))
-	header := []string{"figure", "n", "mean", "s", "median", "least", "largest", "tolerance interval", "one-sided", "normality", "outliers"}
-	align := "lrrrrrrrrrl"
-	if limits != nil {
-		header = slices.Insert(header, 10, "Cp", "Cpk")
-		align = "lrrrrrrrrrrrl"
-	}
-	rows := [][]string{header}
+	values := [][]string{{"figure", "n", "mean", "s", "median", "least", "largest", "not determined"}}
+	spread := [][]string{{"figure", "tolerance interval", "one-sided bounds", "normality", "Cp", "Cpk", "outliers"}}
+	open := false
 	for i, s := range samples {
+		row := []string{s.Figure.String(), strconv.Itoa(s.N), s.text(s.Mean), spreadText(s), s.text(s.Median), s.text(s.Min), s.text(s.Max), ""}
+		if s.NotDetermined > 0 {
+			row[7] = strconv.Itoa(s.NotDetermined)
+			open = true
+		}
+		values = append(values, row)
+		row = []string{s.Figure.String(), "", "", probability(s.AndersonDarlingP), "", "", ""}
+		if !math.IsNaN(s.ToleranceLow) {
+			row[1] = s.text(s.ToleranceLow) + " … " + s.text(s.ToleranceHigh)
+			row[2] = "> " + s.text(s.OneSidedLow) + ", < " + s.text(s.OneSidedHigh)
+		}
+		if limits != nil {
+			cp, cpk := s.Capability(limits[i].Low, limits[i].High)
+			row[4], row[5] = index(cp), index(cpk)
+		}
 		var outliers []string
 		for _, o := range s.Outliers {
 			outliers = append(outliers, o.Part)
 		}
-		row := []string{s.Figure.String(), strconv.Itoa(s.N), s.text(s.Mean), spreadText(s), s.text(s.Median), s.text(s.Min), s.text(s.Max),
-			"", "", probability(s.AndersonDarlingP), strings.Join(outliers, ", ")}
-		if !math.IsNaN(s.ToleranceLow) {
-			row[7] = s.text(s.ToleranceLow) + " … " + s.text(s.ToleranceHigh)
-			row[8] = "> " + s.text(s.OneSidedLow) + ", < " + s.text(s.OneSidedHigh)
-		}
-		if limits != nil {
-			cp, cpk := s.Capability(limits[i].Low, limits[i].High)
-			row = slices.Insert(row, 10, index(cp), index(cpk))
-		}
-		rows = append(rows, row)
+		row[6] = strings.Join(outliers, ", ")
+		spread = append(spread, row)
 	}
-	l.Table(rows, align)
+	if !open {
+		values[0][7] = ""
+	}
+	if limits == nil {
+		spread[0][4], spread[0][5] = "", ""
+	}
+	l.Table(values, "lrrrrrrr")
+	l.Line("")
+	l.Table(spread, "lrrrrrl")
 }
 
 func index(v float64) string {
@@ -162,19 +171,16 @@ func probability(p float64) string {
 
 // cells is a row of the table.
 func (r Row) cells() []string {
-	cells := []string{r.name(), r.reference.text(r.reference.Mean), r.lot.text(r.lot.Mean), "", "", "", "", string(r.Verdict)}
+	cells := []string{r.name(), r.reference.text(r.reference.Mean), r.lot.text(r.lot.Mean), "", "", "", string(r.Verdict)}
 	if r.Difference != nil {
 		cells[3] = r.change(*r.Difference, true)
 	}
 	if r.Low95 != nil {
-		cells[4] = r.change(*r.Low95, true) + " … " + r.change(*r.High95, true)
+		cells[4] = strings.TrimSuffix(r.change(*r.Low95, true), " %") + " … " + r.change(*r.High95, true)
 		cells[5] = probability(number(r.PHolm))
 	}
-	if r.Detectable != nil {
-		cells[6] = r.change(*r.Detectable, false)
-	}
 	if r.P == nil {
-		cells[7] += " (fewer than 3 values)"
+		cells[6] += " (fewer than 3 values)"
 	}
 	return cells
 }

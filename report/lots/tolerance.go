@@ -21,11 +21,11 @@ func ToleranceOneSided(n int, share, confidence float64) float64 {
 		return math.NaN()
 	}
 	root := math.Sqrt(float64(n))
-	nu, delta := float64(n-1), distuv.UnitNormal.Quantile(share)*root
-	k := rising(0, distuv.UnitNormal.Quantile(share)+1, func(k float64) float64 {
-		return noncentralT(k*root, nu, delta) - confidence
+	delta := distuv.UnitNormal.Quantile(share) * root
+	t := newNoncentral(float64(n - 1))
+	return rising(0, distuv.UnitNormal.Quantile(share)+1, func(k float64) float64 {
+		return t.cdf(k*root, delta) - confidence
 	})
-	return k
 }
 
 // ToleranceTwoSided returns the factor k of the two-sided tolerance interval

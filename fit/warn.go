@@ -79,11 +79,12 @@ func pointCount(n int) string {
 	return fmt.Sprintf("%d points", n)
 }
 
-// countNonPassive counts points with a negative resistance.
+// countNonPassive counts points with a negative resistance, beyond what the
+// rounding of the numbers in a file explains.
 func countNonPassive(z []complex128) int {
 	n := 0
 	for _, v := range z {
-		if real(v) < 0 {
+		if real(v) < -roundingFloor*abs(v) {
 			n++
 		}
 	}

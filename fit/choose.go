@@ -189,17 +189,22 @@ func (p *problem) lossAt(x []float64, scale float64) float64 {
 
 // aicc returns Akaike's information criterion for a cost, see [Candidate].
 func (r *Result) aicc(cost float64) float64 {
-	n := float64(2 * len(r.Freq))
-	k := float64(len(r.Free) + 1)
-	variance := 2 * cost / n
+	n := 2 * len(r.Freq)
+	squares := 2 * cost
 	if r.Weight == Relative {
-		variance = max(variance, roundingFloor*roundingFloor)
+		squares = max(squares, roundingFloor*roundingFloor*float64(n))
 	}
-	correction := math.Inf(1)
-	if n-k-1 > 0 {
-		correction = 2 * k * (k + 1) / (n - k - 1)
+	return aicc(squares, n, len(r.Free)+1)
+}
+
+// aicc returns n·ln(S/n) + 2k + 2k(k+1)/(n−k−1) for n residuals with the sum
+// of squares S and k parameters, the variance among them.
+func aicc(squares float64, residuals, parameters int) float64 {
+	n, k := float64(residuals), float64(parameters)
+	if n-k-1 <= 0 {
+		return math.Inf(1)
 	}
-	return n*math.Log(variance) + 2*k + correction
+	return n*math.Log(squares/n) + 2*k + 2*k*(k+1)/(n-k-1)
 }
 
 // soundness reports whether every parameter is determined, and if not, why

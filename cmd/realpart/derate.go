@@ -364,7 +364,7 @@ func (d *derateFlags) run(f *fitFlags, inputs []ingest.Input, s streams) error {
 	if d.json {
 		err = assessment.WriteJSON(s.out)
 	} else {
-		err = assessment.WriteText(s.out, derating.TextOptions{Width: min(terminalWidth(s.out), 100), Quiet: f.quiet})
+		err = assessment.WriteText(s.out, derating.TextOptions{Width: min(terminalWidth(s.out), 100), Colour: wantsColour(s.out), Quiet: f.quiet})
 	}
 	if err != nil {
 		return err

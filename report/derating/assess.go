@@ -193,7 +193,7 @@ func (a *assessor) temperatures(series []Sweep) error {
 		return err
 	}
 	a.course = course
-	for _, s := range series {
+	for _, s := range byTemperature(series) {
 		a.Series = append(a.Series, measured(s))
 	}
 	return nil

@@ -1,6 +1,7 @@
 package derating
 
 import (
+	"cmp"
 	"fmt"
 	"math"
 	"slices"
@@ -32,16 +33,7 @@ const sameTemperature = 2
 // newCourse makes a course over the given frequencies from sweeps whose
 // temperatures are known.
 func newCourse(series []Sweep, base float64, freq []float64) (*course, error) {
-	sorted := slices.Clone(series)
-	slices.SortStableFunc(sorted, func(a, b Sweep) int {
-		switch {
-		case a.Temperature < b.Temperature:
-			return -1
-		case a.Temperature > b.Temperature:
-			return 1
-		}
-		return 0
-	})
+	sorted := byTemperature(series)
 	for i := 1; i < len(sorted); i++ {
 		if a, b := sorted[i-1], sorted[i]; b.Temperature-a.Temperature < sameTemperature {
 			return nil, &fit.InputError{Flag: "--at-temperature", Found: fmt.Sprintf("%s at %v °C and %s at %v °C", a.Part, a.Temperature, b.Part, b.Temperature),
@@ -70,6 +62,11 @@ func newCourse(series []Sweep, base float64, freq []float64) (*course, error) {
 		c.lnBase[line] = c.lnAt(i, share, line)
 	}
 	return c, nil
+}
+
+// byTemperature returns sweeps in rising order.
+func byTemperature(series []Sweep) []Sweep {
+	return slices.SortedStableFunc(slices.Values(series), func(a, b Sweep) int { return cmp.Compare(a.Temperature, b.Temperature) })
 }
 
 // segment returns the sweep below a temperature in °C and the share of the way

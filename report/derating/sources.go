@@ -12,6 +12,9 @@ import (
 	"realpart/report/lots"
 )
 
+// steepEdges is the code of a warning that the text needs.
+const steepEdges = "steep-edges"
+
 // noticeable is the share of the loss below which a fault of its resistance is
 // not worth words.
 const noticeable = 0.001
@@ -27,7 +30,7 @@ func (a *assessor) sources() {
 			main = i
 		}
 	}
-	at := "direct current"
+	at := "the low end of the sweep"
 	if f := a.freq[main]; f > 0 {
 		at = report.FormatFrequency(f)
 	}
@@ -199,7 +202,7 @@ func (a *assessor) warnVoltage() {
 		return
 	}
 	if v.OwnPeak && a.ripple.steps {
-		a.warning("steep-edges", "The current jumps in its edges, where the voltage across an inductance has no bound: the ripple's peak is that of the harmonics listed. A trapezoid with the rise time gives it.")
+		a.warning(steepEdges, "The current jumps in its edges, where the voltage across an inductance has no bound: the ripple's peak is that of the harmonics listed. A trapezoid with the rise time gives it.")
 	}
 	if low := v.DCV + v.RippleTroughV; v.DCV > 0 && low < 0 {
 		a.warning("reverse-voltage", fmt.Sprintf("The voltage falls to %s: a polarised capacitor must not be reversed.", quantity.Format(low, "V", 3)))

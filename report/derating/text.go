@@ -3,7 +3,9 @@ package derating
 import (
 	"fmt"
 	"io"
+	"math"
 	"slices"
+	"strconv"
 	"strings"
 
 	"github.com/rivo/uniseg"
@@ -14,21 +16,22 @@ import (
 
 // TextOptions steer [Assessment.WriteText].
 type TextOptions struct {
-	Width int  // columns; 0 means 80
-	Quiet bool // no cautions
+	Width  int  // columns; 0 means 80
+	Colour bool // for a terminal
+	Quiet  bool // no cautions
 }
 
 // WriteText writes the assessment for a person to read: the answer first, then
 // what it rests on.
 func (a *Assessment) WriteText(w io.Writer, o TextOptions) error {
-	t := &text{width: max(60, o.Width)}
 	if o.Width == 0 {
-		t.width = 80
+		o.Width = 80
 	}
+	t := text{report.NewLayout(o.Width, o.Colour)}
 	t.heading(a)
 	t.answer(a)
 	if len(a.Warnings) > 0 {
-		t.title("Warnings")
+		t.Title("Warnings")
 		for i, w := range a.Warnings {
 			t.paragraph(fmt.Sprintf("%3d  ", i+1), w.Code+": "+w.Text)
 		}
@@ -39,7 +42,7 @@ func (a *Assessment) WriteText(w io.Writer, o TextOptions) error {
 	t.voltage(a)
 	t.life(a)
 	if len(a.Uncertainty) > 0 {
-		t.title("What the loss is uncertain by, and what would reduce it")
+		t.Title("What the loss is uncertain by, and what would reduce it")
 		for _, s := range a.Uncertainty {
 			lead := "  –  "
 			if s.Relative95 != nil {
@@ -52,80 +55,22 @@ func (a *Assessment) WriteText(w io.Writer, o TextOptions) error {
 		}
 	}
 	if !o.Quiet {
-		t.title("Cautions")
+		t.Title("Cautions")
 		for _, c := range a.Cautions {
 			t.paragraph("  ", c)
 		}
 	}
-	_, err := io.WriteString(w, t.b.String())
+	_, err := io.WriteString(w, t.String())
 	return err
 }
 
-// text gathers lines.
-type text struct {
-	b     strings.Builder
-	width int
-}
-
-func (t *text) line(s string) { t.b.WriteString(strings.TrimRight(s, " ") + "\n") }
-
-func (t *text) title(s string) {
-	t.line("")
-	t.line(s)
-}
+// text is a layout whose paragraphs have one indent.
+type text struct{ *report.Layout }
 
 // paragraph wraps a text behind a first indent; further lines are indented
 // alike.
-func (t *text) paragraph(first, s string) {
-	indent := strings.Repeat(" ", uniseg.StringWidth(first))
-	line, empty := first, true
-	for _, word := range strings.Fields(clean(s)) {
-		if !empty && uniseg.StringWidth(line)+1+uniseg.StringWidth(word) > t.width {
-			t.line(line)
-			line, empty = indent, true
-		}
-		if !empty {
-			line += " "
-		}
-		line += word
-		empty = false
-	}
-	t.line(line)
-}
-
-// table writes rows in columns two spaces apart, numbers to the right. Columns
-// that are empty below their heading are left out.
-func (t *text) table(rows [][]string) {
-	width := make([]int, len(rows[0]))
-	for i := range width {
-		filled := false
-		for k, row := range rows {
-			width[i] = max(width[i], uniseg.StringWidth(row[i]))
-			filled = filled || k > 0 && row[i] != ""
-		}
-		if !filled {
-			width[i] = 0
-		}
-	}
-	for _, row := range rows {
-		s := ""
-		for i, cell := range row {
-			if width[i] > 0 {
-				s += "  " + strings.Repeat(" ", width[i]-uniseg.StringWidth(cell)) + cell
-			}
-		}
-		t.line(s)
-	}
-}
-
-// clean makes text from a file harmless on a terminal.
-func clean(s string) string {
-	return strings.Map(func(r rune) rune {
-		if r < ' ' || r == 0x7f {
-			return ' '
-		}
-		return r
-	}, s)
+func (t text) paragraph(first, s string) {
+	t.Paragraph(first, strings.Repeat(" ", uniseg.StringWidth(first)), s)
 }
 
 func celsius(v float64) string { return fmt.Sprintf("%.1f °C", v) }
@@ -141,19 +86,19 @@ func interval(value float64, low, high *float64, unit string) string {
 	return quantity.FormatInterval(value, *low, *high, unit)
 }
 
-func (t *text) heading(a *Assessment) {
+func (t text) heading(a *Assessment) {
 	switch {
 	case a.Statistics == nil:
-		t.line(clean(a.Part))
-		t.line(clean(a.Parts[0].File))
+		t.Heading(a.Part)
+		t.Line(a.Parts[0].File)
 		t.paragraph("", string(a.Kind)+", "+a.Parts[0].Circuit)
 	default:
 		name := "lot"
 		if a.Lot != "" {
-			name += " " + clean(a.Lot)
+			name += " " + a.Lot
 		}
-		t.line(name)
-		t.line(fmt.Sprintf("%d parts, %s", len(a.Parts), a.Kind))
+		t.Heading(name)
+		t.Line(fmt.Sprintf("%d parts, %s", len(a.Parts), a.Kind))
 	}
 	if a.Series != nil {
 		var at []string
@@ -165,15 +110,14 @@ func (t *text) heading(a *Assessment) {
 }
 
 // answer is the verdict and what is left to each limit.
-func (t *text) answer(a *Assessment) {
-	t.line("")
+func (t text) answer(a *Assessment) {
 	switch a.Verdict {
 	case Within:
-		t.line("WITHIN the limits given")
+		t.Title("WITHIN the limits given")
 	case Exceeded:
-		t.line("EXCEEDED")
+		t.Title("EXCEEDED")
 	default:
-		t.line("No verdict: no temperature limit was given")
+		t.Title("No verdict: no temperature limit was given")
 	}
 	switch {
 	case a.Runaway:
@@ -221,6 +165,11 @@ func (t *text) answer(a *Assessment) {
 	t.paragraph("  ", "loss "+interval(a.LossW, a.LossLow95W, a.LossHigh95W, "W"))
 }
 
+// stepped tells that the current jumps.
+func (a *Assessment) stepped() bool {
+	return slices.ContainsFunc(a.Warnings, func(w Warning) bool { return w.Code == steepEdges })
+}
+
 func shareText(v float64) string {
 	if v < 1e-6 {
 		return "less than 0.0001 %"
@@ -231,11 +180,15 @@ func shareText(v float64) string {
 // mostRows is how many harmonics are printed; JSON has all.
 const mostRows = 12
 
-func (t *text) ripple(a *Assessment) {
-	t.title("Loss by harmonic")
+func (t text) ripple(a *Assessment) {
+	t.Title("Loss by harmonic")
+	ripple := len(a.Harmonics)
+	if a.Ripple.DirectA > 0 {
+		ripple--
+	}
 	s := a.Ripple.Text + ": " + amperes(a.Ripple.RMSA) + " RMS"
 	if a.Ripple.CoveredShare < 1-1e-9 {
-		s += fmt.Sprintf("; %s hold %.2f %% of its square", count(len(a.Harmonics), "harmonic", "harmonics"), 100*a.Ripple.CoveredShare)
+		s += fmt.Sprintf("; %s hold %.2f %% of its square", count(ripple, "harmonic", "harmonics"), 100*a.Ripple.CoveredShare)
 	}
 	if a.Ripple.DirectA > 0 {
 		s += "; direct current " + amperes(a.Ripple.DirectA)
@@ -257,11 +210,14 @@ func (t *text) ripple(a *Assessment) {
 	})
 	shown = shown[:min(len(shown), mostRows)]
 	slices.Sort(shown)
-	fitted, second := "ESR fitted", "95 % interval"
+	ohms := ohmsOf(a, shown)
+	rows := [][]string{{"at", "RMS", "ESR/" + ohms.unit, "95 % interval", "measured", "", "", "loss", "share", ""}}
 	if a.Statistics != nil {
-		fitted, second = "ESR bound", "mean, worst"
+		rows[0] = []string{"at", "RMS", "bound/" + ohms.unit, "mean", "measured", "worst", "", "loss", "share", ""}
 	}
-	rows := [][]string{{"at", "RMS", fitted, second, "measured", "hot", "loss", "share", ""}}
+	if a.Series != nil && a.HotSpotC != nil {
+		rows[0][6] = "hot"
+	}
 	var rest Harmonic
 	outside, below := false, false
 	for i, h := range a.Harmonics {
@@ -270,38 +226,29 @@ func (t *text) ripple(a *Assessment) {
 			rest.Share += h.Share
 			continue
 		}
-		row := []string{report.FormatFrequency(h.FHz), amperes(h.IRMSA), quantity.Format(h.ESROhm, "Ω", 4), "", "", "", quantity.Format(h.LossW, "W", 3), fmt.Sprintf("%.1f %%", 100*h.Share), ""}
+		row := []string{report.FormatFrequency(h.FHz), amperes(h.IRMSA), ohms.three(&h.ESROhm), "", ohms.three(h.Measured), "", ohms.three(h.Hot), quantity.Format(h.LossW, "W", 3), fmt.Sprintf("%.1f %%", 100*h.Share), ""}
 		if h.FHz == 0 {
 			row[0] = "direct"
 		}
 		if a.Statistics != nil {
-			row[3] = quantity.Format(*h.Mean, "Ω", 3) + ", " + quantity.Format(*h.Worst, "Ω", 3)
+			row[3], row[5] = ohms.three(h.Mean), ohms.three(h.Worst)
 		} else if h.Low95 != nil && h.High95 != nil && *h.Low95 < *h.High95 {
-			text := quantity.FormatInterval(h.ESROhm, *h.Low95, *h.High95, "Ω")
-			if value, within, ok := strings.Cut(text, " ("); ok {
-				row[2], row[3] = value, strings.TrimSuffix(within, ")")
-			}
-		}
-		if h.Measured != nil {
-			row[4] = quantity.Format(*h.Measured, "Ω", 3)
-		}
-		if h.Hot != nil {
-			row[5] = quantity.Format(*h.Hot, "Ω", 3)
+			row[2], row[3] = ohms.interval(h.ESROhm, *h.Low95, *h.High95)
 		}
 		if !h.InSweep && h.FHz > 0 {
-			row[8] += "o"
+			row[9] += "o"
 			outside = true
 		}
 		if h.BelowResolution != nil && *h.BelowResolution {
-			row[8] += "*"
+			row[9] += "*"
 			below = true
 		}
 		rows = append(rows, row)
 	}
 	if n := len(a.Harmonics) - len(shown); n > 0 {
-		rows = append(rows, []string{fmt.Sprintf("%d more", n), "", "", "", "", "", quantity.Format(rest.LossW, "W", 3), fmt.Sprintf("%.1f %%", 100*rest.Share), ""})
+		rows = append(rows, []string{fmt.Sprintf("%d more", n), "", "", "", "", "", "", quantity.Format(rest.LossW, "W", 3), fmt.Sprintf("%.1f %%", 100*rest.Share), ""})
 	}
-	t.table(rows)
+	t.Table(rows, "rrrrrrrrrl")
 	if a.HotSpotC != nil && a.Series != nil {
 		t.paragraph("  ", "hot: the ESR at the hot spot, which the loss is made with")
 	}
@@ -313,11 +260,55 @@ func (t *text) ripple(a *Assessment) {
 	}
 }
 
-func (t *text) temperature(a *Assessment) {
+// ohms writes resistances with the one prefix of a column.
+type ohms struct {
+	unit  string
+	scale float64
+}
+
+func ohmsOf(a *Assessment, shown []int) ohms {
+	largest := 0.0
+	for _, i := range shown {
+		largest = max(largest, a.Harmonics[i].ESROhm)
+	}
+	for _, o := range []ohms{{"kΩ", 1e-3}, {"Ω", 1}, {"mΩ", 1e3}} {
+		if largest*o.scale >= 1 {
+			return o
+		}
+	}
+	return ohms{"µΩ", 1e6}
+}
+
+// three writes a resistance with three significant digits, "" for none.
+func (o ohms) three(v *float64) string {
+	if v == nil {
+		return ""
+	}
+	return o.decimals(*v, decimalsOf(*v*o.scale, 3))
+}
+
+func (o ohms) decimals(v float64, n int) string { return strconv.FormatFloat(v*o.scale, 'f', n, 64) }
+
+// interval rounds a resistance and its interval to the place of the second
+// digit of the nearer side's width (GUM 7.2.6).
+func (o ohms) interval(v, low, high float64) (value, interval string) {
+	n := decimalsOf(min(high-v, v-low)*o.scale, 2)
+	return o.decimals(v, n), o.decimals(low, n) + " … " + o.decimals(high, n)
+}
+
+// decimalsOf is how many digits behind the point show so many significant ones.
+func decimalsOf(v float64, significant int) int {
+	if !(v > 0) {
+		return significant - 1
+	}
+	return min(max(significant-1-int(math.Floor(math.Log10(v))), 0), 9)
+}
+
+func (t text) temperature(a *Assessment) {
 	if a.RthKPerW == nil {
 		return
 	}
-	t.title("Temperature")
+	t.Title("Temperature")
 	t.paragraph("  ", "thermal resistance "+quantity.Format(*a.RthKPerW, "K/W", 3)+", "+a.RthFrom)
 	if a.RiseK == nil {
 		return
@@ -332,12 +323,12 @@ func (t *text) temperature(a *Assessment) {
 	t.paragraph("  ", s)
 }
 
-func (t *text) lot(a *Assessment) {
+func (t text) lot(a *Assessment) {
 	s := a.Statistics
 	if s == nil {
 		return
 	}
-	t.title("Lot")
+	t.Title("Lot")
 	t.paragraph("  ", fmt.Sprintf("ESR is the upper one-sided tolerance bound at each frequency: mean + %.3f s, above %g %% of a normal lot with %g %% confidence (n = %d)",
 		s.Factor, 100*s.CoveredShare, 100*s.Confidence, s.N))
 	t.paragraph("  ", fmt.Sprintf("loss by the bound %s; mean of the parts %s, s %s", quantity.Format(a.LossW, "W", 3), quantity.Format(s.MeanLossW, "W", 3), quantity.Format(s.SDLossW, "W", 2)))
@@ -348,14 +339,17 @@ func (t *text) lot(a *Assessment) {
 	t.paragraph("  ", line)
 }
 
-func (t *text) voltage(a *Assessment) {
+func (t text) voltage(a *Assessment) {
 	v := a.Voltage
 	if v == nil {
 		return
 	}
-	t.title("Voltage")
+	t.Title("Voltage")
 	what := "√2·ΣI·|Z|, the worst case since phases are not known"
-	if v.OwnPeak {
+	switch {
+	case v.OwnPeak && a.stepped():
+		what = "of the harmonics above"
+	case v.OwnPeak:
 		what = "of the waveform itself"
 	}
 	t.paragraph("  ", fmt.Sprintf("%s direct and a ripple peak of %s (%s): %s", volts(v.DCV), volts(v.RipplePeakV), what, volts(v.PeakV)))
@@ -364,11 +358,11 @@ func (t *text) voltage(a *Assessment) {
 	}
 }
 
-func (t *text) life(a *Assessment) {
+func (t text) life(a *Assessment) {
 	if a.Life == nil {
 		return
 	}
-	t.title("Life")
+	t.Title("Life")
 	s := fmt.Sprintf("%.0f h at the hot spot, from %.0f h at %g °C by %s; for wet aluminium electrolytics alone, not judged", *a.LifeH, a.Life.RatedH, a.Life.RatedC, a.Life.Rule)
 	if a.Life.Capped {
 		s = "capped: more than " + s

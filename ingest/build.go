@@ -469,6 +469,9 @@ func negated(v []float64) []float64 {
 	return out
 }
 
+// contradictionPairs is how many pairs of points it takes to doubt a stated unit.
+const contradictionPairs = 8
+
 // radians converts a column of angles, telling the unit from the values where
 // the header does not state it.
 func (b *builder) radians(seg *segment, col int, f, mag []float64, quiet bool) ([]float64, bool) {
@@ -507,6 +510,10 @@ func (b *builder) radians(seg *segment, col int, f, mag []float64, quiet bool) (
 			signed = negated(raw)
 		}
 		unit, why := phaseUnit(f, mag, signed)
+		line := slopeFactor(f, mag, signed)
+		if line.pairs < contradictionPairs && largest(signed) <= beyondPi {
+			unit = angleUnknown // too few to gainsay a header
+		}
 		stated := angleDegrees
 		if dim == "rad" {
 			stated = angleRadians
@@ -523,7 +530,8 @@ func (b *builder) radians(seg *segment, col int, f, mag []float64, quiet bool) (
 			b.refuse(e)
 			return nil, false
 		}
-		if k, predicted, n := slopeFactor(f, mag, signed); n >= 3 && predicted >= 3 && stated == angleDegrees && -mostFactor <= k && k <= -leastFactor {
+		if k := line.factor; line.pairs >= contradictionPairs && line.predicted >= 3 && line.agreement >= leastAgreement &&
+			stated == angleDegrees && -mostFactor <= k && k <= -leastFactor {
 			b.warn(WarnUnchecked, "the phase has the opposite sign of what the slope of the magnitude asks for (factor %.2f): a capacitor's phase is negative in Z and positive in Y", k)
 		}
 	}
@@ -547,10 +555,8 @@ func (b *builder) tellAngle(f, mag, raw []float64, h *heading) (angleUnit, strin
 	}
 	if h.role == roleSPhase {
 		// No slope rule holds for a reflection.
-		for _, v := range raw {
-			if math.Abs(v) > math.Pi*1.001 {
-				return angleDegrees, fmt.Sprintf("values such as %.4g exceed π", v)
-			}
+		if v := largest(raw); v > beyondPi {
+			return angleDegrees, fmt.Sprintf("values up to %.4g exceed π", v)
 		}
 		return angleUnknown, "no value exceeds π"
 	}

@@ -44,18 +44,16 @@ func (u angleUnit) short() string {
 // slope is too small (a resistor) or the factor fits neither. The relation holds
 // for |Z| and its phase and for |Y| and its phase alike.
 func phaseUnit(freq, mag, phase []float64) (angleUnit, string) {
-	largest := 0.0
-	for _, p := range phase {
-		largest = max(largest, math.Abs(p))
+	if v := largest(phase); v > beyondPi {
+		return angleDegrees, fmt.Sprintf("values up to %.4g exceed π", v)
 	}
-	if largest > math.Pi*1.001 {
-		return angleDegrees, fmt.Sprintf("values up to %.4g exceed π", largest)
-	}
-	k, predicted, n := slopeFactor(freq, mag, phase)
-	if n < 3 || predicted < 3 {
-		return angleUnknown, "the magnitude changes too little to tell"
-	}
+	s := slopeFactor(freq, mag, phase)
+	k := s.factor
 	switch {
+	case s.pairs < 3 || s.predicted < 3:
+		return angleUnknown, "the magnitude changes too little to tell"
+	case !(s.agreement >= leastAgreement):
+		return angleUnknown, "the phase does not follow the slope of ln|Z|"
 	case leastFactor <= k && k <= mostFactor:
 		return angleDegrees, fmt.Sprintf("the slope of ln|Z| agrees (factor %.2f)", k)
 	case leastFactor <= k*180/math.Pi && k*180/math.Pi <= mostFactor:
@@ -64,21 +62,59 @@ func phaseUnit(freq, mag, phase []float64) (angleUnit, string) {
 	return angleUnknown, fmt.Sprintf("the slope of ln|Z| fits neither (factor %.3g)", k)
 }
 
+// beyondPi is where an angle can no longer be in radians; a little above π, for
+// rounding.
+const beyondPi = 1.001 * math.Pi
+
+func largest(v []float64) float64 {
+	m := 0.0
+	for _, x := range v {
+		m = max(m, math.Abs(x))
+	}
+	return m
+}
+
 // The factors that are taken for agreement: capacitors, inductors and beads over
 // a few decades give 0.8 to 1.1 (see the test), resonances between two points and
 // short sweeps somewhat more.
 const (
-	leastFactor = 0.6
-	mostFactor  = 1.5
+	leastFactor    = 0.6
+	mostFactor     = 1.5
+	leastAgreement = 0.8
 )
 
+// slopePoints are enough to tell a factor of 57.
+const slopePoints = 64
+
+// thinned keeps about so many of the indices, evenly, the first and the last
+// among them.
+func thinned(order []int, most int) []int {
+	step := (len(order) + most - 1) / most
+	if step <= 1 {
+		return order
+	}
+	var out []int
+	for i := 0; i < len(order)-1; i += step {
+		out = append(out, order[i])
+	}
+	return append(out, order[len(order)-1])
+}
+
+// slope is how a phase follows the slope of the magnitude.
+type slope struct {
+	factor    float64 // of the regression
+	predicted float64 // rms of 90° times the slope, degrees
+	agreement float64 // 0 … 1, the cosine between the two
+	pairs     int     // of points
+}
+
 // slopeFactor is the regression through the origin of phase on 90°·slope, over
-// pairs of points at least 5 % apart in frequency; predicted is the rms of the
-// latter in degrees.
-func slopeFactor(freq, mag, phase []float64) (k, predicted float64, n int) {
-	var sxy, sxx float64
+// pairs of points at least 5 % apart in frequency, thinned.
+func slopeFactor(freq, mag, phase []float64) slope {
+	var sxy, sxx, syy float64
+	n := 0
 	j := 0
-	order := sortedOrder(freq)
+	order := thinned(sortedOrder(freq), slopePoints)
 	for _, i := range order {
 		a := order[j]
 		if !(freq[i] > 1.05*freq[a]) {
@@ -99,10 +135,11 @@ func slopeFactor(freq, mag, phase []float64) (k, predicted float64, n int) {
 		}
 		sxy += x * y
 		sxx += x * x
+		syy += y * y
 		n++
 	}
-	if n == 0 || sxx == 0 {
-		return 0, 0, n
+	if n == 0 || sxx == 0 || syy == 0 {
+		return slope{pairs: n}
 	}
-	return sxy / sxx, math.Sqrt(sxx / float64(n)), n
+	return slope{factor: sxy / sxx, predicted: math.Sqrt(sxx / float64(n)), agreement: math.Abs(sxy) / math.Sqrt(sxx*syy), pairs: n}
 }

@@ -197,6 +197,24 @@ func TestAmbiguous(t *testing.T) {
 	}
 }
 
+// A phase that does not follow the slope tells nothing, and a header with few
+// points below is believed.
+func TestPhaseUnitNeedsAgreement(t *testing.T) {
+	var f, mag, phase []float64
+	for i := range 40 {
+		f = append(f, math.Pow(10, float64(i)/8))
+		mag = append(mag, math.Pow(10, math.Sin(float64(i))))
+		phase = append(phase, -1.5)
+	}
+	if u, why := phaseUnit(f, mag, phase); u != angleUnknown {
+		t.Errorf("%v: %s", u, why)
+	}
+	s := one(t, "a.csv", "f (Hz),|Z| (Ohm),Theta (deg)\n100,10,-1.5\n1000,1,-1.5\n10000,0.1,-1.5\n100000,0.01,-1.5\n", nil)
+	if !near(s.Z[0], cmplx.Rect(10, -1.5/deg), 1e-14) {
+		t.Errorf("%v", s.Z[0])
+	}
+}
+
 // A phase of the wrong sign is warned of; it may be a convention of its own.
 func TestPhaseSign(t *testing.T) {
 	s := one(t, "a.csv", textTable("f (Hz),|Z| (Ohm),Theta (deg)", ",", func(f float64, z complex128) []float64 {

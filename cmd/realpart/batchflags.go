@@ -21,7 +21,8 @@ type batchFlags struct {
 	filesFrom, jsonOut string
 	resume, perPart    bool
 	quiet              bool
-	listed             int // the last so many inputs come from --files-from
+	streaming          bool // results go to standard output as they come
+	listed             int  // the last so many inputs come from --files-from
 }
 
 func (f *batchFlags) register(flags *pflag.FlagSet) {

@@ -79,6 +79,9 @@ the smallest sum of AICc over all parts, unless --circuit says which.`,
 				err = writeJSON(s.out, c)
 			} else {
 				err = c.WriteText(s.out, lots.TextOptions{Width: terminalWidth(s.out), Colour: wantsColour(s.out)})
+				if err == nil && !f.quiet {
+					err = writeCautions(s.out, terminalWidth(s.out))
+				}
 			}
 			if err != nil {
 				return err

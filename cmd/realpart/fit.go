@@ -14,6 +14,7 @@ import (
 	"realpart/ingest"
 	"realpart/report"
 	"realpart/report/figure"
+	"realpart/report/lots"
 	"realpart/report/netlist"
 	"realpart/report/page"
 )
@@ -131,6 +132,7 @@ const fullReports = 3
 
 func (o *fitOutputs) run(f *fitFlags, inputs []ingest.Input, s streams) error {
 	text := !o.json && f.jsonOut == ""
+	f.streaming = o.json
 	var all, shown []kept
 	batchErr := f.batch(inputs, s, func(r fitted) error {
 		k := kept{record: r.record}
@@ -181,6 +183,9 @@ func (o *fitOutputs) show(parts []kept, f *fitFlags, s streams) error {
 		if err := report.WriteSummary(&b, fits, options); err != nil {
 			return err
 		}
+		if err := writeLots(&b, fits, f.at, options); err != nil {
+			return err
+		}
 		b.WriteString("\nFit one sweep for its full report, or write a page of all with --html FILE.\n")
 	} else {
 		for i, k := range parts {
@@ -205,6 +210,32 @@ func (o *fitOutputs) show(parts []kept, f *fitFlags, s streams) error {
 	}
 	_, err := s.out.Write(b.Bytes())
 	return err
+}
+
+// writeLots writes the statistics of every lot of at least three parts: a
+// folder, or a file with several parts.
+func writeLots(b *bytes.Buffer, fits []*report.Fit, at []float64, o report.TextOptions) error {
+	var names []string
+	parts := map[string][]*report.Fit{}
+	for _, r := range fits {
+		name := r.Sweep.Lot
+		if name == "" {
+			name = partOf(r.Sweep.File)
+		}
+		if parts[name] == nil {
+			names = append(names, name)
+		}
+		parts[name] = append(parts[name], r)
+	}
+	for _, name := range names {
+		if len(parts[name]) < 3 {
+			continue
+		}
+		if err := lots.New(name, parts[name]).WriteText(b, at, lots.TextOptions{Width: o.Width, Colour: o.Colour}); err != nil {
+			return err
+		}
+	}
+	return nil
 }
 
 // write writes the output files: those of the parts that could be fitted, and

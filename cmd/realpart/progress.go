@@ -12,10 +12,10 @@ import (
 type bar struct{ shown *progressbar.ProgressBar }
 
 // newBar starts a bar for a number of parts. There is none where standard
-// error is no terminal, and none for reports that go to the same terminal:
-// they show how far it is.
+// error is no terminal, and none where the results themselves run over the
+// same terminal.
 func (b *batch) newBar(what string, parts int) *bar {
-	if b.quiet || !isTerminal(b.s.err) || b.jsonOut == "" && isTerminal(b.s.out) {
+	if b.quiet || !isTerminal(b.s.err) || b.streaming && isTerminal(b.s.out) {
 		return nil
 	}
 	return &bar{progressbar.NewOptions(parts,

@@ -115,7 +115,7 @@ with honest uncertainty.`,
 	root.SetFlagErrorFunc(func(_ *cobra.Command, err error) error {
 		return &exitError{exitUsage, err}
 	})
-	root.AddCommand(newFit(s), newCheck(s), newCompensate(s), newCompare(s), newDerate(s), newSimulate(s), newModels(s))
+	root.AddCommand(newFit(s), newCheck(s), newCompensate(s), newAccept(s), newCompare(s), newDerate(s), newSimulate(s), newModels(s))
 	return root
 }
 

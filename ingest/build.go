@@ -469,9 +469,6 @@ func negated(v []float64) []float64 {
 	return out
 }
 
-// contradictionPairs is how many pairs of points it takes to doubt a stated unit.
-const contradictionPairs = 8
-
 // radians converts a column of angles, telling the unit from the values where
 // the header does not state it.
 func (b *builder) radians(seg *segment, col int, f, mag []float64, quiet bool) ([]float64, bool) {
@@ -511,8 +508,8 @@ func (b *builder) radians(seg *segment, col int, f, mag []float64, quiet bool) (
 		}
 		unit, why := phaseUnit(f, mag, signed)
 		line := slopeFactor(f, mag, signed)
-		if line.pairs < contradictionPairs && largest(signed) <= beyondPi {
-			unit = angleUnknown // too few to gainsay a header
+		if largest(signed) <= beyondPi && !line.gainsays() {
+			unit = angleUnknown
 		}
 		stated := angleDegrees
 		if dim == "rad" {
@@ -530,8 +527,7 @@ func (b *builder) radians(seg *segment, col int, f, mag []float64, quiet bool) (
 			b.refuse(e)
 			return nil, false
 		}
-		if k := line.factor; line.pairs >= contradictionPairs && line.predicted >= 3 && line.agreement >= leastAgreement &&
-			stated == angleDegrees && -mostFactor <= k && k <= -leastFactor {
+		if k := line.factor; line.gainsays() && stated == angleDegrees && -mostFactor <= k && k <= -leastFactor {
 			b.warn(WarnUnchecked, "the phase has the opposite sign of what the slope of the magnitude asks for (factor %.2f): a capacitor's phase is negative in Z and positive in Y", k)
 		}
 	}

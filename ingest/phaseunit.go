@@ -108,6 +108,16 @@ type slope struct {
 	pairs     int     // of points
 }
 
+// gainsays reports whether there is evidence enough to doubt what a header says:
+// a fair agreement over many points, or a very good one over the few spot
+// frequencies of a hand-held meter.
+func (s slope) gainsays() bool {
+	if s.predicted < 3 {
+		return false
+	}
+	return s.pairs >= 8 && s.agreement >= leastAgreement || s.pairs >= 3 && s.agreement >= 0.99
+}
+
 // slopeFactor is the regression through the origin of phase on 90°·slope, over
 // pairs of points at least 5 % apart in frequency, thinned.
 func slopeFactor(freq, mag, phase []float64) slope {

@@ -1,8 +1,8 @@
 package main
 
 import (
-	"errors"
 	"fmt"
+	"io"
 	"math"
 	"slices"
 	"strings"
@@ -163,6 +163,7 @@ func (t *temperatures) of(file string) (float64, bool) {
 type derateFlags struct {
 	ripple                                             string
 	json                                               bool
+	html                                               string
 	rth, ratedRise, ratedESR                           amount
 	ratedRipple, life                                  pair
 	ambient, limit, margin, dc, ratedVoltage, fraction amount
@@ -198,11 +199,15 @@ func (d *derateFlags) register(flags *pflag.FlagSet) {
 	flags.Var(&d.life, "life", "life of a wet aluminium electrolytic and the temperature that it is stated for, such as `5000h@105C`")
 	flags.Var(&d.temperatures, "at-temperature", "`FILE=T`: a sweep of the same part at a temperature in °C; may be repeated")
 	flags.BoolVar(&d.json, "json", false, "one JSON object on standard output")
+	flags.StringVar(&d.html, "html", "", "write a page with figures to `FILE`: loss by harmonic, temperature over ripple current")
 }
 
 // files lists the output files by their flags.
 func (d *derateFlags) files() map[string]string {
-	return map[string]string{}
+	if d.html == "" {
+		return map[string]string{}
+	}
+	return map[string]string{"--html": d.html}
 }
 
 // check reads all flags before any sweep is opened.
@@ -347,7 +352,7 @@ func (d *derateFlags) run(f *fitFlags, inputs []ingest.Input, s streams) error {
 		}
 		return nil
 	})
-	if exit, ok := batchErr.(*exitError); batchErr != nil && (!ok || exit.err != nil) {
+	if !told(batchErr) {
 		return batchErr
 	}
 	if len(parts) == 0 {
@@ -359,7 +364,13 @@ func (d *derateFlags) run(f *fitFlags, inputs []ingest.Input, s streams) error {
 	}
 	assessment, err := derating.Assess(parts, series, d.spectrum, d.conditions)
 	if err != nil {
-		return errors.Join(err, batchErr)
+		return worse(batchErr, err)
+	}
+	if d.html != "" {
+		made := []derating.Made{{Name: "Version", Value: buildVersion()}, {Name: "Command", Value: s.command}}
+		if err := writeFile(d.html, func(w io.Writer) error { return assessment.WritePage(w, made) }); err != nil {
+			return err
+		}
 	}
 	if d.json {
 		err = assessment.WriteJSON(s.out)

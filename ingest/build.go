@@ -446,7 +446,7 @@ func (b *builder) compute(seg *segment, g *group, w measured, f []float64, quiet
 	va, vb := seg.column(w.a), seg.column(w.b)
 	if hb := &p.cols[w.b]; hb.role.isAngle() {
 		vb, ok = b.radians(seg, w.b, f, va, quiet)
-		if !ok {
+		if !ok || p.cols[w.a].presumed && !b.bearsOut(seg, w.a, f, va, vb, quiet) {
 			return nil, nil, false
 		}
 	} else if hb.negate {
@@ -459,6 +459,29 @@ func (b *builder) compute(seg *segment, g *group, w measured, f []float64, quiet
 		z[i] = w.pair.z(2*math.Pi*f[i], va[i], vb[i])
 	}
 	return nil, z, true
+}
+
+// bearsOut tells whether a magnitude and a phase of nothing named can be those of
+// an impedance: the phase follows the slope of the magnitude (Bode), or the
+// magnitude is flat and above 1, which no reflection is. S-parameters do not pass.
+// An admittance follows the relation as well: that |Z| in Ω was assumed is
+// therefore said in a warning.
+func (b *builder) bearsOut(seg *segment, col int, f, mag, radians []float64, quiet bool) bool {
+	degrees := make([]float64, len(radians))
+	for i, v := range radians {
+		degrees[i] = v * 180 / math.Pi
+	}
+	line := slopeFactor(f, mag, degrees)
+	flat := line.predicted < 3 && slices.Min(mag) > 1.1
+	if flat || line.gainsays() && line.factor > 0 {
+		return true
+	}
+	if !quiet {
+		e := b.headError(seg.plan, col, "what the magnitude is of", "--columns 'f=1,z=2,phase=3' for |Z|, or y and yphase, with the columns' numbers")
+		e.Found, e.bare, e.Err = "a magnitude and a phase that do not look like those of an impedance", true, ErrAmbiguous
+		b.refuse(e)
+	}
+	return false
 }
 
 func negated(v []float64) []float64 {

@@ -17,6 +17,7 @@ type heading struct {
 	label     string // part, where columns of several parts stand side by side
 	fault     string // why the header cannot be taken as it stands
 	ambiguous bool   // the unit's m could be milli or mega
+	presumed  bool   // a magnitude of nothing named, taken for |Z| if the values bear it out
 }
 
 // known reports whether the heading says anything about a measured quantity.

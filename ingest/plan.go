@@ -191,6 +191,7 @@ func settle(cols []heading, first []string, meta Metadata) {
 		}
 	}
 	hasS := has[roleS] || has[roleSMag] || has[roleSdB] || has[roleSRe]
+	presumeImpedance(cols)
 	// A column of complex numbers in one cell.
 	for i := range cols {
 		c := &cols[i]
@@ -253,6 +254,35 @@ func settle(cols []heading, first []string, meta Metadata) {
 			c.role = equivalent(meta.mode, has, "l", roleLs, roleLp, c.role)
 		}
 	}
+}
+
+// presumeImpedance takes a magnitude and a phase of nothing named for those of Z
+// where they are all there is beside the frequency. The values must bear it
+// out, see [builder.bearsOut].
+func presumeImpedance(cols []heading) {
+	magnitude, angle := -1, -1
+	for i, c := range cols {
+		switch c.role {
+		case roleNone, roleFreq, rolePart:
+		case roleMag:
+			if magnitude >= 0 || c.unit.dim != "" {
+				return
+			}
+			magnitude = i
+		case roleAngle:
+			if angle >= 0 {
+				return
+			}
+			angle = i
+		default:
+			return
+		}
+	}
+	if magnitude < 0 || angle < 0 {
+		return
+	}
+	cols[magnitude].role, cols[magnitude].presumed = roleAbsZ, true
+	cols[angle].role = rolePhase
 }
 
 // equivalent tells a series from a parallel quantity: by the other column (Rs,

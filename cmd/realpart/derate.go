@@ -54,7 +54,7 @@ Several sweeps that state temperatures 5 K or more apart, in the file or by
 			if err := d.check(f); err != nil {
 				return err
 			}
-			if err := distinct(f.outputs(d.files()), append(slices.Clone(args), d.temperatures.files...)); err != nil {
+			if err := distinct(f.outputs(d.files()), d.inputs(args)); err != nil {
 				return err
 			}
 			inputs, err := f.find(args, s)
@@ -210,6 +210,17 @@ func (d *derateFlags) files() map[string]string {
 	return map[string]string{"--html": d.html}
 }
 
+// inputs lists the files that are read.
+func (d *derateFlags) inputs(args []string) []string {
+	in := append(slices.Clone(args), d.temperatures.files...)
+	if !derating.IsRipple(d.ripple) {
+		in = append(in, d.ripple)
+	}
+	// A file may be named as a sweep and for its temperature.
+	slices.Sort(in)
+	return slices.Compact(in)
+}
+
 // check reads all flags before any sweep is opened.
 func (d *derateFlags) check(f *fitFlags) error {
 	if d.ripple == "" {
@@ -334,6 +345,9 @@ func (d *derateFlags) run(f *fitFlags, inputs []ingest.Input, s streams) error {
 			File: r.record.Sweep.File, Part: r.record.Sweep.Part, SHA256: r.record.Sweep.SHA256,
 			Kind: r.analysis.Kind, Fit: r.analysis.Result, Temperature: math.NaN(),
 		}
+		for _, w := range r.record.Warnings {
+			sweep.Warnings = append(sweep.Warnings, derating.Warning(w))
+		}
 		if m := r.sweep.Metadata; m.HasTemperature {
 			sweep.Temperature = m.TemperatureC
 		}
@@ -357,6 +371,9 @@ func (d *derateFlags) run(f *fitFlags, inputs []ingest.Input, s streams) error {
 	}
 	if len(parts) == 0 {
 		return batchErr
+	}
+	if d.conditions.Lot == "" && !slices.ContainsFunc(parts, func(p derating.Sweep) bool { return p.File != parts[0].File }) {
+		d.conditions.Lot = partOf(parts[0].File) // several parts in a file
 	}
 	if onePart(parts) {
 		series = append(parts[:len(parts):len(parts)], series...)

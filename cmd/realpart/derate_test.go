@@ -120,3 +120,32 @@ func caseArguments(line string) []string {
 	}
 	return args
 }
+
+// The exit code is 0, 1 when exceeded, 2 for wrong use, and 3, which outranks 1,
+// when a sweep could not be read.
+func TestDerateExitCodes(t *testing.T) {
+	t.Chdir("../../testdata/derating")
+	for _, c := range []struct {
+		line string
+		want int
+	}{
+		{"derate fifty.csv --circuit cap-esr-esl --ripple 100kHz=2A", 0},
+		{"derate fifty.csv --circuit cap-esr-esl --ripple 100kHz=2A --rth 20 --ambient 60 --limit 61", 1},
+		{"derate fifty.csv --ripple 100kHz=2A --limit 61", 2},
+		{"derate fifty.csv --ripple 100kHz", 2},
+		{"derate fifty.csv choke.csv --ripple 100kHz=2A", 2}, // two kinds
+		{"derate none.csv --ripple 100kHz=2A", 3},
+		{"derate fifty.csv none.csv --circuit cap-esr-esl --ripple 100kHz=2A --rth 20 --ambient 60 --limit 61", 3},
+	} {
+		code, object, stderr := derateJSON(t, caseArguments(c.line)...)
+		if code != c.want {
+			t.Errorf("%s: exit %d, want %d (%s)", c.line, code, c.want, stderr)
+		}
+		if (code == 0 || code == 1) != (stderr == "") {
+			t.Errorf("%s: exit %d with %q on standard error", c.line, code, stderr)
+		}
+		if done := code < 2 || strings.Contains(c.line, "fifty.csv none.csv"); done != (object != nil) {
+			t.Errorf("%s: exit %d, object %v", c.line, code, object)
+		}
+	}
+}

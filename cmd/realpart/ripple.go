@@ -5,6 +5,7 @@ import (
 	"fmt"
 	"math"
 	"os"
+	"slices"
 	"strings"
 
 	"realpart/ingest"
@@ -98,7 +99,7 @@ func readLines(file string, data []byte) (*derating.Spectrum, error) {
 	return s, nil
 }
 
-// unevenStep is how far a step of time may be from the mean one, relative to
+// unevenStep is how far a step of time may be from the median one, relative to
 // it: what the rounding of an oscilloscope's file gives.
 const unevenStep = 0.01
 
@@ -121,12 +122,18 @@ func readPeriod(file string, data []byte) (*derating.Spectrum, error) {
 		}
 	}
 	n := len(times)
-	step := (times[n-1] - times[0]) / float64(n-1)
+	steps := make([]float64, n-1)
+	for i := range steps {
+		steps[i] = times[i+1] - times[i]
+	}
+	slices.Sort(steps)
+	step := steps[(n-1)/2] // the median: a gap shows, where a mean would hide it
 	for i := 1; i < n; i++ {
-		if d := times[i] - times[i-1]; !(math.Abs(d-step) <= unevenStep*step) {
+		if d := times[i] - times[i-1]; !(step > 0 && math.Abs(d-step) <= unevenStep*step) {
 			return nil, fmt.Errorf("%s:%d: expected equal steps of time, here %.4g s, found %.4g s; resample the period", file, at[i], step, d)
 		}
 	}
+	step = (times[n-1] - times[0]) / float64(n-1)
 	s, err := derating.NewSampled(samples, 1/(float64(n)*step))
 	if err != nil {
 		return nil, fmt.Errorf("%s: %w", file, err)

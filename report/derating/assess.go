@@ -21,6 +21,8 @@ type Sweep struct {
 	Kind               models.Kind
 	Fit                *fit.Result
 	Temperature        float64 // °C; NaN where it is not known
+	// Warnings are those of reading and fitting.
+	Warnings []Warning
 }
 
 // Rating is a data sheet's ripple current, the rise that it permits, and the

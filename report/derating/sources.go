@@ -96,7 +96,9 @@ func (a *assessor) sources() {
 		words("one-part", "one part was measured: how far parts differ is not in the interval", "a sweep of each of ten or more parts of the lot")
 	}
 	if a.RthKPerW != nil {
-		if a.c.Rating != nil {
+		if a.rated != nil {
+			words("thermal-resistance", "the thermal resistance follows from a rating and this part's own ESR, so that a high ESR hardly shows in the rise", "--rated-esr with the ESR that the rating stands for, or a thermocouple on the part in its place")
+		} else if a.c.Rating != nil {
 			words("thermal-resistance", "the thermal resistance follows from a rating: cooling in service differs", "a thermocouple on the part in its place")
 		} else {
 			words("thermal-resistance", "the thermal resistance is taken as exact: its error goes into the rise in proportion", "a thermocouple on the part in its place")
@@ -162,11 +164,11 @@ func (a *assessor) warn() {
 	if share, low, high := a.shareOf(func(h Harmonic) bool { return h.BelowResolution != nil && *h.BelowResolution }); low > 0 {
 		a.warning("below-resolution", fmt.Sprintf("The ESR at %s is smaller than the meter's stated accuracy can tell from zero. These harmonics make %s of the loss.", span(low, high), report.FormatPercent(share)))
 	}
-	if a.structured() {
-		a.warning("structured-residual", "The residuals of a fit have a structure: compare the fitted with the measured ESR.")
-	}
 	if a.LossW == 0 {
 		a.warning("no-resistance", "The fitted circuit has no resistance, so that no loss follows; give a circuit with one, such as --circuit cap-esr-esl.")
+	}
+	if a.c.Rating != nil && a.c.Rating.ESR == nil && a.course != nil {
+		a.warning("rated-esr-temperature", fmt.Sprintf("The thermal resistance rests on the ESR at %s. A rating stands for the ESR at its own temperature, as a rule a high one: state --rated-esr.", celsius(a.course.base)))
 	}
 	a.warnRipple()
 	a.warnVoltage()
@@ -178,6 +180,34 @@ func (a *assessor) warn() {
 	}
 	if s := a.Statistics; s != nil && s.N < 10 {
 		a.warning("few-parts", fmt.Sprintf("With %d parts the tolerance bound is wide: a factor of %.3g, against 2.91 with 10 and 1.64 for a whole lot.", s.N, s.Factor))
+	}
+	a.warnFits()
+}
+
+// warnFits hands on what reading and fitting warned of: of a lot once for each
+// code, with the number of sweeps.
+func (a *assessor) warnFits() {
+	type group struct {
+		first Warning
+		part  string
+		n     int
+	}
+	var groups []group
+	for _, p := range a.parts {
+		for _, w := range p.Warnings {
+			i := slices.IndexFunc(groups, func(g group) bool { return g.first.Code == w.Code })
+			if i < 0 {
+				groups = append(groups, group{w, p.Part, 1})
+			} else {
+				groups[i].n++
+			}
+		}
+	}
+	for _, g := range groups {
+		if a.Statistics != nil {
+			g.first.Text = fmt.Sprintf("%d of %d sweeps; of %s: %s", g.n, len(a.parts), g.part, g.first.Text)
+		}
+		a.warning(g.first.Code, g.first.Text)
 	}
 }
 

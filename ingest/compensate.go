@@ -26,8 +26,9 @@ type RangeError struct {
 }
 
 func (e *RangeError) Error() string {
-	return fmt.Sprintf("%s: expected the %s sweep to cover %g Hz, found %g to %g Hz; try: a fixture sweep over the range of the part's",
-		e.File, e.Which, e.Freq, e.Low, e.High)
+	hertz := func(f float64) string { return quantity.Format(f, "Hz", 4) }
+	return fmt.Sprintf("%s: expected the %s sweep to cover %s, found %s to %s; try: a fixture sweep over the range of the part's",
+		e.File, e.Which, hertz(e.Freq), hertz(e.Low), hertz(e.High))
 }
 
 // Apply corrects a sweep for the fixture and returns a new one; the argument is

@@ -115,7 +115,7 @@ func TestInterpolation(t *testing.T) {
 	}
 	_, err := Fixture{Short: s}.Apply(&Sweep{File: "c.csv", Freq: []float64{50}, Z: []complex128{1}})
 	var r *RangeError
-	if !errors.As(err, &r) || err.Error() != "o.csv: expected the short sweep to cover 50 Hz, found 100 to 10000 Hz; try: a fixture sweep over the range of the part's" {
+	if !errors.As(err, &r) || err.Error() != "o.csv: expected the short sweep to cover 50.00 Hz, found 100.0 Hz to 10.00 kHz; try: a fixture sweep over the range of the part's" {
 		t.Errorf("outside: %v", err)
 	}
 }

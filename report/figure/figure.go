@@ -100,43 +100,62 @@ const (
 	lineWidth = vg.Length(1.3)
 )
 
+// axis is the range of an axis with its ticks.
+type axis struct {
+	ticks       plot.Ticker
+	logarithmic bool
+	low, high   float64
+}
+
+// axes starts a figure over the frequencies of the sweep.
 func (d drawing) axes(yTicks plot.Ticker, logarithmic bool, low, high float64) *plot.Plot {
+	return d.style.axes(frequencies(d.Freq), axis{yTicks, logarithmic, low, high})
+}
+
+// frequencies is the axis of a sweep.
+func frequencies(freq []float64) axis {
+	low, high := freq[0], freq[len(freq)-1]
+	if low == high {
+		low, high = low/1.2, high*1.2
+	}
+	return axis{logTicks{"Hz", 6}, true, low, high}
+}
+
+// axes starts a figure: axes, ticks, and a grid with a line at every labelled
+// tick.
+func (s Style) axes(x, y axis) *plot.Plot {
 	p := plot.New()
 	p.BackgroundColor = nil
-	sans := font.Font{Typeface: "Liberation", Variant: "Sans", Size: d.style.FontSize}
-	for _, a := range []*plot.Axis{&p.X, &p.Y} {
-		a.LineStyle.Width, a.LineStyle.Color = thin, d.style.Ink
+	sans := font.Font{Typeface: "Liberation", Variant: "Sans", Size: s.FontSize}
+	for _, a := range []struct {
+		*plot.Axis
+		axis
+	}{{&p.X, x}, {&p.Y, y}} {
+		a.LineStyle.Width, a.LineStyle.Color = thin, s.Ink
 		a.Tick.LineStyle.Width = 0 // see axisTicks
-		a.Tick.Label.Font, a.Tick.Label.Color = sans, d.style.Ink
-		a.Label.TextStyle.Font, a.Label.TextStyle.Color = sans, d.style.Ink
+		a.Tick.Label.Font, a.Tick.Label.Color = sans, s.Ink
+		a.Label.TextStyle.Font, a.Label.TextStyle.Color = sans, s.Ink
 		a.Tick.Length = 2
 		a.Padding = 0
+		a.Tick.Marker = a.ticks
+		if a.logarithmic {
+			a.Scale = plot.LogScale{}
+		}
+		a.Min, a.Max = a.low, a.high
 	}
-	p.X.Scale = plot.LogScale{}
-	xTicks := logTicks{"Hz", 6}
-	p.X.Tick.Marker = xTicks
-	p.X.Min, p.X.Max = d.Freq[0], d.Freq[len(d.Freq)-1]
-	if p.X.Min == p.X.Max {
-		p.X.Min, p.X.Max = p.X.Min/1.2, p.X.Max*1.2
-	}
-	p.Y.Tick.Marker = yTicks
-	if logarithmic {
-		p.Y.Scale = plot.LogScale{}
-	}
-	p.Y.Min, p.Y.Max = low, high
-	// The grid: a line at every labelled tick.
-	grid := &lines{style: draw.LineStyle{Color: d.style.Grid, Width: thin}}
-	for _, t := range xTicks.Ticks(p.X.Min, p.X.Max) {
+	xTicks, yTicks := x.ticks.Ticks(x.low, x.high), y.ticks.Ticks(y.low, y.high)
+	grid := &lines{style: draw.LineStyle{Color: s.Grid, Width: thin}}
+	for _, t := range xTicks {
 		if t.Label != "" {
-			grid.segments = append(grid.segments, [4]float64{t.Value, low, t.Value, high})
+			grid.segments = append(grid.segments, [4]float64{t.Value, y.low, t.Value, y.high})
 		}
 	}
-	for _, t := range yTicks.Ticks(low, high) {
+	for _, t := range yTicks {
 		if t.Label != "" {
-			grid.segments = append(grid.segments, [4]float64{p.X.Min, t.Value, p.X.Max, t.Value})
+			grid.segments = append(grid.segments, [4]float64{x.low, t.Value, x.high, t.Value})
 		}
 	}
-	p.Add(grid, &axisTicks{xTicks.Ticks(p.X.Min, p.X.Max), yTicks.Ticks(low, high), draw.LineStyle{Color: d.style.Ink, Width: thin}})
+	p.Add(grid, &axisTicks{xTicks, yTicks, draw.LineStyle{Color: s.Ink, Width: thin}})
 	return p
 }
 

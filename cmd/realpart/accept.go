@@ -16,6 +16,7 @@ import (
 	"realpart/models/quantity"
 	"realpart/report"
 	"realpart/report/accept"
+	"realpart/report/lotpage"
 	"realpart/report/lots"
 )
 
@@ -57,6 +58,7 @@ a lot, and so are single files together. A lot is accepted if at most
 	flags.StringVar(&o.limits, "limits", "", "`FILE` with the table of limits")
 	flags.StringVar(&o.rule, "rule", string(accept.Guarded), "`guarded` or simple: simple takes the value alone")
 	flags.IntVar(&o.acceptAtMost, "accept-at-most", 0, "accept a lot in which at most `N` parts do not pass")
+	flags.StringVar(&o.html, "html", "", "write a page with the verdicts and strips of every figure to `FILE`")
 	flags.BoolVar(&o.json, "json", false, "JSON Lines on standard output: an object a part, then one for the lot")
 	return cmd
 }
@@ -65,6 +67,7 @@ type acceptFlags struct {
 	limits, rule string
 	acceptAtMost int
 	json         bool
+	html         string
 }
 
 func (o *acceptFlags) run(f *fitFlags, args []string, s streams) error {
@@ -83,7 +86,7 @@ func (o *acceptFlags) run(f *fitFlags, args []string, s streams) error {
 		_, path := splitName(a)
 		paths = append(paths, path)
 	}
-	if err := distinct(f.outputs(map[string]string{}), append(paths, o.limits)); err != nil {
+	if err := distinct(f.outputs(htmlOutput(o.html)), append(paths, o.limits)); err != nil {
 		return err
 	}
 	limits, lines, err := readLimits(o.limits, f.request.Circuit)
@@ -109,9 +112,11 @@ func (o *acceptFlags) run(f *fitFlags, args []string, s streams) error {
 	}
 	layout := report.NewLayout(terminalWidth(s.out), wantsColour(s.out))
 	accepted := true
+	var judged []lotpage.Judged
 	for i, source := range sources {
 		verdict, parts, samples := judge(source, limits, rule, o.acceptAtMost)
 		accepted = accepted && verdict.Verdict == accept.Accepted
+		judged = append(judged, lotpage.Judged{Lot: lots.New(source.name, source.fits()), Verdict: verdict, Parts: parts, Samples: samples})
 		if o.json {
 			for _, p := range parts {
 				if err := writeJSON(s.out, p); err != nil {
@@ -136,6 +141,13 @@ func (o *acceptFlags) run(f *fitFlags, args []string, s streams) error {
 			if err := writeCautions(s.out, terminalWidth(s.out)); err != nil {
 				return err
 			}
+		}
+	}
+	if o.html != "" {
+		if err := writeFile(o.html, func(w io.Writer) error {
+			return lotpage.WriteAcceptance(w, judged, rule, limits, madeOf(sources, s))
+		}); err != nil {
+			return err
 		}
 	}
 	if !accepted {

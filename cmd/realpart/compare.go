@@ -1,6 +1,7 @@
 package main
 
 import (
+	"crypto/sha256"
 	"encoding/json"
 	"fmt"
 	"io"
@@ -9,13 +10,16 @@ import (
 	"github.com/spf13/cobra"
 
 	"realpart/models/quantity"
+	"realpart/report/lotpage"
 	"realpart/report/lots"
+	"realpart/report/page"
 )
 
 func newCompare(s streams) *cobra.Command {
 	f := newFitFlags()
 	m := margins{}
 	var asJSON, exclude bool
+	var html string
 	cmd := &cobra.Command{
 		Use:   "compare LOT LOT…",
 		Short: "Compare lots with the first of them",
@@ -46,7 +50,7 @@ the smallest sum of AICc over all parts, unless --circuit says which.`,
 				_, path := splitName(a)
 				paths = append(paths, path)
 			}
-			if err := distinct(f.outputs(map[string]string{}), paths); err != nil {
+			if err := distinct(f.outputs(htmlOutput(html)), paths); err != nil {
 				return err
 			}
 			var sources []*lotSource
@@ -86,6 +90,13 @@ the smallest sum of AICc over all parts, unless --circuit says which.`,
 			if err != nil {
 				return err
 			}
+			if html != "" {
+				if err := writeFile(html, func(w io.Writer) error {
+					return lotpage.WriteComparison(w, c, all, madeOf(sources, s))
+				}); err != nil {
+					return err
+				}
+			}
 			if len(m) > 0 && !c.AllSame() {
 				return worse(batchErr, &exitError{code: exitNo})
 			}
@@ -96,8 +107,30 @@ the smallest sum of AICc over all parts, unless --circuit says which.`,
 	flags := cmd.Flags()
 	flags.Var(&m, "margin", "`FIGURE=SHARE` within which a figure counts as the same, such as C=5%; repeatable")
 	flags.BoolVar(&exclude, "exclude-outliers", false, "leave flagged outliers out")
+	flags.StringVar(&html, "html", "", "write a page with strips of every figure and the bands of |Z| to `FILE`")
 	flags.BoolVar(&asJSON, "json", false, "one JSON object on standard output")
 	return cmd
+}
+
+// htmlOutput lists the page among the output files.
+func htmlOutput(path string) map[string]string {
+	if path == "" {
+		return map[string]string{}
+	}
+	return map[string]string{"--html": path}
+}
+
+// madeOf says how a page on lots was made.
+func madeOf(sources []*lotSource, s streams) []page.Entry {
+	made := []page.Entry{{Name: "Version", Value: buildVersion()}, {Name: "Command", Value: s.command}}
+	for _, l := range sources {
+		h := sha256.New()
+		for _, f := range l.fits() {
+			fmt.Fprintln(h, f.Sweep.SHA256)
+		}
+		made = append(made, page.Entry{Name: "Lot " + l.name, Value: fmt.Sprintf("%d sweeps, SHA-256 of their SHA-256: %x", len(l.fits()), h.Sum(nil))})
+	}
+	return made
 }
 
 // worse returns the error that decides the exit code; a sweep that could not

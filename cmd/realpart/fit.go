@@ -14,6 +14,7 @@ import (
 	"realpart/ingest"
 	"realpart/report"
 	"realpart/report/figure"
+	"realpart/report/lotpage"
 	"realpart/report/lots"
 	"realpart/report/netlist"
 	"realpart/report/page"
@@ -212,9 +213,20 @@ func (o *fitOutputs) show(parts []kept, f *fitFlags, s streams) error {
 	return err
 }
 
-// writeLots writes the statistics of every lot of at least three parts: a
-// folder, or a file with several parts.
+// writeLots writes the statistics of every lot.
 func writeLots(b *bytes.Buffer, fits []*report.Fit, at []float64, o report.TextOptions) error {
+	for _, l := range lotsOf(fits) {
+		if err := l.WriteText(b, at, lots.TextOptions{Width: o.Width, Colour: o.Colour}); err != nil {
+			return err
+		}
+	}
+	return nil
+}
+
+// lotsOf groups records in lots of at least three parts: a folder, or a file
+// with several parts.
+func lotsOf(fits []*report.Fit) []*lots.Lot {
+	var out []*lots.Lot
 	var names []string
 	parts := map[string][]*report.Fit{}
 	for _, r := range fits {
@@ -228,14 +240,11 @@ func writeLots(b *bytes.Buffer, fits []*report.Fit, at []float64, o report.TextO
 		parts[name] = append(parts[name], r)
 	}
 	for _, name := range names {
-		if len(parts[name]) < 3 {
-			continue
-		}
-		if err := lots.New(name, parts[name]).WriteText(b, at, lots.TextOptions{Width: o.Width, Colour: o.Colour}); err != nil {
-			return err
+		if len(parts[name]) >= 3 {
+			out = append(out, lots.New(name, parts[name]))
 		}
 	}
-	return nil
+	return out
 }
 
 // write writes the output files: those of the parts that could be fitted, and
@@ -290,6 +299,10 @@ func (o *fitOutputs) write(all []kept, f *fitFlags, s streams) error {
 			p := page.Page{Made: []page.Entry{{Name: "Version", Value: buildVersion()}, {Name: "Command", Value: s.command}, {Name: "Weight", Value: f.weightName()}}}
 			for _, k := range good {
 				p.Parts = append(p.Parts, page.Part{Fit: k.record, Traces: k.traces})
+			}
+			var err error
+			if p.Lots, err = lotpage.Sections(lotsOf(fits), f.at); err != nil {
+				return err
 			}
 			return page.Write(w, p, f.jobs)
 		}},

@@ -17,14 +17,43 @@ const fullTable = 12
 // WriteText adds the verdict on a lot to a text: the answer in words, then a
 // table of the parts, then the statistics of the lot for the limits.
 func WriteText(out *report.Layout, l Lot, parts []Part, rule Rule, samples []lots.Sample, limits []Limit) {
-	out.Heading(l.answer())
-	out.Paragraph("  ", "  ", l.counts())
-	if l.Parts > 0 && l.ShareAt10Percent < 1 {
-		out.Paragraph("  ", "  ", fmt.Sprintf("What this sample can tell: a lot with %s of nonconforming parts would still be accepted with 10 %% probability (n = %d, at most %d).",
-			report.FormatPercent(l.ShareAt10Percent), l.Parts, l.AcceptAtMost))
+	out.Heading(l.Answer())
+	for _, s := range l.Sentences() {
+		out.Paragraph("  ", "  ", s)
 	}
-	rows := [][]string{{"part", "figure", "limits", "value", "±", "conformity", "verdict"}}
 	brief := len(parts) > fullTable
+	if brief {
+		out.Title("Parts that do not pass, and why; --json has all")
+	} else {
+		out.Title("Parts")
+	}
+	if rows := Table(parts, brief); len(rows) > 1 {
+		out.Table(rows, "lllrrrl")
+	} else {
+		out.Line("  none")
+	}
+	out.Paragraph("  ", "  ", RuleNote(rule))
+	if len(samples) > 0 && len(parts) > 1 {
+		var of []lots.Limits
+		for _, limit := range limits {
+			of = append(of, lots.Limits{Low: limit.Low, High: limit.High})
+		}
+		lots.WriteTable(out, l.Lot, l.Parts, samples, of)
+	}
+}
+
+// RuleNote says what the verdicts of a rule mean.
+func RuleNote(rule Rule) string {
+	if rule == Guarded {
+		return "Guarded acceptance (JCGM 106:2012): pass is inside the limits by the expanded uncertainty ±, fail outside by more than that, else undecided. Conformity: probability that the part keeps to the limits."
+	}
+	return "Simple acceptance (JCGM 106:2012): the value alone decides; near a limit the risk of a wrong verdict is up to one half. Conformity: probability that the part keeps to the limits."
+}
+
+// Table lists the limits of parts for people, below a header; brief leaves out
+// what passes.
+func Table(parts []Part, brief bool) [][]string {
+	rows := [][]string{{"part", "figure", "limits", "value", "±", "conformity", "verdict"}}
 	for _, p := range parts {
 		if brief && p.Verdict == Pass {
 			continue
@@ -42,32 +71,11 @@ func WriteText(out *report.Layout, l Lot, parts []Part, rule Rule, samples []lot
 			name = ""
 		}
 	}
-	if brief {
-		out.Title("Parts that do not pass, and why; --json has all")
-	} else {
-		out.Title("Parts")
-	}
-	if len(rows) > 1 {
-		out.Table(rows, "lllrrrl")
-	} else {
-		out.Line("  none")
-	}
-	switch rule {
-	case Guarded:
-		out.Paragraph("  ", "  ", "Guarded acceptance (JCGM 106:2012): pass is inside the limits by the expanded uncertainty ±, fail outside by more than that, else undecided. Conformity: probability that the part keeps to the limits.")
-	default:
-		out.Paragraph("  ", "  ", "Simple acceptance (JCGM 106:2012): the value alone decides; near a limit the risk of a wrong verdict is up to one half. Conformity: probability that the part keeps to the limits.")
-	}
-	if len(samples) > 0 && len(parts) > 1 {
-		var of []lots.Limits
-		for _, limit := range limits {
-			of = append(of, lots.Limits{Low: limit.Low, High: limit.High})
-		}
-		lots.WriteTable(out, l.Lot, l.Parts, samples, of)
-	}
+	return rows
 }
 
-func (l Lot) answer() string {
+// Answer is the verdict on a lot in words.
+func (l Lot) Answer() string {
 	s := "Lot " + l.Lot + ": " + l.Verdict
 	if l.AcceptAtMost > 0 {
 		s += fmt.Sprintf(" (at most %d may not pass)", l.AcceptAtMost)
@@ -75,12 +83,18 @@ func (l Lot) answer() string {
 	return s
 }
 
-func (l Lot) counts() string {
+// Sentences are the counts, and what a sample of this size can tell.
+func (l Lot) Sentences() []string {
 	parts := "parts"
 	if l.Parts == 1 {
 		parts = "part"
 	}
-	return fmt.Sprintf("%d %s: %d pass, %d fail, %d undecided.", l.Parts, parts, l.Pass, l.Fail, l.Undecided)
+	out := []string{fmt.Sprintf("%d %s: %d pass, %d fail, %d undecided.", l.Parts, parts, l.Pass, l.Fail, l.Undecided)}
+	if l.Parts > 0 && l.ShareAt10Percent < 1 {
+		out = append(out, fmt.Sprintf("What this sample can tell: a lot with %s of nonconforming parts would still be accepted with 10 %% probability (n = %d, at most %d).",
+			report.FormatPercent(l.ShareAt10Percent), l.Parts, l.AcceptAtMost))
+	}
+	return out
 }
 
 // cells is a row of the table without the part.

@@ -294,7 +294,7 @@ func (c *Comparison) caution(lots []*Lot) {
 		if len(l.Fits) < fewestParts {
 			add("few-parts", "%s has %s: a lot below %d is described but not tested.", l.Name, count(len(l.Fits), "part"), fewestParts)
 		}
-		for _, caution := range l.cautions() {
+		for _, caution := range l.Cautions() {
 			if caution.Code != "different-circuits" || !slices.ContainsFunc(c.Cautions, func(d Caution) bool { return d.Code == "different-circuits" }) {
 				c.Cautions = append(c.Cautions, caution)
 			}

@@ -148,8 +148,8 @@ type Caution struct {
 	Text string `json:"text"`
 }
 
-// cautions says what keeps a lot from being what it seems.
-func (l *Lot) cautions() []Caution {
+// Cautions says what keeps a lot from being what it seems.
+func (l *Lot) Cautions() []Caution {
 	var out []Caution
 	add := func(code, format string, args ...any) {
 		out = append(out, Caution{code, fmt.Sprintf(format, args...)})

@@ -37,22 +37,38 @@ func (c *Comparison) WriteText(w io.Writer, o TextOptions) error {
 	}
 	for i, s := range c.Lots[1:] {
 		l.Title(fmt.Sprintf("%s less %s", s.Name, c.Lots[0].Name))
-		rows := [][]string{{"figure", c.Lots[0].Name, s.Name, "change", "95 % interval", "p (Holm)", "verdict"}}
-		for _, r := range c.Comparisons[i*len(c.Samples[0]) : (i+1)*len(c.Samples[0])] {
-			rows = append(rows, r.cells())
-		}
-		l.Table(rows, "lrrrrrl")
+		l.Table(c.Table(i+1), "lrrrrrl")
 	}
-	l.Paragraph("  ", "  ", "Means and their change, Welch's t test, p adjusted by Holm for all rows. A meter error common to the lots cancels in the difference to first order and is not added.")
+	l.Paragraph("  ", "  ", TestNote)
 	for i, samples := range c.Samples {
 		lotTable(l, c.Lots[i].Name, c.Lots[i].N, samples, nil)
 	}
-	l.Paragraph("  ", "  ", toleranceNote)
+	l.Paragraph("  ", "  ", ToleranceNote)
 	_, err := io.WriteString(w, l.String())
 	return err
 }
 
-const toleranceNote = "Tolerance interval: holds 95 % of a normal lot with 95 % confidence. Normality: probability of Anderson–Darling, small where the lot is not normal. Outliers: Grubbs, repeated, 5 %."
+// Table gives the comparison of a lot, by its index, with the reference for
+// people: a row a figure, below a header.
+func (c *Comparison) Table(lot int) [][]string {
+	rows := [][]string{{"figure", c.Lots[0].Name, c.Lots[lot].Name, "change", "95 % interval", "p (Holm)", "verdict"}}
+	for _, r := range c.rows(lot) {
+		rows = append(rows, r.cells())
+	}
+	return rows
+}
+
+// rows are those of a lot by its index, from 1 on.
+func (c *Comparison) rows(lot int) []Row {
+	k := len(c.Samples[0])
+	return c.Comparisons[(lot-1)*k : lot*k]
+}
+
+// TestNote says what the table of a comparison holds.
+const TestNote = "Means and their change, Welch's t test, p adjusted by Holm for all rows. A meter error common to the lots cancels in the difference to first order and is not added."
+
+// ToleranceNote says what the tables of a lot hold.
+const ToleranceNote = "Tolerance interval: holds 95 % of a normal lot with 95 % confidence. Normality: probability of Anderson–Darling, small where the lot is not normal. Outliers: Grubbs, repeated, 5 %."
 
 // WriteText writes the statistics of a lot's figures; at as in
 // [CommonFigures].
@@ -60,8 +76,8 @@ func (l *Lot) WriteText(w io.Writer, at []float64, o TextOptions) error {
 	samples := l.Samples(at)
 	out := report.NewLayout(o.Width, o.Colour)
 	lotTable(out, l.Name, len(l.Fits), samples, nil)
-	out.Paragraph("  ", "  ", toleranceNote)
-	for _, c := range l.cautions() {
+	out.Paragraph("  ", "  ", ToleranceNote)
+	for _, c := range l.Cautions() {
 		out.Warn(c.Text)
 	}
 	_, err := io.WriteString(w, out.String())
@@ -88,13 +104,23 @@ type Limits struct{ Low, High float64 }
 // those of each sample, or is nil.
 func WriteTable(l *report.Layout, name string, n int, samples []Sample, limits []Limits) {
 	lotTable(l, name, n, samples, limits)
-	l.Paragraph("  ", "  ", toleranceNote)
+	l.Paragraph("  ", "  ", ToleranceNote)
 }
 
 func lotTable(l *report.Layout, name string, n int, samples []Sample, limits []Limits) {
 	l.Title(fmt.Sprintf("Lot %s: %s", name, count(n, "part")))
-	values := [][]string{{"figure", "n", "mean", "s", "median", "least", "largest", "not determined"}}
-	spread := [][]string{{"figure", "tolerance interval", "one-sided bounds", "normality", "Cp", "Cpk", "outliers"}}
+	values, spread := Tables(samples, limits)
+	l.Table(values, "lrrrrrrr")
+	l.Line("")
+	l.Table(spread, "lrrrrrl")
+}
+
+// Tables gives the statistics of a lot for people in two tables of a row a
+// figure, below a header; columns without a heading are empty. limits has those
+// of each sample, or is nil.
+func Tables(samples []Sample, limits []Limits) (values, spread [][]string) {
+	values = [][]string{{"figure", "n", "mean", "s", "median", "least", "largest", "not determined"}}
+	spread = [][]string{{"figure", "tolerance interval", "one-sided bounds", "normality", "Cp", "Cpk", "outliers"}}
 	open := false
 	for i, s := range samples {
 		row := []string{s.Figure.String(), strconv.Itoa(s.N), s.text(s.Mean), spreadText(s), s.text(s.Median), s.text(s.Min), s.text(s.Max), ""}
@@ -125,9 +151,7 @@ func lotTable(l *report.Layout, name string, n int, samples []Sample, limits []L
 	if limits == nil {
 		spread[0][4], spread[0][5] = "", ""
 	}
-	l.Table(values, "lrrrrrrr")
-	l.Line("")
-	l.Table(spread, "lrrrrrl")
+	return values, spread
 }
 
 func index(v float64) string {
@@ -231,9 +255,8 @@ type Answer struct {
 // the same, then what this sample does not decide.
 func (c *Comparison) Answers() []Answer {
 	var out []Answer
-	k := len(c.Samples[0])
 	for i, lot := range c.Lots[1:] {
-		rows := c.Comparisons[i*k : (i+1)*k]
+		rows := c.rows(i + 1)
 		a := Answer{Title: fmt.Sprintf("%s (%s) against %s (%s)", lot.Name, count(lot.N, "part"), c.Lots[0].Name, count(c.Lots[0].N, "part"))}
 		var different, same, open, untested []string
 		for i := range rows {

@@ -34,6 +34,8 @@ type Page struct {
 	// hashes of the inputs stand with their parts.
 	Made  []Entry
 	Parts []Part
+	// Lots is what is said of lots, below the index; see report/lotpage.
+	Lots template.HTML
 }
 
 // Entry is a name and a value.
@@ -82,7 +84,7 @@ var parsed = sync.OnceValue(func() *template.Template {
 func Write(w io.Writer, p Page, jobs int) error {
 	v := view{
 		Title: p.Title, Made: p.Made, Cautions: report.Cautions(),
-		CSS: template.CSS(pageCSS), JS: template.JS(pageJS),
+		CSS: template.CSS(pageCSS), JS: template.JS(pageJS), Lots: p.Lots,
 		Parts: make([]partView, len(p.Parts)),
 	}
 	if v.Title == "" {
@@ -136,6 +138,7 @@ type view struct {
 	CSS      template.CSS
 	JS       template.JS
 	Index    *index
+	Lots     template.HTML
 	Parts    []partView
 	Made     []Entry
 	Cautions []string

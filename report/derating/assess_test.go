@@ -462,6 +462,42 @@ func TestWarnings(t *testing.T) {
 	}
 }
 
+// A fitted ESR far from the measured one is said, where it matters, and what
+// reading and fitting warned of is handed on.
+func TestWarningsOfFits(t *testing.T) {
+	good := capacitor(t, 50e-3)
+	c, err := models.Parse("ESR + ESL + C")
+	if err != nil {
+		t.Fatal(err)
+	}
+	fixed, err := fit.Fit(good.Fit.Freq, good.Fit.Measured, c, &fit.Settings{Fixed: map[string]float64{"ESR": 35e-3, "ESL": 10e-9, "C": 100e-6}})
+	if err != nil {
+		t.Fatal(err)
+	}
+	bad := good
+	bad.Fit, bad.Warnings = fixed, []Warning{{"odd", "something odd"}}
+	if a := assess(t, []Sweep{bad}, nil, "100kHz=1A", Conditions{}); !slices.Contains(codes(a), "measured-differs") || !slices.Contains(codes(a), "odd") {
+		t.Errorf("35 mΩ fitted, 50 mΩ measured: %v", codes(a))
+	}
+	if a := assess(t, []Sweep{good}, nil, "100kHz=1A", Conditions{}); slices.Contains(codes(a), "measured-differs") {
+		t.Errorf("fitted as measured: %v", codes(a))
+	}
+	a := assess(t, []Sweep{bad, good, bad}, nil, "100kHz=1A", Conditions{})
+	if i := slices.Index(codes(a), "odd"); i < 0 || !strings.HasPrefix(a.Warnings[i].Text, "2 of 3 sweeps; of part: something odd") {
+		t.Errorf("warnings of a lot: %+v", a.Warnings)
+	}
+	// A rating that rests on the ESR of a cold sweep is doubtful when hot.
+	series := []Sweep{atTemperature(good, 25), atTemperature(capacitor(t, 25e-3), 85)}
+	rating := &Rating{Current: 2, Freq: 100e3, Rise: 5}
+	if a := assess(t, series[:1], series, "100kHz=1A", Conditions{Rating: rating, Ambient: value(60)}); !slices.Contains(codes(a), "rated-esr-temperature") {
+		t.Errorf("a rating by the ESR of the cold sweep: %v", codes(a))
+	}
+	rating.ESR = value(25e-3)
+	if a := assess(t, series[:1], series, "100kHz=1A", Conditions{Rating: rating, Ambient: value(60)}); slices.Contains(codes(a), "rated-esr-temperature") {
+		t.Errorf("a rating with its own ESR: %v", codes(a))
+	}
+}
+
 func TestErrors(t *testing.T) {
 	part, inductor := capacitor(t, 50e-3), sweepOf(t, "DCR + L", []float64{30e-3, 22e-6}, 0, 1, nil)
 	inductor.Kind = models.InductorPart

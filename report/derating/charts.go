@@ -133,14 +133,14 @@ func (frequencyTicks) Ticks(low, high float64) []plot.Tick {
 }
 
 // lossChart shows the loss of each harmonic over frequency. Direct current,
-// which has no place there, is told in words.
+// which has no place there, is told in the legend.
 func (a *Assessment) lossChart() chart {
 	var inside, outside plotter.XYs
 	low, high, top := math.Inf(1), 0.0, 0.0
-	words := ""
+	direct := ""
 	for _, h := range a.Harmonics {
 		if h.FHz == 0 {
-			words = fmt.Sprintf(" Direct current, not drawn: %s.", quantity.Format(h.LossW, "W", 3))
+			direct = "direct current, not drawn: " + quantity.Format(h.LossW, "W", 3)
 			continue
 		}
 		low, high, top = min(low, h.FHz), max(high, h.FHz), max(top, h.LossW)
@@ -161,12 +161,15 @@ func (a *Assessment) lossChart() chart {
 	if len(outside) > 0 {
 		c.Legend = append(c.Legend, mark{"outside", "outside the sweep"})
 	}
+	if direct != "" {
+		c.Legend = append(c.Legend, mark{"", direct})
+	}
 	rows, _ := a.table(3)
 	var most []string
 	for _, row := range rows[1:min(len(rows), 4)] {
 		most = append(most, row[0]+" "+row[7])
 	}
-	c.Alt = "Loss by harmonic; the largest: " + strings.Join(most, ", ") + "." + words
+	c.Alt = "Loss by harmonic; the largest: " + strings.Join(most, ", ") + "."
 	return c
 }
 

@@ -65,7 +65,7 @@ func (a *assessor) sources() {
 		remedy := "a meter or range with a smaller error at " + at
 		if f := a.freq[main]; f > 0 {
 			if ratio := cmplx.Abs(impedance(a.parts[a.worst].Fit)([]float64{f})[0]) / a.all[a.worst].r[main]; ratio > 2 {
-				remedy += fmt.Sprintf(", above all of phase: |Z| is %.2g times the ESR there, and so does a phase error grow in it", ratio)
+				remedy += fmt.Sprintf(", above all of phase: |Z| is %.2g times the ESR there, and a phase error weighs so much more in it", ratio)
 			}
 		}
 		text := "the meter's stated accuracy" + which
@@ -164,6 +164,7 @@ func (a *assessor) warn() {
 	if share, low, high := a.shareOf(func(h Harmonic) bool { return h.BelowResolution != nil && *h.BelowResolution }); low > 0 {
 		a.warning("below-resolution", fmt.Sprintf("The ESR at %s is smaller than the meter's stated accuracy can tell from zero. These harmonics make %s of the loss.", span(low, high), report.FormatPercent(share)))
 	}
+	a.warnMeasured()
 	if a.LossW == 0 {
 		a.warning("no-resistance", "The fitted circuit has no resistance, so that no loss follows; give a circuit with one, such as --circuit cap-esr-esl.")
 	}
@@ -182,6 +183,35 @@ func (a *assessor) warn() {
 		a.warning("few-parts", fmt.Sprintf("With %d parts the tolerance bound is wide: a factor of %.3g, against 2.91 with 10 and 1.64 for a whole lot.", s.N, s.Factor))
 	}
 	a.warnFits()
+}
+
+// A fitted ESR that differs from the measured one by more than differing, at a
+// harmonic with a share of the loss of weighty or more, is worth a warning.
+const (
+	differing = 0.2
+	weighty   = 0.1
+)
+
+// warnMeasured compares with the measured ESR where it matters most.
+func (a *assessor) warnMeasured() {
+	worst, fitted := -1, 0.0
+	for i, h := range a.Harmonics {
+		if h.Measured == nil || h.Share < weighty {
+			continue
+		}
+		esr := h.ESROhm
+		if h.Mean != nil {
+			esr = *h.Mean
+		}
+		if math.Abs(*h.Measured-esr) > differing*esr && (worst < 0 || h.Share > a.Harmonics[worst].Share) {
+			worst, fitted = i, esr
+		}
+	}
+	if worst >= 0 {
+		h := a.Harmonics[worst]
+		a.warning("measured-differs", fmt.Sprintf("At %s, which makes %s of the loss, the measured ESR is %s and the fitted one %s. Either the points scatter there, or the circuit does not describe the part.",
+			report.FormatFrequency(h.FHz), report.FormatPercent(h.Share), quantity.Format(*h.Measured, "Ω", 3), quantity.Format(fitted, "Ω", 3)))
+	}
 }
 
 // warnFits hands on what reading and fitting warned of: of a lot once for each

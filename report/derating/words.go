@@ -17,9 +17,12 @@ func kelvins(v float64) string { return fmt.Sprintf("%.1f K", v) }
 func amperes(v float64) string { return quantity.Format(v, "A", 3) }
 func volts(v float64) string   { return quantity.Format(v, "V", 4) }
 
+// exact is the relative width below which an interval is not worth digits.
+const exact = 1e-6
+
 // interval gives a value with the 95 % interval behind it, where there is one.
 func interval(value float64, low, high *float64, unit string) string {
-	if low == nil || high == nil || !(*low < *high) {
+	if low == nil || high == nil || !(*high-*low > exact*math.Abs(value)) {
 		return quantity.Format(value, unit, 3)
 	}
 	return quantity.FormatInterval(value, *low, *high, unit)
@@ -165,7 +168,7 @@ func (a *Assessment) table(most int) (rows [][]string, notes []note) {
 		}
 		if a.Statistics != nil {
 			row[3], row[5] = ohms.three(h.Mean), ohms.three(h.Worst)
-		} else if h.Low95 != nil && h.High95 != nil && *h.Low95 < *h.High95 {
+		} else if h.Low95 != nil && h.High95 != nil && *h.High95-*h.Low95 > exact*h.ESROhm {
 			row[2], row[3] = ohms.interval(h.ESROhm, *h.Low95, *h.High95)
 		}
 		if !h.InSweep && h.FHz > 0 {

@@ -68,8 +68,8 @@ type Panel struct {
 	plot  *plot.Plot
 }
 
-// Entry is a line of a legend: a mark ("dot", "cross", "line", "dashed",
-// "scatter" or "meter") and its meaning.
+// Entry is a line of a legend: a mark ("dot", "cross", "line", "second",
+// "thin", "dashed", "scatter" or "meter") and its meaning.
 type Entry struct{ Mark, Text string }
 
 // Panels draws the figures of a fit. pick holds the indices of the points

@@ -125,7 +125,7 @@ func Overlay(freq []float64, c Curves, s Style) []Panel {
 	for _, part := range c.Parts {
 		all, relative = append(all, over(freq, part)), append(relative, over(freq, deviation(part, middle)))
 	}
-	legend := []Entry{{"dashed", "a part"}, {"line", "median"}}
+	legend := []Entry{{"thin", "a part"}, {"line", "median"}}
 	low, high := span(all...)
 	p := s.axes(frequencies(freq), axis{logTicks{"Ω", 5}, true, low, high})
 	for _, curve := range all {

@@ -81,7 +81,7 @@
       follow(entry.target.closest(".part"));
     }
   }, { rootMargin: "600px" });
-  for (const figures of document.querySelectorAll(".figures")) {
+  for (const figures of document.querySelectorAll("section.part .figures")) {
     figures.querySelector(".readout").hidden = false;
     near.observe(figures);
   }

@@ -73,7 +73,7 @@ func (r *Result) withoutElement(i int) (probability, cost float64, ok bool) {
 		lower, upper := p.bounds(&rest)
 		x := p.unknowns()
 		clamp(x, lower, upper)
-		settings := solver(lower, upper)
+		settings := p.solver(lower, upper)
 		solution, err := lm.Solve(p.lm(), x, &settings)
 		if err != nil {
 			return 0, 0, false

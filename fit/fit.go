@@ -6,6 +6,7 @@ import (
 	"math"
 	"slices"
 	"strings"
+	"sync"
 
 	"gonum.org/v1/gonum/mat"
 
@@ -180,6 +181,11 @@ func Fit(freq []float64, z []complex128, c *models.Circuit, settings *Settings) 
 		return nil, err
 	}
 	p := newProblem(c, pts, s.Weight, &s)
+	p.workspace = workspaces.Get().(*lm.Workspace)
+	defer func() {
+		workspaces.Put(p.workspace)
+		p.workspace = nil // the result keeps the problem, not the workspace
+	}()
 	if len(p.free) == 0 {
 		return evaluate(p, &s, nil, &lm.Result{Status: lm.GradientConvergence, Reason: "all parameters are fixed"}), nil
 	}
@@ -198,6 +204,9 @@ func Fit(freq []float64, z []complex128, c *models.Circuit, settings *Settings) 
 	}
 	return evaluate(p, &s, solution.X, solution), nil
 }
+
+// workspaces are the solver's memory of fits that are over.
+var workspaces = sync.Pool{New: func() any { return new(lm.Workspace) }}
 
 // check finds faults of the settings before anything is computed.
 func (s *Settings) check(freq []float64, c *models.Circuit) error {
@@ -448,7 +457,7 @@ func (p *problem) newSearch(s *Settings, lower, upper []float64) *search {
 		whole: p, thinned: newProblem(p.circuit, f.points, Relative, s), settings: s, sampler: newSampler(f, s.Seed),
 		solver: lm.Settings{UnitScaling: true, MaxStep: maxStep, MaxIterations: searchSteps,
 			GradientTolerance: searchTolerance, StepTolerance: searchTolerance, CostTolerance: searchTolerance,
-			Lower: lower, Upper: upper, Workspace: new(lm.Workspace)},
+			Lower: lower, Upper: upper, Workspace: p.workspace},
 	}
 	copy(q.thinned.values, p.values)
 	if s.Robust {
@@ -570,16 +579,16 @@ func pointNoise(freq []float64, z []complex128) float64 {
 // far below what anybody prints, and above the rounding of the residuals. The
 // cost tolerance ends the way along the flat valley of a parameter that is
 // not determined, where a step changes χ² by less than 1e-6.
-func solver(lower, upper []float64) lm.Settings {
+func (p *problem) solver(lower, upper []float64) lm.Settings {
 	return lm.Settings{UnitScaling: true, MaxStep: maxStep, MaxIterations: polishSteps,
 		GradientTolerance: 1e-6, StepTolerance: 1e-9, CostTolerance: 1e-9,
-		Lower: lower, Upper: upper, Workspace: new(lm.Workspace)}
+		Lower: lower, Upper: upper, Workspace: p.workspace}
 }
 
 // polish minimises over the whole sweep: first the relative residual, whose
 // basin is wide, then the one asked for.
 func (p *problem) polish(x, lower, upper []float64, robust bool) (*lm.Result, error) {
-	settings := solver(lower, upper)
+	settings := p.solver(lower, upper)
 	wanted := p.weight
 	p.weight = Relative
 	r, err := lm.Solve(p.lm(), x, &settings)

@@ -30,7 +30,7 @@ func TestAICcPublished(t *testing.T) {
 func TestProfilePublished(t *testing.T) {
 	x := []float64{0.02, 0.02, 0.06, 0.06, 0.11, 0.11, 0.22, 0.22, 0.56, 0.56, 1.10, 1.10}
 	v := []float64{76, 47, 97, 107, 123, 139, 159, 152, 191, 201, 207, 200}
-	problem := lm.Problem{
+	rate := lm.Problem{
 		Size: len(x),
 		Residual: func(dst, theta []float64) {
 			for i := range x {
@@ -45,7 +45,7 @@ func TestProfilePublished(t *testing.T) {
 			}
 		},
 	}
-	solution, err := lm.Solve(problem, []float64{205, 0.08}, nil)
+	solution, err := lm.Solve(rate, []float64{205, 0.08}, nil)
 	if err != nil {
 		t.Fatal(err)
 	}
@@ -57,8 +57,8 @@ func TestProfilePublished(t *testing.T) {
 	}
 	lower, upper := []float64{1, 1e-4}, []float64{1e4, 10}
 	q := &profiler{
-		result: &Result{Covariance: covariance}, lm: problem, x: solution.X, cost: solution.Cost,
-		lower: lower, upper: upper, sigma: s, settings: solver([]float64{1, 1e-4}, []float64{1e4, 10}),
+		result: &Result{Covariance: covariance}, lm: rate, x: solution.X, cost: solution.Cost,
+		lower: lower, upper: upper, sigma: s, settings: new(problem).solver([]float64{1, 1e-4}, []float64{1e4, 10}),
 	}
 	q.settings.UnitScaling, q.settings.MaxStep = false, 0
 	level := studentQuantile(0.975, nu)

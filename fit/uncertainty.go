@@ -5,6 +5,7 @@ import (
 	"fmt"
 	"math"
 	"slices"
+	"sync"
 
 	"gonum.org/v1/gonum/mat"
 	"gonum.org/v1/gonum/stat/distuv"
@@ -215,13 +216,29 @@ func expand(scatter, meter, nu float64) float64 {
 }
 
 // studentQuantile is the quantile of Student's t, that of the normal
-// distribution beyond 1e6 degrees of freedom, where they agree to 1e-6.
+// distribution beyond 1e6 degrees of freedom, where they agree to 1e-6. Those
+// of whole degrees of freedom are kept: every parameter and figure of a sweep,
+// and every sweep of a lot, asks for the same one, and it costs more than many
+// evaluations of a circuit.
 func studentQuantile(p, nu float64) float64 {
 	if nu > 1e6 {
 		return distuv.UnitNormal.Quantile(p)
 	}
-	return distuv.StudentsT{Mu: 0, Sigma: 1, Nu: nu}.Quantile(p)
+	type key struct{ p, nu float64 }
+	whole := nu == math.Trunc(nu)
+	if whole {
+		if t, ok := quantiles.Load(key{p, nu}); ok {
+			return t.(float64)
+		}
+	}
+	t := distuv.StudentsT{Mu: 0, Sigma: 1, Nu: nu}.Quantile(p)
+	if whole {
+		quantiles.Store(key{p, nu}, t)
+	}
+	return t
 }
+
+var quantiles sync.Map // of studentQuantile
 
 // regularCovariance returns the covariance of the given columns of a
 // Jacobian. Of columns that cannot be told apart, all are vague, and one

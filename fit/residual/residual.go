@@ -93,18 +93,49 @@ func MAD(r []float64) float64 {
 	return 1.482602218505602 * median(d)
 }
 
-// median sorts r and returns its middle.
+// median returns the middle of r, which it reorders.
 func median(r []float64) float64 {
-	if len(r) == 0 {
-		return math.NaN()
-	}
-	slices.Sort(r) // NaN sorts first
-	if math.IsNaN(r[0]) {
+	if len(r) == 0 || slices.ContainsFunc(r, math.IsNaN) {
 		return math.NaN()
 	}
 	h := len(r) / 2
+	upper := ranked(r, h)
 	if len(r)%2 == 1 {
-		return r[h]
+		return upper
 	}
-	return (r[h-1] + r[h]) / 2
+	return (slices.Max(r[:h]) + upper) / 2
+}
+
+// ranked puts the k-th smallest value of r in its place, smaller or equal ones
+// before it, and returns it (Hoare's selection, with the median of three).
+func ranked(r []float64, k int) float64 {
+	low, high := 0, len(r)-1
+	for low < high {
+		middle := low + (high-low)/2
+		a, b, c := r[low], r[middle], r[high]
+		pivot := max(min(a, b), min(max(a, b), c))
+		i, j := low, high
+		for i <= j {
+			for r[i] < pivot {
+				i++
+			}
+			for r[j] > pivot {
+				j--
+			}
+			if i <= j {
+				r[i], r[j] = r[j], r[i]
+				i++
+				j--
+			}
+		}
+		switch {
+		case k <= j:
+			high = j
+		case k >= i:
+			low = i
+		default:
+			return r[k]
+		}
+	}
+	return r[k]
 }

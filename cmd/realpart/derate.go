@@ -334,7 +334,7 @@ func (d *derateFlags) run(f *fitFlags, inputs []ingest.Input, s streams) error {
 	if err != nil {
 		return &exitError{exitFailure, err}
 	}
-	var parts, series []derating.Sweep
+	var parts, series, named []derating.Sweep // named: the parts that --at-temperature names
 	groups := []lot{{inputs, len(inputs) > 1}, {extra, len(extra) > 1}}
 	batchErr := f.batchLots(groups[:1+min(1, len(extra))], s, func(r fitted) error {
 		if r.err != nil || r.record.Status != report.Converged {
@@ -353,6 +353,9 @@ func (d *derateFlags) run(f *fitFlags, inputs []ingest.Input, s streams) error {
 		}
 		if t, ok := d.temperatures.of(in.Path); ok {
 			sweep.Temperature = t
+			if r.input < len(inputs) {
+				named = append(named, sweep)
+			}
 		}
 		if r.input >= len(inputs) {
 			series = append(series, sweep)
@@ -378,6 +381,15 @@ func (d *derateFlags) run(f *fitFlags, inputs []ingest.Input, s streams) error {
 	if onePart(parts) {
 		series = append(parts[:len(parts):len(parts)], series...)
 		parts = parts[:1]
+	} else if len(parts) > 1 && len(named) > 0 {
+		// One part of a lot is the one of the series, and the lot was
+		// measured with it.
+		series = append(named, series...)
+		for i := range parts {
+			if math.IsNaN(parts[i].Temperature) {
+				parts[i].Temperature = named[0].Temperature
+			}
+		}
 	}
 	assessment, err := derating.Assess(parts, series, d.spectrum, d.conditions)
 	if err != nil {

@@ -4,7 +4,9 @@ import (
 	"bytes"
 	"fmt"
 	"io"
+	"os"
 	"path/filepath"
+	"slices"
 	"strings"
 
 	"github.com/spf13/cobra"
@@ -41,7 +43,7 @@ intervals, the self-resonances, the residuals and the figures of data sheets.`,
 			if err := o.check(f); err != nil {
 				return err
 			}
-			if err := distinct(f.outputs(o.files()), append(f.fixture.files(), args...)); err != nil {
+			if err := distinct(f.outputs(o.files()), slices.Concat(f.besideSweeps(), args)); err != nil {
 				return err
 			}
 			inputs, err := f.find(args, s)
@@ -50,6 +52,18 @@ intervals, the self-resonances, the residuals and the figures of data sheets.`,
 			}
 			if f.showReading {
 				return f.showReadings(inputs, s)
+			}
+			if f.filesFrom != "" { // now that the list is read
+				var listed []string
+				for _, in := range inputs {
+					listed = append(listed, in.Path)
+				}
+				if err := distinct(f.outputs(o.files()), listed); err != nil {
+					return err
+				}
+			}
+			if o.touchstone != "" && len(inputs) > 1 {
+				return onePartOnly(len(inputs))
 			}
 			return o.run(f, inputs, s)
 		},
@@ -109,10 +123,34 @@ func (o *fitOutputs) check(f *fitFlags) error {
 			return usagef("--plot %s: %w", o.plot, err)
 		}
 	}
+	for _, flag := range []string{"csv", "html", "netlist", "plot", "touchstone", "residuals"} {
+		switch name := f.flags.Lookup(flag).Value.String(); {
+		case name == "" && f.flags.Changed(flag):
+			return usagef("--%s: expected the name of a file, found an empty one", flag)
+		case name == "-":
+			return usagef(`--%s: expected the name of a file, found "-"; /dev/stdout is standard output`, flag)
+		}
+	}
 	if f.resume && o.needsPoints() {
 		return usagef("--resume: expected no output that needs the points of the sweeps (--html, --plot, --touchstone, --residuals, --sketch), since those of an earlier run are not kept")
 	}
 	return nil
+}
+
+// besideSweeps lists the files that are read beside the sweeps.
+func (f *fitFlags) besideSweeps() []string {
+	files := f.fixture.files()
+	for _, name := range []string{f.accuracy, f.filesFrom} {
+		if info, err := os.Stat(name); err == nil && info.Mode().IsRegular() {
+			files = append(files, name)
+		}
+	}
+	return files
+}
+
+// onePartOnly refuses a Touchstone file of several parts.
+func onePartOnly(n int) error {
+	return usagef("--touchstone: expected one sweep, found %d; a .s1p file holds one part", n)
 }
 
 // format is the ending of --plot.
@@ -262,7 +300,7 @@ func (o *fitOutputs) write(all []kept, f *fitFlags, s streams) error {
 		return nil
 	}
 	if o.touchstone != "" && len(good) > 1 {
-		return usagef("--touchstone: expected one sweep, found %d; a .s1p file holds one part", len(good))
+		return onePartOnly(len(good))
 	}
 	if o.plot != "" {
 		if err := figure.CheckFormat(o.format(), len(good)); err != nil {

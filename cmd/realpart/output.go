@@ -1,74 +1,180 @@
 package main
 
 import (
+	"errors"
 	"fmt"
 	"io"
+	"io/fs"
 	"os"
+	"os/signal"
 	"path/filepath"
+	"strings"
+	"syscall"
 
 	"github.com/google/renameio/v2"
+
+	"realpart/ingest"
 )
 
 // writeFile writes an output whole or not at all: to a temporary file beside
-// it, which takes its place when everything is written.
+// it, which takes its place when everything is written. A signal that ends the
+// program takes the temporary file away.
 func writeFile(path string, write func(io.Writer) error) error {
-	if real, err := filepath.EvalSymlinks(path); err == nil {
-		path = real // a link stays a link
+	info, err := os.Stat(path)
+	if err != nil && !errors.Is(err, fs.ErrNotExist) {
+		return cannotWrite(path, err)
 	}
-	if info, err := os.Stat(path); err == nil && !info.Mode().IsRegular() {
+	if err == nil && !info.Mode().IsRegular() {
 		// A pipe or device can't be replaced; /dev/stdout is a common wish.
 		f, err := os.OpenFile(path, os.O_WRONLY, 0)
 		if err != nil {
-			return &exitError{exitUsage, err}
+			return cannotWrite(path, err)
 		}
-		if err := write(f); err != nil {
-			f.Close()
-			return err
+		if err := errors.Join(write(f), f.Close()); err != nil {
+			return cannotWrite(path, err)
 		}
-		return f.Close()
+		return nil
 	}
-	f, err := renameio.NewPendingFile(path, renameio.WithPermissions(0o644), renameio.WithExistingPermissions())
+	target := followed(path) // a link stays a link
+	f, err := renameio.NewPendingFile(target, renameio.WithTempDir(filepath.Dir(target)), renameio.WithPermissions(0o644), renameio.WithExistingPermissions())
 	if err != nil {
-		return &exitError{exitUsage, fmt.Errorf("cannot write %s: %w", path, cause(err))}
+		return cannotWrite(path, err)
 	}
 	defer f.Cleanup()
-	if err := write(f); err != nil {
-		return fmt.Errorf("cannot write %s: %w", path, cause(err))
+	interrupts := notifyOfEnd()
+	defer signal.Stop(interrupts)
+	done := make(chan error, 1)
+	go func() { done <- write(f) }()
+	select {
+	case err := <-done:
+		if err == nil {
+			err = f.CloseAtomicallyReplace()
+		}
+		if err != nil {
+			return cannotWrite(path, err)
+		}
+		return nil
+	case s := <-interrupts:
+		code := exitFailure
+		if number, ok := s.(syscall.Signal); ok {
+			code = 128 + int(number) // as a shell says it
+		}
+		return &exitError{code, fmt.Errorf("%s is not written: %v", path, s)}
 	}
-	if err := f.CloseAtomicallyReplace(); err != nil {
-		return fmt.Errorf("cannot write %s: %w", path, cause(err))
+}
+
+// notifyOfEnd catches the signals that end the program, save those that it was
+// started to ignore, as by nohup.
+func notifyOfEnd() chan os.Signal {
+	c := make(chan os.Signal, 1)
+	for _, s := range []os.Signal{os.Interrupt, syscall.SIGTERM, syscall.SIGHUP} {
+		if !signal.Ignored(s) {
+			signal.Notify(c, s)
+		}
 	}
-	return nil
+	return c
+}
+
+// followed returns where the links of a path lead, whether there is a file or
+// not.
+func followed(path string) string {
+	const most = 40 // as Linux follows
+	for range most {
+		to, err := os.Readlink(path)
+		if err != nil {
+			break
+		}
+		if !filepath.IsAbs(to) {
+			to = filepath.Join(filepath.Dir(path), to)
+		}
+		path = to
+	}
+	return path
+}
+
+func cannotWrite(path string, err error) error {
+	return &exitError{exitUsage, fmt.Errorf("cannot write %s: %w", path, cause(err))}
 }
 
 // cause strips the name of the temporary file from an error.
 func cause(err error) error {
-	if e, ok := err.(*os.PathError); ok {
-		return e.Err
+	var path *os.PathError
+	var link *os.LinkError
+	switch {
+	case errors.As(err, &path):
+		return path.Err
+	case errors.As(err, &link):
+		return link.Err
 	}
 	return err
 }
 
-// distinct refuses an output that is one of the inputs or another output.
+// distinct refuses an output that is one of the inputs, those in folders too,
+// or another output; and, before any work is done, one whose folder does not
+// exist.
 func distinct(outputs map[string]string, inputs []string) error {
-	seen := map[string]string{}
-	for _, in := range inputs {
-		seen[identity(in)] = "an input"
+	type known struct{ id, what string }
+	var taken []known
+	if len(outputs) > 0 {
+		for _, in := range filesOf(inputs) {
+			taken = append(taken, known{in, "an input"})
+		}
 	}
 	for _, flag := range sortedKeys(outputs) {
-		id := identity(outputs[flag])
-		if what, ok := seen[id]; ok {
-			return usagef("%s: expected a file of its own, found %q, which is also %s", flag, outputs[flag], what)
+		path := outputs[flag]
+		if path == "-" || path == "" {
+			continue // standard output
 		}
-		seen[id] = "the file of " + flag
+		info, _ := os.Stat(path)
+		id := identity(path)
+		for _, t := range taken {
+			same := t.id == id
+			if !same && info != nil && info.Mode().IsRegular() {
+				other, err := os.Stat(t.id) // hard links, and systems that don't tell letters' case
+				same = err == nil && os.SameFile(info, other)
+			}
+			if same {
+				return usagef("%s: expected a file of its own, found %q, which is also %s", flag, path, t.what)
+			}
+		}
+		taken = append(taken, known{id, "the file of " + flag})
+		folder := filepath.Dir(followed(path))
+		if at, err := os.Stat(folder); err != nil {
+			return usagef("%s: cannot write %s: %w", flag, path, cause(err))
+		} else if !at.IsDir() {
+			return usagef("%s: cannot write %s: %s is not a folder", flag, path, folder)
+		}
+		if info != nil && info.IsDir() {
+			return usagef("%s: expected the name of a file, found the folder %q", flag, path)
+		}
 	}
 	return nil
 }
 
+// filesOf returns the identities of the files that inputs stand for.
+func filesOf(inputs []string) []string {
+	found, err := ingest.Find(inputs)
+	if err != nil {
+		return nil // it is told when the inputs are read
+	}
+	var ids []string
+	for _, in := range found {
+		ids = append(ids, identity(in.Path))
+		// The magnitude and the phase of one sweep are two files.
+		if one, other, ok := strings.Cut(in.Path, "+"); ok {
+			ids = append(ids, identity(one), identity(other))
+		}
+	}
+	return ids
+}
+
 // identity returns a name that is the same for all ways to write a path.
 func identity(path string) string {
+	path = followed(path)
 	if real, err := filepath.EvalSymlinks(path); err == nil {
 		path = real
+	} else if real, err := filepath.EvalSymlinks(filepath.Dir(path)); err == nil {
+		path = filepath.Join(real, filepath.Base(path)) // not there yet
 	}
 	if abs, err := filepath.Abs(path); err == nil {
 		return abs

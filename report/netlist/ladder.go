@@ -3,6 +3,7 @@ package netlist
 import (
 	"fmt"
 	"math"
+	"math/cmplx"
 
 	"realpart/fit/rational"
 	"realpart/models"
@@ -25,10 +26,14 @@ type ladder struct {
 	block float64
 }
 
-// blocking is the ratio of R0 to the reactance of its capacitor at the lowest
-// frequency. It takes 1 % off the conductance of R0 there, which is a part of
-// the loss, and adds little to the capacitance below the range.
-const blocking = 10
+// leastBlocking is the least ratio of R0 to the reactance of its capacitor at
+// the lowest frequency: there it takes 1 % off the conductance of R0, which is a
+// part of the loss.
+const leastBlocking = 10
+
+// blockingShare is the share that the capacitor may take of the error: with the
+// ratio b it adds 1/b of the conductance of R0 to the susceptance.
+const blockingShare = 0.25
 
 // newLadder finds a ladder whose impedance is within a relative error between
 // two frequencies in Hz, and its resistance within another.
@@ -53,7 +58,8 @@ func newLadder(c *models.Circuit, n *models.Node, values []float64, from, to, ma
 	}
 	l := ladder{element: single.String(), Foster: foster}
 	if foster.R0 > 0 && !l.inductive() {
-		l.block = blocking / (2 * math.Pi * from * foster.R0)
+		ratio := max(leastBlocking, cmplx.Abs(foster.At(from))/foster.R0/(blockingShare*maxError))
+		l.block = ratio / (2 * math.Pi * from * foster.R0)
 	}
 	return l, nil
 }

@@ -165,6 +165,9 @@ func TestOwnCircuitsInSimulator(t *testing.T) {
 		{"L1 || L2 || (L3 + L4)", []float64{1e-6, 2e-6, 1e-9, 3e-6}, 100, 1e7, 0.001},
 		{"(L1 || L2) + (C1 || (C2 + C3))", []float64{1e-9, 1e-6, 1e-9, 1e-9, 1e-10}, 100, 1e7, 0.001},
 		{"L1 || (L2 + (L3 || R3)) || (skin(K) + L4)", []float64{1e-6, 2e-6, 1e-9, 10, 1e-5, 3e-6}, 1e3, 1e6, 0.001},
+		// Alone, so that nothing hides the capacitor that blocks direct current.
+		{"ESR + cpe(Q, n)", []float64{1, 1e-6, 0.8}, 10, 1e6, 0.001},
+		{"cpe(Q, n)", []float64{1e-6, 0.4}, 10, 1e5, 0.001},
 		{"cpe(Q, n) + C", []float64{1e-7, 0.8, 1e-8}, 1, 1e6, 0.001},
 		{"R || cpe(Q, n)", []float64{1e5, 1e-9, 0.5}, 1, 1e6, 0.0001},
 		{"loss(C1, tand1) + rcline(R, C2) + loss(C3, tand3)", []float64{1e-7, 0.002, 100, 1e-7, 2e-8, 0.05}, 10, 1e6, 0.001},

@@ -99,6 +99,12 @@ func Analyse(freq []float64, z []complex128, request Request) (*Analysis, error)
 	}
 	chosen := a.choose(settings, request.Circuit != nil)
 	a.Name, a.Result = a.Candidates[chosen].Name, a.Candidates[chosen].Result
+	return a.finish(freq, z, request, settings)
+}
+
+// finish adds to an analysis whose result is chosen what the sweep cannot
+// tell, what was asked for, and the warnings.
+func (a *Analysis) finish(freq []float64, z []complex128, request Request, settings *Settings) (*Analysis, error) {
 	if err := a.Result.bound(); err != nil {
 		return nil, err
 	}

@@ -308,23 +308,7 @@ func (l *LotChoice) Analyse(freq []float64, z []complex128, request Request, tri
 	if !slices.ContainsFunc(a.Candidates, func(c Candidate) bool { return c.Chosen }) {
 		a.Candidates = append(a.Candidates, chosen)
 	}
-	if err := a.Result.bound(); err != nil {
-		return nil, err
-	}
-	if request.Profile {
-		if err := a.Result.ProfileIntervals(); err != nil {
-			return nil, err
-		}
-	}
-	if request.Advise != "" {
-		var err error
-		if a.Advice, err = a.Result.Advise(request.Advise); err != nil {
-			return nil, err
-		}
-	}
-	a.warn(freq, z, settings)
-	a.Warnings = sortedWarnings(a.Warnings)
-	return a, nil
+	return a.finish(freq, z, request, settings)
 }
 
 // article puts the indefinite article before a kind of part.

@@ -263,6 +263,13 @@ func overflow(t *testing.T, ctx context.Context) {
 		if over := evaluate[float64](t, ctx, `document.documentElement.scrollWidth - window.innerWidth`); over > 0 {
 			t.Errorf("at %d px the page is %v px too wide", width, over)
 		}
+		if width < 1280 {
+			continue
+		}
+		// On a desk no table or drawing has to be scrolled sideways.
+		for _, name := range evaluate[[]string](t, ctx, `[...document.querySelectorAll(".scroll")].filter(e => e.scrollWidth > e.clientWidth).map(e => e.getAttribute("aria-label") || e.getAttribute("aria-labelledby"))`) {
+			t.Errorf("at %d px %q scrolls sideways", width, name)
+		}
 	}
 }
 

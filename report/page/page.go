@@ -308,8 +308,9 @@ type indexRow struct {
 	Warnings               int
 }
 
-// indexColumns is how many parameters fit beside the rest.
-const indexColumns = 6
+// indexColumns is how many parameters fit beside the rest: all of any circuit
+// of the library.
+const indexColumns = 7
 
 // cell is a text and the number it is sorted by; Sort is "" where there is
 // none.

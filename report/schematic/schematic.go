@@ -24,7 +24,8 @@ const (
 	half       = 10.0 // half its height
 	gap        = 12.0 // between neighbours
 	lead       = 16.0 // at the ends
-	scale      = 1.25 // pixels a unit
+	scale      = 1.25 // pixels a unit, where there is room
+	leastScale = 0.9  // below it the text gets too small to read
 )
 
 // SVG draws a circuit with a text, such as the value, for each of its
@@ -34,8 +35,8 @@ func SVG(c *models.Circuit, labels []string, alt string) string {
 	b := layout(c, c.Root(), labels)
 	width, height := b.width+2*lead, b.above+b.below+8
 	var out strings.Builder
-	fmt.Fprintf(&out, `<svg class="schematic" viewBox="0 0 %g %g" width="%g" height="%g" role="img" aria-label="%s" xmlns="http://www.w3.org/2000/svg">`,
-		width, height, scale*width, scale*height, html.EscapeString(alt))
+	fmt.Fprintf(&out, `<svg class="schematic" viewBox="0 0 %g %g" width="%g" height="%g" style="min-width:%gpx" role="img" aria-label="%s" xmlns="http://www.w3.org/2000/svg">`,
+		width, height, scale*width, scale*height, leastScale*width, html.EscapeString(alt))
 	out.WriteString(`<g fill="none" stroke="currentColor" stroke-width="1.4" stroke-linecap="round">`)
 	y := b.above + 4
 	wire(&out, 5, y, lead, y)

@@ -71,8 +71,13 @@ func (f *fitFlags) batchLots(lots []lot, s streams, emit func(fitted) error) err
 	if len(b.failures) == 0 {
 		return nil
 	}
-	if total > 1 {
-		fmt.Fprintf(s.err, "realpart: %d of %d inputs failed\n", len(b.failures), total)
+	switch failed := len(b.failures); {
+	case failed > b.failedInputs && total > 1:
+		fmt.Fprintf(s.err, "realpart: %d of %d inputs failed, with %d sweeps\n", b.failedInputs, total, failed)
+	case total > 1:
+		fmt.Fprintf(s.err, "realpart: %d of %d inputs failed\n", failed, total)
+	case b.sweeps > 1:
+		fmt.Fprintf(s.err, "realpart: %d of %d sweeps failed\n", failed, b.sweeps)
 	}
 	return &exitError{code: b.code}
 }
@@ -103,6 +108,8 @@ type batch struct {
 	first    int  // the index of the lot's first input
 	failures []string
 	code     int
+
+	sweeps, failedInputs int
 }
 
 // lot fits the inputs of a lot, or inputs that are none.
@@ -142,11 +149,16 @@ func (b *batch) lot(l lot, total int) error {
 			return b.fitSweeps(sweeps, trials, choice, jobs, bar)
 		},
 		func(i int, results []fitted) error {
+			before := len(b.failures)
 			for _, r := range results {
 				r.input = b.first + i
 				if err := b.take(r); err != nil {
 					return err
 				}
+			}
+			b.sweeps += len(results)
+			if len(b.failures) > before {
+				b.failedInputs++
 			}
 			return nil
 		})

@@ -73,9 +73,13 @@ func TestBatchResumesAfterCut(t *testing.T) {
 	if lines := bytes.Count(read(t, out), []byte("\n")); lines != 10 {
 		t.Fatalf("%d lines, want the 10 that were done", lines)
 	}
-	for name, change := range map[string]func(){
-		"in the second pass": func() {},
-		"in the first pass": func() {
+	for _, c := range []struct {
+		name   string
+		change func()
+		reused int
+	}{
+		{"in the second pass", func() {}, 10},
+		{"in the first pass", func() {
 			// Half of the trials, the last half-written, and no results yet.
 			lines := bytes.SplitAfter(trials, []byte("\n"))
 			half := append(bytes.Join(lines[:12], nil), lines[12][:50]...)
@@ -85,9 +89,9 @@ func TestBatchResumesAfterCut(t *testing.T) {
 			if err := os.WriteFile(out, nil, 0o644); err != nil {
 				t.Fatal(err)
 			}
-		},
+		}, 0},
 	} {
-		change()
+		c.change()
 		reused := 0
 		if err := batchFlagsOf(t, "--json-out", out, "--resume").batch(inputs, quiet, func(r fitted) error {
 			if r.held != nil {
@@ -95,19 +99,16 @@ func TestBatchResumesAfterCut(t *testing.T) {
 			}
 			return nil
 		}); err != nil {
-			t.Fatalf("cut %s: %v", name, err)
+			t.Fatalf("cut %s: %v", c.name, err)
 		}
 		if !bytes.Equal(read(t, out), want) {
-			t.Errorf("cut %s: the resumed run has other bytes", name)
+			t.Errorf("cut %s: the resumed run has other bytes", c.name)
 		}
-		if name == "in the second pass" && reused != 10 {
-			t.Errorf("cut %s: %d results reused, want 10", name, reused)
+		if reused != c.reused {
+			t.Errorf("cut %s: %d results reused, want %d", c.name, reused, c.reused)
 		}
 		if _, err := os.Stat(out + trialsEnding); err == nil {
-			t.Errorf("cut %s: the trials are left behind", name)
-		}
-		if err := os.WriteFile(out+trialsEnding, trials, 0o644); err != nil {
-			t.Fatal(err)
+			t.Errorf("cut %s: the trials are left behind", c.name)
 		}
 	}
 }

@@ -45,13 +45,18 @@ func (b *batch) tryAll(l lot) (*firstPass, error) {
 	earlier := map[string]span{} // by content
 	var err error
 	if b.store == nil {
-		p.file, err = os.CreateTemp("", "realpart-trials-")
+		if p.file, err = os.CreateTemp("", "realpart-trials-"); err == nil {
+			os.Remove(p.file.Name()) // where an open file can be: nothing stays behind, however the program ends
+		}
 	} else {
 		flags := os.O_RDWR | os.O_CREATE
 		if !b.resume && !b.tried {
 			flags |= os.O_TRUNC
 		}
 		p.keep = true
+		if err := checkTrials(b.jsonOut + trialsEnding); err != nil {
+			return nil, err
+		}
 		p.file, err = os.OpenFile(b.jsonOut+trialsEnding, flags, 0o644)
 	}
 	defer func() { b.tried = true }()
@@ -129,6 +134,21 @@ func (b *batch) tryAll(l lot) (*firstPass, error) {
 	}
 	p.choice = tally.Choose()
 	return p, nil
+}
+
+// checkTrials refuses to write over a file that is something else.
+func checkTrials(path string) error {
+	file, err := os.Open(path)
+	if err != nil {
+		return nil // there is none, or opening it for writing will tell
+	}
+	defer file.Close()
+	first, err := bufio.NewReader(file).ReadBytes('\n')
+	var t trialLine
+	if err == nil && json.Unmarshal(first, &t) != nil {
+		return usagef("--json-out: expected no file %s, or one that an earlier run left, found another; move it away", path)
+	}
+	return nil
 }
 
 // load finds the lines of an interrupted run and returns where to go on; a

@@ -123,7 +123,7 @@ func WriteComparison(w io.Writer, c *lots.Comparison, all []*lots.Lot, made []pa
 	v.Sections = append(v.Sections, s)
 	s = section{ID: "comparison", Title: "Comparison", Notes: []string{lots.TestNote}}
 	for i, l := range c.Lots[1:] {
-		s.Tables = append(s.Tables, newTable(l.Name+" less "+c.Lots[0].Name, c.Table(i+1)))
+		s.Tables = append(s.Tables, newTable(l.Name+" less "+c.Lots[0].Name, c.Table(i+1, true)))
 	}
 	v.Sections = append(v.Sections, s)
 	for i, l := range c.Lots {

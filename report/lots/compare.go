@@ -300,10 +300,23 @@ func (c *Comparison) caution(lots []*Lot) {
 			}
 		}
 	}
+	for i, l := range lots[1:] {
+		if n := shared(lots[0], l); n > 0 {
+			add("shared-sweeps", "%s of %s %s in %s too: the same measurement.", count(n, "sweep"), l.Name, is(n), lots[0].Name)
+		}
+		for _, other := range lots[1 : i+1] {
+			if n := shared(other, l); n > 0 {
+				add("shared-sweeps", "%s of %s %s in %s too: the same measurement.", count(n, "sweep"), l.Name, is(n), other.Name)
+			}
+		}
+	}
 	for i, samples := range c.Samples {
-		var left, few, outliers, skewed []string
+		var left, few, outliers, skewed, constant []string
 		excluded := false
 		for _, s := range samples {
+			if s.N >= fewestParts && s.SD == 0 {
+				constant = append(constant, s.Figure.String())
+			}
 			if n := s.NotDetermined; n > 0 {
 				left = append(left, fmt.Sprintf("%s in %d", s.Figure, n))
 			}
@@ -319,6 +332,9 @@ func (c *Comparison) caution(lots []*Lot) {
 			}
 		}
 		name := lots[i].Name
+		if len(constant) > 0 {
+			add("no-spread", "%s: no spread at all in %s. Parts differ; these may be one measurement several times.", name, strings.Join(constant, ", "))
+		}
 		if len(left) > 0 {
 			add("not-determined", "%s: left out because the sweeps do not tell the value: %s of %s.", name, strings.Join(left, ", "), count(len(lots[i].Fits), "part"))
 		}
@@ -351,6 +367,23 @@ func (c *Comparison) caution(lots []*Lot) {
 	if len(spread) > 0 {
 		add("different-spread", "The spread differs (Brown–Forsythe, p below 1 %%): %s.", strings.Join(spread, ", "))
 	}
+}
+
+// shared counts the sweeps that are in both lots, by their content.
+func shared(a, b *Lot) int {
+	seen := map[string]bool{}
+	for _, f := range a.Fits {
+		if f.Sweep.SHA256 != "" {
+			seen[f.Sweep.SHA256+" "+f.Sweep.Part] = true
+		}
+	}
+	n := 0
+	for _, f := range b.Fits {
+		if seen[f.Sweep.SHA256+" "+f.Sweep.Part] {
+			n++
+		}
+	}
+	return n
 }
 
 func (r *Row) name() string { return Figure{r.Figure, r.AtHz, r.Unit}.String() }

@@ -255,7 +255,7 @@ func TestCautions(t *testing.T) {
 		}
 	}
 	a, b := fresh(1)
-	for _, code := range []string{"different-circuits", "different-frequencies", "different-bias", "different-temperature", "few-parts", "different-kinds", "failed-sweeps", "not-determined"} {
+	for _, code := range []string{"different-circuits", "different-frequencies", "different-bias", "different-temperature", "few-parts", "different-kinds", "failed-sweeps", "not-determined", "shared-sweeps", "copied-sweeps", "no-spread", "repeated-sweeps"} {
 		if hasCaution(compare(t, Options{}, a, b), code) {
 			t.Errorf("%s said of lots that are comparable", code)
 		}
@@ -285,6 +285,22 @@ func TestCautions(t *testing.T) {
 	}
 	if words := strings.Join(c.Answers()[0].Sentences, " "); !strings.Contains(words, "Not tested") {
 		t.Errorf("two parts: %q", words)
+	}
+	a, b = fresh(1)
+	b.Fits[4] = a.Fits[4]
+	c = compare(t, Options{}, a, b)
+	if !hasCaution(c, "shared-sweeps") {
+		t.Error("a sweep that is in both lots is not said")
+	}
+	a, b = fresh(1)
+	b.Fits[5].Sweep.SHA256 = b.Fits[4].Sweep.SHA256
+	if c = compare(t, Options{}, a, b); !hasCaution(c, "copied-sweeps") {
+		t.Error("a copied sweep is not said")
+	}
+	a, b = fresh(1)
+	all(b, func(f *report.Fit) { f.Parameters[2].Value = 1e-5 })
+	if c = compare(t, Options{}, a, b); !hasCaution(c, "no-spread") {
+		t.Error("a lot without spread is not said")
 	}
 	a, b = fresh(1)
 	b.Fits[3].Parameters[1].Determined = false

@@ -160,6 +160,9 @@ func (l *Lot) Cautions() []Caution {
 	if l.Repeated > 0 {
 		add("repeated-sweeps", "%s: %s there twice and counted once.", l.Name, count(l.Repeated, "sweep")+" "+was(l.Repeated))
 	}
+	if n := l.copies(); n > 0 {
+		add("copied-sweeps", "%s: %s the same content as another of a different name, and %s counted all the same.", l.Name, count(n, "sweep")+" "+has(n), is(n))
+	}
 	expressions := distinct(l.Fits, func(f *report.Fit) string { return f.Circuit.Expression })
 	if len(expressions) > 1 {
 		add("different-circuits", "%s: its parts were fitted with different circuits (%s). Parameters are those of the parts with the most frequent one. Fit all with --circuit.", l.Name, strings.Join(expressions, "; "))
@@ -174,6 +177,30 @@ func (l *Lot) Cautions() []Caution {
 		add("structured-residual", "%s: in %d of %s the circuit does not describe the part to the accuracy of the points (structured residuals). Figures at frequencies suffer less than parameters.", l.Name, structured, count(len(l.Fits), "part"))
 	}
 	return out
+}
+
+// copies counts the files whose content another file of the lot has too.
+func (l *Lot) copies() int {
+	files := map[string][]string{} // by content
+	n := 0
+	for _, f := range l.Fits {
+		names := files[f.Sweep.SHA256]
+		if f.Sweep.SHA256 == "" || slices.Contains(names, f.Sweep.File) {
+			continue
+		}
+		if len(names) > 0 {
+			n++
+		}
+		files[f.Sweep.SHA256] = append(names, f.Sweep.File)
+	}
+	return n
+}
+
+func has(n int) string {
+	if n == 1 {
+		return "has"
+	}
+	return "have"
 }
 
 // distinct lists the different texts of records, sorted.
@@ -193,6 +220,13 @@ func count(n int, what string) string {
 		return "1 " + what
 	}
 	return fmt.Sprintf("%d %ss", n, what)
+}
+
+func is(n int) string {
+	if n == 1 {
+		return "is"
+	}
+	return "are"
 }
 
 func was(n int) string {

@@ -37,7 +37,12 @@ func (c *Comparison) WriteText(w io.Writer, o TextOptions) error {
 	}
 	for i, s := range c.Lots[1:] {
 		l.Title(fmt.Sprintf("%s less %s", s.Name, c.Lots[0].Name))
-		l.Table(c.Table(i+1), "lrrrrrl")
+		wide := o.Width >= wideTable
+		align := "lrrrrrl"
+		if wide {
+			align = "lrrrrrrrrl"
+		}
+		l.Table(c.Table(i+1, wide), align)
 	}
 	l.Paragraph("  ", "  ", TestNote)
 	for i, samples := range c.Samples {
@@ -49,11 +54,16 @@ func (c *Comparison) WriteText(w io.Writer, o TextOptions) error {
 }
 
 // Table gives the comparison of a lot, by its index, with the reference for
-// people: a row a figure, below a header.
-func (c *Comparison) Table(lot int) [][]string {
-	rows := [][]string{{"figure", c.Lots[0].Name, c.Lots[lot].Name, "change", "95 % interval", "p (Holm)", "verdict"}}
+// people: a row a figure, below a header. wide adds what would have been
+// detected, and the tests of location and spread that need no normal values.
+func (c *Comparison) Table(lot int, wide bool) [][]string {
+	rows := [][]string{{"figure", c.Lots[0].Name, c.Lots[lot].Name, "change", "95 % interval", "p (Holm)"}}
+	if wide {
+		rows[0] = append(rows[0], "detectable", "Mann–Whitney p", "Brown–Forsythe p")
+	}
+	rows[0] = append(rows[0], "verdict")
 	for _, r := range c.rows(lot) {
-		rows = append(rows, r.cells())
+		rows = append(rows, r.cells(wide))
 	}
 	return rows
 }
@@ -63,6 +73,9 @@ func (c *Comparison) rows(lot int) []Row {
 	k := len(c.Samples[0])
 	return c.Comparisons[(lot-1)*k : lot*k]
 }
+
+// wideTable is the width of a terminal that has room for all columns.
+const wideTable = 130
 
 // TestNote says what the table of a comparison holds.
 const TestNote = "Means and their change, Welch's t test, p adjusted by Holm for all rows. A meter error common to the lots cancels in the difference to first order and is not added."
@@ -194,8 +207,8 @@ func probability(p float64) string {
 }
 
 // cells is a row of the table.
-func (r Row) cells() []string {
-	cells := []string{r.name(), r.reference.text(r.reference.Mean), r.lot.text(r.lot.Mean), "", "", "", string(r.Verdict)}
+func (r Row) cells(wide bool) []string {
+	cells := []string{r.name(), r.reference.text(r.reference.Mean), r.lot.text(r.lot.Mean), "", "", ""}
 	if r.Difference != nil {
 		cells[3] = r.change(*r.Difference, true)
 	}
@@ -203,10 +216,17 @@ func (r Row) cells() []string {
 		cells[4] = strings.TrimSuffix(r.change(*r.Low95, true), " %") + " … " + r.change(*r.High95, true)
 		cells[5] = probability(number(r.PHolm))
 	}
-	if r.P == nil {
-		cells[6] += " (fewer than 3 values)"
+	if wide {
+		detectable := ""
+		if r.Detectable != nil {
+			detectable = r.change(*r.Detectable, false)
+		}
+		cells = append(cells, detectable, probability(number(r.MannWhitneyP)), probability(number(r.BrownForsytheP)))
 	}
-	return cells
+	if r.P == nil {
+		return append(cells, "not tested")
+	}
+	return append(cells, string(r.Verdict))
 }
 
 // relative tells whether differences are given as a share of the reference's
@@ -328,7 +348,7 @@ func undecided(rows []Row) []string {
 		}
 		names = append(names, r.name())
 		least, most = min(least, r.lot.N, r.reference.N), max(most, r.lot.N, r.reference.N)
-		if r.Detectable != nil {
+		if r.Detectable != nil && *r.Detectable > 0 {
 			detectable = append(detectable, r.change(*r.Detectable, false)+" in "+r.name())
 		}
 	}

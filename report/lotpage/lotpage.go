@@ -139,9 +139,7 @@ func WriteAcceptance(w io.Writer, judged []Judged, rule accept.Rule, limits []ac
 	for i, j := range judged {
 		names = append(names, j.Verdict.Lot)
 		v.Answers = append(v.Answers, lots.Answer{Title: j.Verdict.Answer(), Sentences: j.Verdict.Sentences()})
-		for _, caution := range j.Lot.Cautions() {
-			v.Warnings = append(v.Warnings, caution)
-		}
+		v.Warnings = append(v.Warnings, j.Lot.Cautions()...)
 		s := section{ID: fmt.Sprintf("parts-%d", i+1), Title: "Lot " + j.Verdict.Lot + ": parts against limits", Notes: []string{accept.RuleNote(rule)}}
 		var of []lots.Limits
 		for k, sample := range j.Samples {

@@ -68,7 +68,17 @@ func (t *text) group(fits []*Fit) {
 	for _, p := range fits[0].Parameters {
 		header, align = append(header, p.Name), align+"r"
 	}
-	header, align = append(header, "resonance", "rms", "warnings"), align+"rrr"
+	// A column that no sweep fills keeps its name to itself: it takes no room.
+	named := func(name string, filled func(*Fit) bool) string {
+		if slices.ContainsFunc(fits, filled) {
+			return name
+		}
+		return ""
+	}
+	header = append(header,
+		named("resonance", func(f *Fit) bool { return len(f.SelfResonance) > 0 }), "rms",
+		named("warnings", func(f *Fit) bool { return len(f.AllWarnings()) > 0 }))
+	align += "rrr"
 	rows := [][]string{header}
 	open := false
 	for _, f := range fits {

@@ -90,7 +90,7 @@ func BenchmarkBatch(b *testing.B) {
 // What is in memory does not grow with the number of sweeps: after a collection
 // there is as much after 220 as after 40. (The record of a sweep takes some
 // 10 kB, so that keeping them would add 2 MB.)
-func TestBatchMemoryIsFlat(t *testing.T) {
+func TestMemoryIsFlat(t *testing.T) {
 	dir := t.TempDir()
 	makeLot(t, dir, "cap-esr-esl", []float64{0.02, 5e-9, 10e-6}, 240, 31)
 	inputs, err := ingest.Find([]string{dir})

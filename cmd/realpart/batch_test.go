@@ -114,7 +114,7 @@ func TestBatchResumesAfterCut(t *testing.T) {
 }
 
 // A process that is killed outright leaves a file that --resume completes.
-func TestBatchResumesAfterKill(t *testing.T) {
+func TestKilledRunResumes(t *testing.T) {
 	if testing.Short() {
 		t.Skip("starts a process")
 	}

@@ -168,9 +168,11 @@ func optional(v *float64) string {
 	return number(*v)
 }
 
-// harmless keeps a spreadsheet from taking a text for a formula.
+// harmless keeps a spreadsheet from taking a text for a formula: one that
+// begins with a sign of a formula, in East Asian full width too (common
+// practice, no source).
 func harmless(s string) string {
-	if s != "" && strings.ContainsRune("=+-@\t\r", rune(s[0])) {
+	if s != "" && strings.ContainsAny(string([]rune(s)[:1]), "=+-@＝＋－＠\t\r\n") {
 		return "'" + s
 	}
 	return s

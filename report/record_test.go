@@ -397,4 +397,9 @@ func TestCSV(t *testing.T) {
 			t.Errorf("no %q in\n%s", want, got)
 		}
 	}
+	for text, want := range map[string]string{"": "", "c017": "c017", "µ": "µ", "a=1": "a=1", "+1": "'+1", "@a": "'@a", "＝1": "'＝1", "\n=1": "'\n=1"} {
+		if got := harmless(text); got != want {
+			t.Errorf("%q became %q, want %q", text, got, want)
+		}
+	}
 }

@@ -2,6 +2,7 @@ package main
 
 import (
 	"bytes"
+	"errors"
 	"fmt"
 	"io"
 	"os"
@@ -62,8 +63,8 @@ intervals, the self-resonances, the residuals and the figures of data sheets.`,
 					return err
 				}
 			}
-			if o.touchstone != "" && len(inputs) > 1 {
-				return onePartOnly(len(inputs))
+			if err := o.checkParts(len(inputs)); err != nil {
+				return err
 			}
 			return o.run(f, inputs, s)
 		},
@@ -118,10 +119,8 @@ func (o *fitOutputs) check(f *fitFlags) error {
 	if o.points != 0 && (o.points < 2 || o.touchstone == "") {
 		return usagef("--points: expected 2 or more, with --touchstone, found %d", o.points)
 	}
-	if o.plot != "" {
-		if err := figure.CheckFormat(o.format(), 1); err != nil {
-			return usagef("--plot %s: %w", o.plot, err)
-		}
+	if err := o.checkParts(1); err != nil {
+		return err
 	}
 	for _, flag := range []string{"csv", "html", "netlist", "plot", "touchstone", "residuals"} {
 		switch name := f.flags.Lookup(flag).Value.String(); {
@@ -148,9 +147,18 @@ func (f *fitFlags) besideSweeps() []string {
 	return files
 }
 
-// onePartOnly refuses a Touchstone file of several parts.
-func onePartOnly(n int) error {
-	return usagef("--touchstone: expected one sweep, found %d; a .s1p file holds one part", n)
+// checkParts refuses files that cannot hold so many parts. It is asked with the
+// number of inputs, before the work, and with that of the parts in them.
+func (o *fitOutputs) checkParts(n int) error {
+	if o.touchstone != "" && n > 1 {
+		return usagef("--touchstone: expected one sweep, found %d; a .s1p file holds one part", n)
+	}
+	if o.plot != "" {
+		if err := figure.CheckFormat(o.format(), n); err != nil {
+			return usagef("--plot %s: %w", o.plot, err)
+		}
+	}
+	return nil
 }
 
 // format is the ending of --plot.
@@ -195,13 +203,19 @@ func (o *fitOutputs) run(f *fitFlags, inputs []ingest.Input, s streams) error {
 	if exit, ok := batchErr.(*exitError); batchErr != nil && (!ok || exit.err != nil) {
 		return batchErr
 	}
+	// The files first: a reader of the report may have seen enough of it, and
+	// then the pipe ends the program.
+	writeErr := o.write(all, f, s)
+	if errors.As(writeErr, new(*interruption)) {
+		return writeErr
+	}
 	if len(shown) > 0 {
 		if err := o.show(shown, f, s); err != nil {
 			return err
 		}
 	}
-	if err := o.write(all, f, s); err != nil {
-		return err
+	if writeErr != nil {
+		return writeErr
 	}
 	return batchErr
 }
@@ -299,14 +313,10 @@ func (o *fitOutputs) write(all []kept, f *fitFlags, s streams) error {
 	if len(good) == 0 {
 		return nil
 	}
-	if o.touchstone != "" && len(good) > 1 {
-		return onePartOnly(len(good))
+	if err := o.checkParts(len(good)); err != nil {
+		return err
 	}
-	if o.plot != "" {
-		if err := figure.CheckFormat(o.format(), len(good)); err != nil {
-			return usagef("--plot %s: %w", o.plot, err)
-		}
-	}
+	var failure error
 	for _, output := range []struct {
 		path  string
 		write func(io.Writer) error
@@ -349,11 +359,17 @@ func (o *fitOutputs) write(all []kept, f *fitFlags, s streams) error {
 		if output.path == "" {
 			continue
 		}
-		if err := writeFile(output.path, output.write); err != nil {
+		err := writeFile(output.path, output.write)
+		switch {
+		case errors.As(err, new(*interruption)):
 			return err
+		case err != nil && failure == nil:
+			failure = err
+		case err != nil: // the other files are written all the same
+			failure = fmt.Errorf("%w; %w", failure, err)
 		}
 	}
-	return nil
+	return failure
 }
 
 // writeTouchstone writes the fitted model on the grid of the sweep or on one

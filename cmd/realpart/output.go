@@ -59,9 +59,17 @@ func writeFile(path string, write func(io.Writer) error) error {
 		if number, ok := s.(syscall.Signal); ok {
 			code = 128 + int(number) // as a shell says it
 		}
-		return &exitError{code, fmt.Errorf("%s is not written: %v", path, s)}
+		return &exitError{code, &interruption{path, s}}
 	}
 }
+
+// interruption is the error of a signal that came while a file was written.
+type interruption struct {
+	path   string
+	signal os.Signal
+}
+
+func (i *interruption) Error() string { return fmt.Sprintf("%s is not written: %v", i.path, i.signal) }
 
 // notifyOfEnd catches the signals that end the program, save those that it was
 // started to ignore, as by nohup.

@@ -52,12 +52,13 @@ func (f *fitFlags) findLot(argument string, s streams) (*lotSource, error) {
 	if l.name == "" {
 		l.name = lotName(path)
 	}
-	text, isRecords, err := f.records(path, s)
+	records, err := f.records(path, s)
 	if err != nil {
 		return nil, err
 	}
-	if isRecords {
-		if l.records, err = report.ReadJSON(bytes.NewReader(text), path); err != nil {
+	if records != nil {
+		defer records.Close()
+		if l.records, err = report.ReadJSON(records, path); err != nil {
 			return nil, &exitError{exitFailure, err}
 		}
 		if len(l.records) == 0 {
@@ -86,32 +87,39 @@ func lotName(path string) string {
 	return partOf(path)
 }
 
-// records reads a file whose first character is that of a JSON object; other
-// files are left alone.
-func (f *readFlags) records(path string, s streams) (text []byte, ok bool, err error) {
+// records opens a file whose first character is that of a JSON object; nil for
+// others.
+func (f *readFlags) records(path string, s streams) (io.ReadCloser, error) {
 	if path == "-" {
-		if text, err = f.standardInput(s); err != nil {
-			return nil, false, &exitError{exitFailure, err}
+		text, err := f.standardInput(s)
+		if err != nil {
+			return nil, &exitError{exitFailure, err}
 		}
-		return text, startsObject(text), nil
+		if !startsObject(text) {
+			return nil, nil
+		}
+		return io.NopCloser(bytes.NewReader(text)), nil
+	}
+	info, err := os.Stat(path)
+	if err != nil || info.IsDir() {
+		return nil, nil // opening it as a sweep tells
 	}
 	file, err := os.Open(path)
 	if err != nil {
-		return nil, false, nil // opening it as a sweep tells
-	}
-	defer file.Close()
-	if info, err := file.Stat(); err != nil || info.IsDir() {
-		return nil, false, nil
+		return nil, nil
 	}
 	r := bufio.NewReader(file)
-	start, _ := r.Peek(512)
-	if !startsObject(start) {
-		return nil, false, nil
+	if start, _ := r.Peek(512); !startsObject(start) {
+		file.Close()
+		if !info.Mode().IsRegular() { // what was looked at is gone
+			return nil, usagef("%s: expected lines of `realpart fit --json` from a pipe, found something else; give sweeps as files, or as - on standard input", path)
+		}
+		return nil, nil
 	}
-	if text, err = io.ReadAll(r); err != nil {
-		return nil, false, &exitError{exitFailure, fmt.Errorf("%s: %w", path, cause(err))}
-	}
-	return text, true, nil
+	return struct {
+		io.Reader
+		io.Closer
+	}{r, file}, nil
 }
 
 func startsObject(text []byte) bool {

@@ -48,8 +48,7 @@ func (r *Result) withoutElement(i int) (probability, cost float64, ok bool) {
 		return 0, 0, false
 	}
 	s := r.problem.settings
-	var rest Settings
-	rest = *s
+	rest := *s
 	rest.Fixed, rest.Start, rest.Bounds = map[string]float64{}, nil, map[string]Interval{}
 	for _, k := range kept {
 		name := r.Parameters[k].Name

@@ -200,6 +200,7 @@ func judge(source *lotSource, limits []accept.Limit, rule accept.Rule, acceptAtM
 	verdict := accept.JudgeLot(source.name, parts, acceptAtMost)
 	var samples []lots.Sample
 	l := lots.New(source.name, source.fits())
+	verdict.Caution(l, rule)
 	if circuit := lots.Circuit([]*lots.Lot{l}); circuit != nil {
 		for _, limit := range limits {
 			sample := l.Sample(limit.Figure, circuit.Expression, false)

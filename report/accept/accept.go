@@ -1,6 +1,7 @@
 package accept
 
 import (
+	"fmt"
 	"math"
 
 	"gonum.org/v1/gonum/mathext"
@@ -232,6 +233,8 @@ type Lot struct {
 	Verdict          string  `json:"verdict"` // accepted or rejected
 	// Figures are the statistics of the lot for the limits.
 	Figures []lots.FigureStatistics `json:"figures"`
+	// Cautions say what the verdicts leave out.
+	Cautions []lots.Caution `json:"cautions,omitzero"`
 }
 
 // The verdicts on a lot.
@@ -260,6 +263,27 @@ func JudgeLot(name string, parts []Part, acceptAtMost int) Lot {
 	}
 	l.ShareAt10Percent = LimitingQuality(l.Parts, acceptAtMost, 0.1)
 	return l
+}
+
+// Caution adds what the reader of the verdicts on a lot must know.
+func (l *Lot) Caution(of *lots.Lot, rule Rule) {
+	unstated := 0
+	for _, f := range of.Fits {
+		if !f.AccuracyStated() {
+			unstated++
+		}
+	}
+	if unstated > 0 {
+		text := "The meter's accuracy is not stated: the probability of conformity covers the scatter of the points alone"
+		if rule == Guarded {
+			text = "The meter's accuracy is not stated: guard band and probability of conformity cover the scatter of the points alone"
+		}
+		if unstated < len(of.Fits) {
+			text = fmt.Sprintf("For %d of %d parts: %s", unstated, len(of.Fits), text)
+		}
+		l.Cautions = append(l.Cautions, lots.Caution{Code: "accuracy-not-stated", Text: text + ". Give it with --accuracy."})
+	}
+	l.Cautions = append(l.Cautions, of.Cautions()...)
 }
 
 // Acceptance is the operating characteristic of a sampling plan: the

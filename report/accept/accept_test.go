@@ -193,6 +193,24 @@ func TestJudgeLot(t *testing.T) {
 	}
 }
 
+// Verdicts without the meter's accuracy say so; with it they don't.
+func TestCaution(t *testing.T) {
+	has := func(f *report.Fit) bool {
+		l := JudgeLot("heron", nil, 0)
+		l.Caution(lots.New("heron", []*report.Fit{f}), Guarded)
+		return len(l.Cautions) > 0 && l.Cautions[0].Code == "accuracy-not-stated"
+	}
+	f := record(1e-6, 0.01)
+	f.Residuals = &report.Residuals{}
+	if !has(f) {
+		t.Error("without an accuracy: nothing is said")
+	}
+	f.Parameters[0].MeterError = finite(1e-9)
+	if has(f) {
+		t.Error("with an accuracy: it is said all the same")
+	}
+}
+
 // The operating characteristic against gonum's binomial distribution, and the
 // rule of common practice that n = 22 without a failure shows 10 % (1 −
 // 0.9^22 = 0.9015): exactly 1 − 0.1^(1/n) for acceptance number 0.

@@ -21,6 +21,9 @@ func WriteText(out *report.Layout, l Lot, parts []Part, rule Rule, samples []lot
 	for _, s := range l.Sentences() {
 		out.Paragraph("  ", "  ", s)
 	}
+	for _, c := range l.Cautions {
+		out.Warn(c.Text)
+	}
 	brief := len(parts) > fullTable
 	if brief {
 		out.Title("Parts that do not pass, and why; --json has all")

@@ -121,7 +121,7 @@ func WriteComparison(w io.Writer, c *lots.Comparison, all []*lots.Lot, made []pa
 		s.Notes = append(s.Notes, left...)
 	}
 	v.Sections = append(v.Sections, s)
-	s = section{ID: "comparison", Title: "Comparison", Notes: []string{lots.TestNote}}
+	s = section{ID: "comparison", Title: "Comparison", Notes: []string{c.CircuitNote(), lots.TestNote}}
 	for i, l := range c.Lots[1:] {
 		s.Tables = append(s.Tables, newTable(l.Name+" less "+c.Lots[0].Name, c.Table(i+1, true)))
 	}
@@ -139,7 +139,7 @@ func WriteAcceptance(w io.Writer, judged []Judged, rule accept.Rule, limits []ac
 	for i, j := range judged {
 		names = append(names, j.Verdict.Lot)
 		v.Answers = append(v.Answers, lots.Answer{Title: j.Verdict.Answer(), Sentences: j.Verdict.Sentences()})
-		v.Warnings = append(v.Warnings, j.Lot.Cautions()...)
+		v.Warnings = append(v.Warnings, j.Verdict.Cautions...)
 		s := section{ID: fmt.Sprintf("parts-%d", i+1), Title: "Lot " + j.Verdict.Lot + ": parts against limits", Notes: []string{accept.RuleNote(rule)}}
 		var of []lots.Limits
 		for k, sample := range j.Samples {

@@ -44,6 +44,7 @@ func (c *Comparison) WriteText(w io.Writer, o TextOptions) error {
 		}
 		l.Table(c.Table(i+1, wide), align)
 	}
+	l.Paragraph("  ", "  ", c.CircuitNote())
 	l.Paragraph("  ", "  ", TestNote)
 	for i, samples := range c.Samples {
 		lotTable(l, c.Lots[i].Name, c.Lots[i].N, samples, nil)
@@ -66,6 +67,15 @@ func (c *Comparison) Table(lot int, wide bool) [][]string {
 		rows = append(rows, r.cells(wide))
 	}
 	return rows
+}
+
+// CircuitNote says whose parameters are compared.
+func (c *Comparison) CircuitNote() string {
+	s := "Parameters are those of the circuit "
+	if c.Circuit.Name != "" {
+		s += c.Circuit.Name + ": "
+	}
+	return s + c.Circuit.Expression + "."
 }
 
 // rows are those of a lot by its index, from 1 on.

@@ -7,6 +7,7 @@ import (
 	"gonum.org/v1/gonum/mathext"
 	"gonum.org/v1/gonum/stat/distuv"
 
+	"realpart/models/quantity"
 	"realpart/report"
 	"realpart/report/lots"
 )
@@ -152,6 +153,14 @@ func (l Limit) judge(f *report.Fit, rule Rule) Judged {
 // at 95 %, so that the rule does not matter.
 func (l Limit) judgeBounds(j Judged, r lots.Reading) Judged {
 	j.Reason = "not determined by the sweep"
+	switch low, high := !math.IsNaN(r.Low), !math.IsNaN(r.High); {
+	case low && high:
+		j.Reason += " (" + quantity.Format(r.Low, j.Unit, 2) + " … " + quantity.Format(r.High, j.Unit, 2) + ")"
+	case low:
+		j.Reason += " (> " + quantity.Format(r.Low, j.Unit, 2) + ")"
+	case high:
+		j.Reason += " (< " + quantity.Format(r.High, j.Unit, 2) + ")"
+	}
 	aboveLow := math.IsNaN(l.Low) || r.Low >= l.Low
 	belowHigh := math.IsNaN(l.High) || r.High <= l.High
 	switch {

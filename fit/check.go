@@ -43,6 +43,12 @@ type Judgement struct {
 	Next     []string
 }
 
+// smallestStep is the relative size below which a step is no finding: on data
+// without noise the arithmetic makes such steps. It is a hundredth of what
+// meters of 0.1 % keep: common practice, no source. In a file of few digits,
+// steps of the last place are none either.
+const smallestStep = 1e-5
+
 // minCheckPoints is the least number of points that can be judged.
 const minCheckPoints = 24
 
@@ -79,7 +85,11 @@ func Check(freq []float64, z []complex128, s *CheckSettings) (*Judgement, error)
 		return nil, err
 	}
 	j := &Judgement{Consistent: c.Consistent, RMS: c.Fit.RMS, Noise: c.Fit.Noise}
+	least := max(smallestStep, 2*math.Sqrt(roundingSquares(z)/float64(len(z))))
 	for _, step := range c.Steps {
+		if math.Abs(step.Relative) < least {
+			continue
+		}
 		j.Steps = append(j.Steps, Step{At: step.Freq, Relative: step.Relative})
 	}
 	mistaken := j.judgeUnits(freq, z, c)

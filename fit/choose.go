@@ -166,6 +166,7 @@ func (a *Analysis) compare() {
 			scale = c.Result.problem.scale
 		}
 	}
+	floor := math.NaN()
 	for i := range a.Candidates {
 		c := &a.Candidates[i]
 		if c.Result == nil {
@@ -175,7 +176,10 @@ func (a *Analysis) compare() {
 		if scale > 0 {
 			cost = c.Result.problem.lossAt(c.Result.x, scale)
 		}
-		c.AICc = c.Result.aicc(cost)
+		if math.IsNaN(floor) {
+			floor = roundingSquares(c.Result.Measured)
+		}
+		c.AICc = c.Result.aicc(cost, floor)
 	}
 }
 
@@ -194,11 +198,12 @@ func (p *problem) lossAt(x []float64, scale float64) float64 {
 }
 
 // aicc returns Akaike's information criterion for a cost, see [Candidate].
-func (r *Result) aicc(cost float64) float64 {
+// Sums of squares below the floor, which rounding explains, count as alike.
+func (r *Result) aicc(cost, floor float64) float64 {
 	n := 2 * len(r.Freq)
 	squares := 2 * cost
 	if r.Weight == Relative {
-		squares = max(squares, roundingFloor*roundingFloor*float64(n))
+		squares = max(squares, floor, roundingFloor*roundingFloor*float64(n))
 	}
 	return aicc(squares, n, len(r.Free)+1)
 }
@@ -245,45 +250,63 @@ func (a *Analysis) choose(s *Settings, byUser bool) int {
 		}
 		return 0
 	}
-	best := a.least(func(c *Candidate) bool { return c.sound })
-	none := best < 0
-	if none {
-		best = a.least(func(c *Candidate) bool { return c.Result != nil && c.Result.Status.Converged() })
-	}
-	if best < 0 {
-		best = a.least(func(c *Candidate) bool { return c.Result != nil })
-	}
-	why := "smallest AICc of the circuits with every parameter determined"
-	if none {
-		why = "smallest AICc, though " + a.Candidates[best].Reason
+	eligible := func(c *Candidate) bool { return c.sound }
+	converged := func(c *Candidate) bool { return c.Result != nil && c.Result.Status.Converged() }
+	best := a.least(eligible)
+	why, though := "smallest AICc of the circuits with every parameter determined", ""
+	if best < 0 || a.missed(best, a.least(converged)) {
+		eligible = converged
+		if best = a.least(eligible); best < 0 {
+			eligible = func(c *Candidate) bool { return c.Result != nil }
+			best = a.least(eligible)
+		}
+		why = "smallest AICc"
 		a.Warnings = append(a.Warnings, Warning{"no-candidate-determined",
-			"No circuit of this kind has all its parameters determined by this sweep; the best by AICc is given. Widen the sweep, or name the circuit with --circuit."})
-	} else {
-		least := a.Candidates[best]
-		for i, c := range a.Candidates { // simplest first
-			if c.sound && len(c.Result.Free) < len(a.Candidates[best].Result.Free) && c.AICc <= least.AICc+similarAICc {
-				best = i
-				why = fmt.Sprintf("as good as %s (AICc within %d) and simpler", least.Name, similarAICc)
-			}
-		}
-		for i, c := range a.Candidates {
-			if c.sound && len(c.Result.Free) < len(a.Candidates[best].Result.Free) && c.Result.insideAccuracy() {
-				why = fmt.Sprintf("the simplest whose residual is inside the meter's stated accuracy; what %s would add is not the part's for certain", a.Candidates[best].Name)
-				best = i
-				break
-			}
+			"No circuit of this kind that describes the sweep has all its parameters determined; the best by AICc is given, with bounds for what the sweep does not show. Widen the sweep, or name the circuit with --circuit."})
+	}
+	least := a.Candidates[best]
+	for i, c := range a.Candidates { // simplest first
+		if eligible(&c) && len(c.Result.Free) < len(a.Candidates[best].Result.Free) && c.AICc <= least.AICc+similarAICc {
+			best = i
+			why = fmt.Sprintf("as good as %s (AICc within %d) and simpler", least.Name, similarAICc)
 		}
 	}
+	for i, c := range a.Candidates {
+		if c.sound && len(c.Result.Free) < len(a.Candidates[best].Result.Free) && c.Result.insideAccuracy() {
+			why = fmt.Sprintf("the simplest whose residual is inside the meter's stated accuracy; what %s would add is not the part's for certain", a.Candidates[best].Name)
+			best = i
+			break
+		}
+	}
+	if !a.Candidates[best].sound {
+		though = ", though " + a.Candidates[best].Reason
+	}
+	chosen := a.Candidates[best].Name
 	for i := range a.Candidates {
 		c := &a.Candidates[i]
 		switch {
 		case i == best:
-			c.Chosen, c.Reason = true, why
+			c.Chosen, c.Reason = true, why+though
+		case c.sound && c.AICc < a.Candidates[best].AICc:
+			c.Reason = fmt.Sprintf("AICc %+.1f against %s, but not the simplest that serves", c.AICc-a.Candidates[best].AICc, chosen)
 		case c.sound:
-			c.Reason = fmt.Sprintf("AICc %+.1f against %s", c.AICc-a.Candidates[best].AICc, a.Candidates[best].Name)
+			c.Reason = fmt.Sprintf("AICc %+.1f against %s", c.AICc-a.Candidates[best].AICc, chosen)
 		}
 	}
 	return best
+}
+
+// missed reports whether a circuit with every parameter determined does not
+// describe the sweep although another does: its residuals exceed the meter's
+// stated accuracy, and the other's are less than half as large, which is not
+// by luck. What the other does not determine is then better given as a bound
+// than left out together with what the sweep shows.
+func (a *Analysis) missed(sound, other int) bool {
+	if other < 0 {
+		return false
+	}
+	s, o := a.Candidates[sound], a.Candidates[other]
+	return !s.Result.insideAccuracy() && o.Result.RMSRelative < s.Result.RMSRelative/2 && o.AICc < s.AICc-clearlyBetter
 }
 
 // least returns the eligible candidate with the smallest AICc, the first of

@@ -62,12 +62,12 @@ func TellKind(freq []float64, z []complex128) (models.Kind, string) {
 	// Resistive at the low end.
 	highest := slices.Max(phase)
 	switch {
+	case first < -5 && len(series) > 0 && len(parallel) == 0, first < -5 && last > first+5 && largest < 2*low:
+		return models.CapacitorPart, ends + ", capacitive at the low end"
 	case highest > reactivePhase && largest > inductiveRise*low:
 		return inductive()
 	case highest > 75 && len(series) == 0:
 		return models.InductorPart, fmt.Sprintf("%s, up to %.0f° between", ends, highest)
-	case first < -5 && len(series) > 0, first < -5 && last > first+5 && largest < 2*low:
-		return models.CapacitorPart, ends + ", capacitive at the low end"
 	}
 	return models.ResistorPart, ends
 }
@@ -76,8 +76,7 @@ func TellKind(freq []float64, z []complex128) (models.Kind, string) {
 type turn struct{ freq, q float64 }
 
 // turns returns the series resonances (phase from below −20° to above +20°)
-// and the parallel ones of a sweep. Q follows from the frequencies at which
-// the phase passes ±45°, f₀/(f₂ − f₁), and is 0.5 where it doesn't get there.
+// and the parallel ones of a sweep.
 func turns(freq, phase []float64) (series, parallel []turn) {
 	const certain = 20.0
 	side, from := 0, 0
@@ -105,8 +104,20 @@ func turns(freq, phase []float64) (series, parallel []turn) {
 }
 
 // describe measures the passage of the phase between two points on either
-// side of it.
+// side of it. Q follows from the frequencies at which the phase passes ±45°,
+// f₀/(f₂ − f₁), and is 0.5 where it doesn't get there. Where the points are so
+// far apart that it passes both between two of them, f₀ and Q are those of the
+// resonant circuit that has these two phases,
+//
+//	|tan φ| = Q·|f/f₀ − f₀/f|.
 func describe(freq, phase []float64, a, b int) turn {
+	if math.Abs(phase[a]) >= 45 && math.Abs(phase[b]) >= 45 {
+		const steepest = 89.9 // degrees; the noise of a phase near 90° is no Q
+		tangent := func(i int) float64 { return math.Tan(math.Pi / 180 * min(math.Abs(phase[i]), steepest)) }
+		ratio := tangent(a) / tangent(b)
+		f0 := math.Sqrt((freq[a] + ratio*freq[b]) / (1/freq[a] + ratio/freq[b]))
+		return turn{freq: f0, q: tangent(a) / (f0/freq[a] - freq[a]/f0)}
+	}
 	cross := func(level float64, i, j int) float64 {
 		t := (level - phase[i]) / (phase[j] - phase[i])
 		return freq[i] * math.Pow(freq[j]/freq[i], min(max(t, 0), 1))

@@ -93,7 +93,8 @@ func (r *Result) structure(re, im []float64) {
 	}
 	// Residuals at the rounding of the numbers in a file are not noise, and
 	// their pattern says nothing about the part.
-	if r.RMSRelative < 1e-9 {
+	squares := r.RMSRelative * r.RMSRelative * float64(len(r.Measured))
+	if r.Structured && (r.RMSRelative < 1e-9 || squares <= roundingSquares(r.Measured)) {
 		r.Structured = false
 	}
 }

@@ -183,33 +183,59 @@ func cosine(j *mat.Dense, a, b, from, to int) float64 {
 func (a *Analysis) structure(freq []float64, z []complex128, s *Settings) {
 	r := a.Result
 	from, to, size := r.deviation()
-	text := fmt.Sprintf("The residuals are not noise: the circuit %s does not describe the part to the accuracy of the points. It deviates most from %s to %s, by %s.",
-		r.Circuit, quantity.Format(from, "Hz", 3), quantity.Format(to, "Hz", 3), percent(size))
-	name, rms := "", 0.7*r.RMSRelative
-	better := func(n string, other *Result) {
-		if other != nil && other.RMSRelative < rms {
-			name, rms = n, other.RMSRelative
+	where := fmt.Sprintf("from %s to %s, by %s", quantity.Format(from, "Hz", 3), quantity.Format(to, "Hz", 3), percent(size))
+	if r.insideAccuracy() {
+		a.Warnings = append(a.Warnings, Warning{"structured-residual", fmt.Sprintf(
+			"The residuals are not noise, but inside the meter's stated accuracy: what %s leaves, most %s, may be the meter's.", r.Circuit, where)})
+		return
+	}
+	text := fmt.Sprintf("The residuals are not noise: the circuit %s does not describe the part to the accuracy of the points. It deviates most %s.", r.Circuit, where)
+	name, rms, least := "", 0.0, math.Inf(1)
+	consider := func(candidate string, relative, aicc float64) {
+		if relative < 0.7*r.RMSRelative && aicc < least {
+			name, rms, least = candidate, relative, aicc
+		}
+	}
+	try := func(kind models.Kind) {
+		free := *s
+		free.Fixed, free.Start, free.Bounds = nil, nil, nil
+		for _, m := range models.OfKind(kind) {
+			if other, err := Fit(freq, z, m.Circuit, &free); err == nil {
+				consider(m.Name, other.RMSRelative, other.aicc(other.Cost, 0))
+			}
 		}
 	}
 	if len(a.Candidates) > 1 {
 		for _, c := range a.Candidates {
-			better(c.Name, c.Result)
-		}
-	} else {
-		for _, m := range models.OfKind(a.Kind) {
-			other, err := Fit(freq, z, m.Circuit, &Settings{Weight: s.Weight, Accuracy: s.Accuracy, Reference: s.Reference, Connection: s.Connection, S: s.S, Robust: s.Robust, Seed: s.Seed})
-			if err == nil {
-				better(m.Name, other)
+			if c.Result != nil {
+				consider(c.Name, c.Result.RMSRelative, c.AICc)
 			}
 		}
+	} else {
+		try(a.Kind)
 	}
 	if name != "" {
 		text += fmt.Sprintf(" %s takes up much of it (rms %s instead of %s).", name, percent(rms), percent(r.RMSRelative))
 	} else {
-		text += " No other circuit of the library for this kind of part does much better; check the measurement."
+		if r.RMSRelative > farOff {
+			for _, kind := range models.Kinds() {
+				if kind != a.Kind {
+					try(kind)
+				}
+			}
+		}
+		if m, ok := models.Lookup(name); ok {
+			text += fmt.Sprintf(" No other circuit of the library for %s does much better, but %s for %s does (rms %s instead of %s): see --kind.", article(a.Kind), name, article(m.Kind), percent(rms), percent(r.RMSRelative))
+		} else {
+			text += " No other circuit of the library for this kind of part does much better; check the measurement."
+		}
 	}
 	a.Warnings = append(a.Warnings, Warning{"structured-residual", text})
 }
+
+// farOff is the relative rms residual above which a circuit misses a part by
+// so much that it may be of another kind.
+const farOff = 0.05
 
 // deviation finds the range of frequencies in which the residual, smoothed
 // over neighbours, is largest, and its size there.

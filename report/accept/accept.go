@@ -140,6 +140,8 @@ func (l Limit) judge(f *report.Fit, rule Rule) Judged {
 		u = 0
 	}
 	switch {
+	case l.Figure.Outside(f):
+		j.Reason = fmt.Sprintf("outside the sweep (%s to %s): from the circuit alone", report.FormatFrequency(f.Sweep.FMin), report.FormatFrequency(f.Sweep.FMax))
 	case inside(u):
 		j.Verdict = Pass
 	case !inside(-u):

@@ -193,6 +193,21 @@ func TestJudgeLot(t *testing.T) {
 	}
 }
 
+// A figure outside the sweep is the circuit's word alone, which is not enough.
+func TestOutsideSweep(t *testing.T) {
+	f := record(1e-6, 0.01)
+	low, high := 0.0999, 0.1001
+	f.Figures = []report.Figure{{Name: models.ESR, AtHz: 2e6, Value: 0.1, Unit: "Ω", Low95: &low, High95: &high}}
+	limit := []Limit{{lots.Figure{Name: "ESR", AtHz: 2e6, Unit: "Ω"}, nan, 1}}
+	if got := Judge(f, limit, Simple); got.Verdict != Undecided || got.Limits[0].Value == nil || got.Limits[0].Reason == "" {
+		t.Errorf("outside: %+v, want undecided with a value and a reason", got)
+	}
+	f.Sweep.FMax = 2e6
+	if got := Judge(f, limit, Simple); got.Verdict != Pass {
+		t.Errorf("at the end of the sweep: %+v, want pass", got)
+	}
+}
+
 // Verdicts without the meter's accuracy say so; with it they don't.
 func TestCaution(t *testing.T) {
 	has := func(f *report.Fit) bool {

@@ -135,6 +135,11 @@ func Compare(lots []*Lot, o Options) (*Comparison, error) {
 			return nil, fmt.Errorf("--margin: expected a figure of the comparison (%s), found %q", strings.Join(known, ", "), name)
 		}
 	}
+	for _, at := range o.At {
+		if !slices.ContainsFunc(figures, func(f Figure) bool { return f.AtHz == at }) {
+			return nil, fmt.Errorf("--at: expected a frequency that the records have figures at, found %s; fit again with --at", report.FormatFrequency(at))
+		}
+	}
 	for _, l := range lots {
 		s := LotStatistics{Name: l.Name, N: len(l.Fits), Failed: l.Failed, Figures: []FigureStatistics{}}
 		var samples []Sample
@@ -350,6 +355,17 @@ func (c *Comparison) caution(lots []*Lot) {
 		}
 		if len(skewed) > 0 {
 			add("not-normal", "%s: not normal at 1 %% (Anderson–Darling): %s. Tolerance bounds assume a normal lot; see the Mann–Whitney test for the location.", name, strings.Join(skewed, ", "))
+		}
+	}
+	for i, l := range lots {
+		var beyond []string
+		for _, s := range c.Samples[i] {
+			if slices.ContainsFunc(l.Fits, s.Figure.Outside) {
+				beyond = append(beyond, s.Figure.String())
+			}
+		}
+		if len(beyond) > 0 {
+			add("outside-sweep", "%s: outside the sweeps, from the circuit alone: %s.", l.Name, strings.Join(beyond, ", "))
 		}
 	}
 	var disagree, spread []string

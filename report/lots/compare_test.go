@@ -255,7 +255,7 @@ func TestCautions(t *testing.T) {
 		}
 	}
 	a, b := fresh(1)
-	for _, code := range []string{"different-circuits", "different-frequencies", "different-bias", "different-temperature", "few-parts", "different-kinds", "failed-sweeps", "not-determined", "shared-sweeps", "copied-sweeps", "no-spread", "repeated-sweeps"} {
+	for _, code := range []string{"different-circuits", "different-frequencies", "different-bias", "different-temperature", "few-parts", "different-kinds", "failed-sweeps", "not-determined", "shared-sweeps", "copied-sweeps", "no-spread", "repeated-sweeps", "outside-sweep"} {
 		if hasCaution(compare(t, Options{}, a, b), code) {
 			t.Errorf("%s said of lots that are comparable", code)
 		}
@@ -285,6 +285,11 @@ func TestCautions(t *testing.T) {
 	}
 	if words := strings.Join(c.Answers()[0].Sentences, " "); !strings.Contains(words, "Not tested") {
 		t.Errorf("two parts: %q", words)
+	}
+	a, b = fresh(1)
+	all(b, func(f *report.Fit) { f.Sweep.FMax = 5e4 })
+	if c = compare(t, Options{}, a, b); !hasCaution(c, "outside-sweep") {
+		t.Error("figures outside the sweeps are not said")
 	}
 	a, b = fresh(1)
 	b.Fits[4] = a.Fits[4]
@@ -322,6 +327,7 @@ func TestCompareErrors(t *testing.T) {
 		{"two lots", []*Lot{a}, Options{}},
 		{"none", []*Lot{a, New("empty", nil)}, Options{}},
 		{"twice", []*Lot{a, a}, Options{}},
+		{"found 47 kHz", []*Lot{a, b}, Options{At: []float64{1e5, 47e3}}},
 		{`found "Cx"`, []*Lot{a, b}, Options{Margins: map[string]float64{"Cx": 0.1}}},
 	} {
 		if _, err := Compare(c.lots, c.o); err == nil || !strings.Contains(err.Error(), c.want) {

@@ -41,6 +41,13 @@ func (f Figure) Positive() bool {
 	return false
 }
 
+// Outside tells whether its frequency lies outside a sweep, so that only the
+// circuit tells its value. A range that the record does not state is no limit.
+func (f Figure) Outside(r *report.Fit) bool {
+	const rounding = 1e-9
+	return f.AtHz > 0 && r.Sweep.FMax > 0 && (f.AtHz < r.Sweep.FMin*(1-rounding) || f.AtHz > r.Sweep.FMax*(1+rounding))
+}
+
 // Reading is the value of a figure of one part with its 95 % interval.
 type Reading struct {
 	Value float64

@@ -93,8 +93,9 @@ type kindTally struct {
 }
 
 type circuitTally struct {
-	fitted, determined, within int // parts
-	sum                        float64
+	fitted, determined, within int     // parts
+	sum                        float64 // of AICc
+	logRMS                     float64 // sum of ln of the relative rms residuals
 }
 
 // Add counts a sweep. The sums depend on the order of the sweeps in their last
@@ -120,6 +121,9 @@ func (t *Tally) Add(trial *Trial) {
 		}
 		s.fitted++
 		s.sum += *c.AICc
+		if c.RMSRelative != nil {
+			s.logRMS += math.Log(max(*c.RMSRelative, roundingFloor))
+		}
 		if c.Determined {
 			s.determined++
 		}
@@ -150,9 +154,9 @@ type LotChoice struct {
 // Choose gives the lot its kind of part, that of most of its sweeps, and each
 // kind one circuit: that with the smallest sum of AICc over the parts, of the
 // circuits that could be fitted to all of them with every parameter determined
-// in at least half. The simpler one is preferred, as in [Analyse], where it
-// is as good or is inside the meter's stated accuracy in at least half. It
-// returns nil if nothing was added.
+// in at least half, unless those miss what another describes. The simpler one
+// is preferred, as in [Analyse], where it is as good or is inside the meter's
+// stated accuracy in at least half. It returns nil if nothing was added.
 func (t *Tally) Choose() *LotChoice {
 	var choice *LotChoice
 	for _, kind := range models.Kinds() { // in their order, so that a tie is decided alike
@@ -191,8 +195,8 @@ func (k *kindTally) choose(kind models.Kind) *LotCircuit {
 	determined := func(c *circuitTally) bool { return everywhere(c) && 2*c.determined >= most }
 	best := least(determined)
 	why := fmt.Sprintf("smallest AICc summed over the lot (%s), of the circuits determined in at least half", partCount(k.parts))
-	if best < 0 {
-		best = least(everywhere)
+	if free := least(everywhere); best < 0 || k.missed(all[best].Name, all[free].Name) {
+		best = free
 		why = fmt.Sprintf("smallest AICc summed over the lot (%s), though not determined in most of them", partCount(k.parts))
 	} else {
 		smallest := best
@@ -227,6 +231,13 @@ func (k *kindTally) choose(kind models.Kind) *LotCircuit {
 		}
 	}
 	return lot
+}
+
+// missed is as in [Analysis], with the geometric mean of the residuals.
+func (k *kindTally) missed(determined, other string) bool {
+	d, o := k.circuits[determined], k.circuits[other]
+	n := float64(d.fitted)
+	return 2*d.within < d.fitted && o.logRMS < d.logRMS-n*math.Ln2 && o.sum < d.sum-n*clearlyBetter
 }
 
 func partCount(n int) string {

@@ -171,3 +171,21 @@ func TestOtherKindIsNamed(t *testing.T) {
 		t.Errorf("the resonator is not named: %q", text)
 	}
 }
+
+// A lot measured over too small a range gets the circuit that describes it,
+// as a single part does.
+func TestPartialLotIsDescribed(t *testing.T) {
+	var tally Tally
+	for seed := range uint64(4) {
+		p := shareOf(t, "cap-leak", 3*seed, 0, 0.5, 101, 0.001)
+		trial, err := Try(p.freq, p.z, Request{})
+		if err != nil {
+			t.Fatal(err)
+		}
+		tally.Add(trial)
+	}
+	choice := tally.Choose()
+	if got := choice.Circuits[choice.Kind].Model.Name; got != "cap-leak" {
+		t.Errorf("the lot gets %s (%s), want cap-leak", got, choice.Circuits[choice.Kind].Reason)
+	}
+}

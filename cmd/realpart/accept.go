@@ -103,6 +103,9 @@ func (o *acceptFlags) run(f *fitFlags, args []string, s streams) error {
 	if err != nil {
 		return err
 	}
+	if f.showReading {
+		return f.showReadings(inputsOf(sources), s)
+	}
 	batchErr := f.fitLots(sources, false, s)
 	if !told(batchErr) {
 		return batchErr

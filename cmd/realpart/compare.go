@@ -3,6 +3,7 @@ package main
 import (
 	"crypto/sha256"
 	"encoding/json"
+	"errors"
 	"fmt"
 	"io"
 	"strings"
@@ -66,6 +67,9 @@ the smallest sum of AICc over all parts, unless --circuit says which.`,
 				}
 				sources = append(sources, l)
 			}
+			if f.showReading {
+				return f.showReadings(inputsOf(sources), s)
+			}
 			f.adopt(sources)
 			batchErr := f.fitLots(sources, true, s)
 			if !told(batchErr) {
@@ -76,7 +80,10 @@ the smallest sum of AICc over all parts, unless --circuit says which.`,
 				all = append(all, lots.New(l.name, l.fits()))
 			}
 			c, err := lots.Compare(all, lots.Options{At: f.at, Margins: m, ExcludeOutliers: exclude})
-			if err != nil {
+			switch {
+			case errors.Is(err, lots.ErrEmpty) && batchErr != nil:
+				return batchErr // which has told why
+			case err != nil:
 				return worse(batchErr, usagef("%w", err))
 			}
 			if asJSON {

@@ -33,6 +33,15 @@ func (l *lotSource) fits() []*report.Fit {
 	return fits
 }
 
+// inputsOf lists the sweeps of lots.
+func inputsOf(sources []*lotSource) []ingest.Input {
+	var inputs []ingest.Input
+	for _, l := range sources {
+		inputs = append(inputs, l.inputs...)
+	}
+	return inputs
+}
+
 // splitName cuts NAME=PATH; a path that exists is one even with = in it.
 func splitName(argument string) (name, path string) {
 	if _, err := os.Stat(argument); err == nil {

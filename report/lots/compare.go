@@ -10,6 +10,9 @@ import (
 	"realpart/report"
 )
 
+// ErrEmpty is the error of a lot in which no part could be fitted.
+var ErrEmpty = errors.New("expected a lot with fitted parts, found none")
+
 // Schema names the form of a [Comparison] in JSON.
 const Schema = "realpart.compare/1"
 
@@ -109,7 +112,7 @@ func Compare(lots []*Lot, o Options) (*Comparison, error) {
 	}
 	for i, l := range lots {
 		if len(l.Fits) == 0 {
-			return nil, fmt.Errorf("%s: expected a lot with fitted parts, found none", l.Name)
+			return nil, fmt.Errorf("%s: %w", l.Name, ErrEmpty)
 		}
 		for _, other := range lots[:i] {
 			if other.Name == l.Name {

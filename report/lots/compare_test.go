@@ -193,7 +193,7 @@ func TestVerdicts(t *testing.T) {
 		t.Error("not all figures with a margin are the same")
 	}
 	words := strings.Join(c.Answers()[0].Sentences, "\n")
-	for _, want := range []string{"ESR at 100 kHz: otter is 1", "% higher", "beyond the 5 % margin", "C: otter is", "inside the 5 % margin", "ESL, SRF: no difference shown", "At n = 24 a difference of", "90 % power"} {
+	for _, want := range []string{"ESR at 100 kHz: otter is 1", "% higher", "beyond the 5 % margin", "C: otter is", " at 90 %), inside the 5 % margin", "ESL, SRF: no difference shown", "At n = 24 a difference of", "90 % power"} {
 		if !strings.Contains(words, want) {
 			t.Errorf("the answer lacks %q:\n%s", want, words)
 		}
@@ -399,6 +399,51 @@ func TestJSONFields(t *testing.T) {
 		}
 		if _, ok := r["at_hz"]; ok {
 			t.Error("a parameter's row has at_hz")
+		}
+	}
+}
+
+// The figures of data sheets: at frequencies that nobody chose, those usual for
+// the kind of part, and none above a capacitor's resonance; at chosen ones all.
+func TestCommonFigures(t *testing.T) {
+	names := func(figures []Figure) string {
+		var out []string
+		for _, f := range figures {
+			out = append(out, f.String())
+		}
+		return strings.Join(out, ", ")
+	}
+	with := func(fMin, fMax float64, at []float64, cs float64) []*report.Fit {
+		f := part("x", 10e-6, 0.02, 5e-9)
+		f.Sweep.FMin, f.Sweep.FMax, f.Figures = fMin, fMax, nil
+		for _, freq := range at {
+			for _, name := range models.Figures() {
+				v := 0.02
+				if name == models.Cs && freq >= 1e6 {
+					v = cs
+				}
+				f.Figures = append(f.Figures, report.Figure{Name: name, AtHz: freq, Value: v, Unit: name.Unit(), Low95: &v, High95: &v})
+			}
+		}
+		return []*report.Fit{f}
+	}
+	const parameters = "ESR, ESL, C, SRF"
+	fits := with(100, 1e7, report.DefaultAt(100, 1e7), -1)
+	for _, c := range []struct {
+		fits []*report.Fit
+		at   []float64
+		more []string
+		want string
+	}{
+		{fits, nil, nil, parameters + ", Cs at 120 Hz, D at 120 Hz, ESR at 100 kHz, Z at 100 kHz"},
+		{fits, nil, []string{"X"}, parameters + ", Cs at 120 Hz, D at 120 Hz, X at 120 Hz, ESR at 100 kHz, Z at 100 kHz, X at 100 kHz"},
+		{fits, []float64{1e4}, nil, parameters + ", Cs at 10 kHz, ESR at 10 kHz, D at 10 kHz, Z at 10 kHz"},
+		{with(1e4, 1e7, report.DefaultAt(1e4, 1e7), -1), nil, nil, parameters + ", ESR at 100 kHz, Z at 100 kHz"},
+		{with(1e4, 1e7, report.DefaultAt(1e4, 1e7), 1), nil, nil, parameters + ", Cs at 1 MHz, D at 1 MHz, ESR at 100 kHz, Z at 100 kHz"},
+		{with(100, 1e7, []float64{47e3}, -1), nil, nil, parameters + ", Cs at 47 kHz, ESR at 47 kHz, D at 47 kHz, Z at 47 kHz"},
+	} {
+		if got := names(CommonFigures(c.fits, "ESR + ESL + C", c.at, c.more)); got != c.want {
+			t.Errorf("got %s, want %s", got, c.want)
 		}
 	}
 }

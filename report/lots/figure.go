@@ -168,7 +168,7 @@ func CommonFigures(fits []*report.Fit, circuit string, at []float64, more []stri
 		if !chosen {
 			for _, u := range usual[kind] {
 				for _, freq := range u.at {
-					if slices.Contains(common, freq) {
+					if slices.Contains(common, freq) && positive(fits, u.names[0], freq) {
 						for _, name := range slices.Concat(u.names, named) {
 							add(name, freq)
 						}
@@ -186,6 +186,17 @@ func CommonFigures(fits []*report.Fit, circuit string, at []float64, more []stri
 		}
 	}
 	return out
+}
+
+// positive tells whether a figure is positive in all records: a capacitor above
+// its resonance has a capacitance that no data sheet states.
+func positive(fits []*report.Fit, name models.Figure, freq float64) bool {
+	for _, f := range fits {
+		if r, ok := Read(f, Figure{Name: string(name), AtHz: freq}); ok && !(r.Value > 0) {
+			return false
+		}
+	}
+	return true
 }
 
 // commonFrequencies lists the frequencies that all records have figures at,

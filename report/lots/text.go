@@ -320,12 +320,17 @@ func (c *Comparison) Answers() []Answer {
 // sentence says what is known of one figure.
 func (r *Row) sentence() string {
 	d, low, high := *r.Difference, *r.Low95, *r.High95
+	level := ""
+	if r.Verdict == Same { // two one-sided tests at 5 % are an interval of 90 %
+		low, high = Welch(r.lot.Values, r.reference.Values).Interval(1 - 2*significance)
+		level = " at 90 %"
+	}
 	direction := "higher"
 	if d < 0 {
 		direction = "lower"
 		d, low, high = -d, -high, -low
 	}
-	interval := fmt.Sprintf("%s to %s", strings.TrimSuffix(r.change(low, false), " %"), r.change(high, false))
+	interval := fmt.Sprintf("%s to %s%s", strings.TrimSuffix(r.change(low, false), " %"), r.change(high, false), level)
 	s := fmt.Sprintf("%s: %s is %s %s (%s)", r.name(), r.Lot, r.change(d, false), direction, interval)
 	if r.Margin == nil {
 		return s + "."

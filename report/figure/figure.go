@@ -121,9 +121,31 @@ func frequencies(freq []float64) axis {
 	return axis{logTicks{"Hz", 6}, true, low, high}
 }
 
+// cornerShare is the share of a vertical axis below its lowest label that keeps
+// this clear of the first label of the horizontal axis.
+const cornerShare = 0.045
+
+// clearOfCorner returns a vertical axis with its lowest label above the corner.
+func (a axis) clearOfCorner() axis {
+	place, back := func(v float64) float64 { return v }, func(v float64) float64 { return v }
+	if a.logarithmic {
+		place, back = math.Log, math.Exp
+	}
+	for _, t := range a.ticks.Ticks(a.low, a.high) {
+		if t.Label == "" || t.Value < a.low {
+			continue
+		}
+		least := (place(t.Value) - cornerShare*place(a.high)) / (1 - cornerShare)
+		a.low = min(a.low, back(least))
+		break // they rise
+	}
+	return a
+}
+
 // axes starts a figure: axes, ticks, and a grid with a line at every labelled
-// tick.
+// tick. The vertical axis may begin a little below what was asked for.
 func (s Style) axes(x, y axis) *plot.Plot {
+	y = y.clearOfCorner()
 	p := plot.New()
 	p.BackgroundColor = nil
 	sans := font.Font{Typeface: "Liberation", Variant: "Sans", Size: s.FontSize}
@@ -277,6 +299,7 @@ func (d drawing) parts() Panel {
 	}
 	panel := Panel{Name: "parts", Title: "Resistance (ESR) and reactance |X|"}
 	p := d.axes(logTicks{"Ω", 5}, true, low, high)
+	low = p.Y.Min
 	if d.MeterPhase != nil {
 		var floor plotter.XYs
 		for _, i := range d.pick {

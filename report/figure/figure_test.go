@@ -50,6 +50,24 @@ func ceramic(t testing.TB) *report.Traces {
 	return traces(t, "cap-esr-esl", []float64{0.0213, 4.1e-9, 9.87e-6}, 100, 1e7, 101, 0.002, meter)
 }
 
+// The lowest label of a vertical axis is clear of the corner, where the first
+// label of the horizontal axis stands, wherever the values end.
+func TestCorner(t *testing.T) {
+	for _, esr := range []float64{0.008, 0.0095, 0.0105, 0.02, 0.05} {
+		for _, panel := range Panels(traces(t, "cap-esr-esl", []float64{esr, 4.1e-9, 9.87e-6}, 100, 1e7, 51, 0.002, meter), Page, nil) {
+			y := panel.plot.Y
+			for _, tick := range y.Tick.Marker.Ticks(y.Min, y.Max) {
+				if tick.Label == "" || tick.Value < y.Min {
+					continue
+				}
+				if share := y.Norm(tick.Value); !(share > 0.999*cornerShare) {
+					t.Errorf("ESR %v, %s: the label %q is at %.3f of the axis, want %v at least", esr, panel.Name, tick.Label, share, cornerShare)
+				}
+			}
+		}
+	}
+}
+
 // Ticks lie at round values, are labelled with prefix and unit, and there are
 // some on any axis.
 func TestTicks(t *testing.T) {

@@ -25,15 +25,17 @@ type Advice struct {
 	Assumed float64
 	// Now and Then are the half-widths of the 95 % interval from scatter, as
 	// a share of the value (of an exponent: in the exponent itself), now and
-	// with the added points. Now is +Inf where there is none.
+	// with the added points. Now is +Inf where the present sweep does not
+	// determine the parameter.
 	Now, Then float64
+	unit      string // of Assumed
 }
 
 // String says what to measure and what it would give.
 func (a Advice) String() string {
-	now := "not determined now"
-	if a.Now < math.Log(determinedFactor)/2 {
-		now = "± " + percent(a.Now) + " now"
+	now := "± " + percent(a.Now) + " now"
+	if math.IsInf(a.Now, 1) {
+		now = fmt.Sprintf("not determined now; for %s = %s", a.Parameter, quantity.Format(a.Assumed, a.unit, 2))
 	}
 	return fmt.Sprintf("%s more from %s to %s: 95 %% interval of %s ± %s (%s)",
 		pointCount(a.Points), quantity.Format(a.From, "Hz", 3), quantity.Format(a.To, "Hz", 3), a.Parameter, percent(a.Then), now)
@@ -102,7 +104,11 @@ func (r *Result) Advise(name string) ([]Advice, error) {
 		return u
 	}
 	n := len(r.Freq)
-	now := halfWidth(present, n)
+	present95 := halfWidth(present, n)
+	now := present95
+	if !q.Determined {
+		now = math.Inf(1)
+	}
 	var out []Advice
 	for _, freq := range r.extensions() {
 		added, err := r.rowsAt(freq, values)
@@ -112,10 +118,10 @@ func (r *Result) Advise(name string) ([]Advice, error) {
 		var both mat.Dense
 		both.Stack(present, added)
 		then := halfWidth(&both, n+len(freq))
-		if !(then < worthwhile*now) {
+		if !(then < worthwhile*present95) {
 			continue
 		}
-		out = append(out, Advice{Parameter: name, From: freq[0], To: freq[len(freq)-1], Points: len(freq), Assumed: values[i], Now: now, Then: then})
+		out = append(out, Advice{Parameter: name, From: freq[0], To: freq[len(freq)-1], Points: len(freq), Assumed: values[i], Now: now, Then: then, unit: q.Unit})
 	}
 	slices.SortStableFunc(out, func(a, b Advice) int {
 		switch {

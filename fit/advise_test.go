@@ -62,9 +62,28 @@ func TestAdvise(t *testing.T) {
 			if ratio := got / tip.Then; !(ratio > 0.8 && ratio < 1.2) {
 				t.Errorf("%s: %v: measured, the interval is ± %.3g %%, %.2f times the prediction", name, tip, 100*got, ratio)
 			}
-			if !(tip.Then < tip.Now) {
-				t.Errorf("%s: %v makes it no better", name, tip)
+			if !(tip.Then < tip.Now) || c.undecided != math.IsInf(tip.Now, 1) {
+				t.Errorf("%s: %v: from %v to %v", name, tip, tip.Now, tip.Then)
 			}
+		}
+	}
+}
+
+// Who asks for advice on an element that the sweep hardly shows gets it,
+// though the circuit that describes the sweep best lacks the element.
+func TestAdviseForAbsentElement(t *testing.T) {
+	p := exact(t, "cap-esr-esl", map[string]float64{"ESR": 20e-3, "ESL": 5e-9, "C": 10e-6}, 100, 5e3, 101)
+	for seed := range uint64(6) {
+		a, err := Analyse(p.freq, p.noisy(rand.New(rand.NewPCG(seed, 21)), 0.001), Request{Advise: "ESL"})
+		if err != nil {
+			t.Fatal(err)
+		}
+		if a.Name != "cap-esr" || warning(a, "advice-for-other-circuit") == "" {
+			t.Errorf("seed %d: %s chosen, warnings %v", seed, a.Name, a.Warnings)
+		}
+		// The farther up, the more ESL shows; the resonance is at 712 kHz.
+		if len(a.Advice) == 0 || !(a.Advice[0].To > 100e3) || !math.IsInf(a.Advice[0].Now, 1) || !(a.Advice[0].Assumed > 5e-9) {
+			t.Errorf("seed %d: advice %v", seed, a.Advice)
 		}
 	}
 }

@@ -66,7 +66,7 @@ func Check(freq []float64, z []complex128, s *CheckSettings) (*Judgement, error)
 		s = &CheckSettings{}
 	}
 	if len(freq) < minCheckPoints {
-		return nil, &InputError{Found: fmt.Sprintf("%d points", len(freq)), Expected: fmt.Sprintf("at least %d to judge a sweep", minCheckPoints), Hint: "measure more points, or widen --from and --to"}
+		return nil, &InputError{Found: pointCount(len(freq)), Expected: fmt.Sprintf("at least %d to judge a sweep", minCheckPoints), Hint: "measure more points, or widen --from and --to"}
 	}
 	settings := &rational.CheckSettings{}
 	if s.Accuracy != nil {

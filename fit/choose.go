@@ -114,14 +114,41 @@ func (a *Analysis) finish(freq []float64, z []complex128, request Request, setti
 		}
 	}
 	if request.Advise != "" {
-		var err error
-		if a.Advice, err = a.Result.Advise(request.Advise); err != nil {
+		if err := a.advise(request.Advise); err != nil {
 			return nil, err
 		}
 	}
 	a.warn(freq, z, settings)
 	a.Warnings = sortedWarnings(a.Warnings)
 	return a, nil
+}
+
+// advise gives advice on the next sweep. A parameter that the present sweep
+// shows so little of that the chosen circuit lacks it is looked for in the
+// candidates: there is most to gain.
+func (a *Analysis) advise(parameter string) error {
+	r := a.Result
+	if _, ok := r.Circuit.Index(parameter); !ok {
+		with := a.least(func(c *Candidate) bool {
+			if c.Result == nil || c.Result.problem == nil { // of a lot, where only numbers are kept
+				return false
+			}
+			_, ok := c.Circuit.Index(parameter)
+			return ok
+		})
+		if with >= 0 {
+			c := a.Candidates[with]
+			r = c.Result
+			if err := r.bound(); err != nil {
+				return err
+			}
+			a.Warnings = append(a.Warnings, Warning{"advice-for-other-circuit",
+				fmt.Sprintf("%s is not in the chosen circuit %s: the advice is for %s, %s.", parameter, a.Result.Circuit, c.Name, c.Circuit)})
+		}
+	}
+	var err error
+	a.Advice, err = r.Advise(parameter)
+	return err
 }
 
 // fitAll fits the circuits. It fails only if none could be fitted.

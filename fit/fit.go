@@ -1,7 +1,6 @@
 package fit
 
 import (
-	"errors"
 	"fmt"
 	"math"
 	"slices"
@@ -238,10 +237,14 @@ func (s *Settings) check(freq []float64, c *models.Circuit) error {
 		if err := value("--start", name, s.Start[name]); err != nil {
 			return err
 		}
+		if v, ok := s.Fixed[name]; ok && v != s.Start[name] {
+			return &InputError{Flag: "--start", Found: fmt.Sprintf("%s=%v", name, s.Start[name]),
+				Expected: fmt.Sprintf("a parameter that --fix does not hold at %v", v)}
+		}
 	}
 	for _, name := range sortedKeys(s.Bounds) {
 		b := s.Bounds[name]
-		if err := errors.Join(value("--bounds", name, b.Low)); err != nil {
+		if err := value("--bounds", name, b.Low); err != nil {
 			return err
 		}
 		if err := value("--bounds", name, b.High); err != nil {
@@ -262,8 +265,8 @@ func (s *Settings) check(freq []float64, c *models.Circuit) error {
 	}
 	free := len(c.Parameters()) - len(s.Fixed)
 	if 2*len(freq) < free || len(freq) == 0 {
-		return &InputError{Found: fmt.Sprintf("%d points", len(freq)),
-			Expected: fmt.Sprintf("at least %d points for the %d unknowns of %s", max(1, (free+1)/2), free, c),
+		return &InputError{Found: pointCount(len(freq)),
+			Expected: fmt.Sprintf("at least %s for the %d unknowns of %s", pointCount(max(1, (free+1)/2)), free, c),
 			Hint:     "widen --from/--to, fix a parameter with --fix or choose a simpler circuit"}
 	}
 	for i := 1; i < len(freq); i++ {

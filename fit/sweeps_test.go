@@ -189,3 +189,24 @@ func TestPartialLotIsDescribed(t *testing.T) {
 		t.Errorf("the lot gets %s (%s), want cap-leak", got, choice.Circuits[choice.Kind].Reason)
 	}
 }
+
+// A bound in words is never tighter than the bound.
+func TestLimitIsRoundedOutwards(t *testing.T) {
+	nan := math.NaN()
+	q := Parameter{Parameter: models.Parameter{Name: "ESL", Unit: "H"}, Low95: nan, High95: 12.4e-9}
+	if got := q.Limit(); got != "ESL < 13 nH" {
+		t.Errorf("%s, want ESL < 13 nH", got)
+	}
+	q.Low95, q.High95 = 12.6e-9, nan
+	if got := q.Limit(); got != "ESL > 12 nH" {
+		t.Errorf("%s, want ESL > 12 nH", got)
+	}
+}
+
+func TestStartOfFixedParameter(t *testing.T) {
+	p := shareOf(t, "cap-esr", 1, 0, 1, 20, 0.001)
+	_, err := Fit(p.freq, p.z, p.circuit, &Settings{Fixed: map[string]float64{"ESR": 1}, Start: map[string]float64{"ESR": 2}})
+	if err == nil || !strings.Contains(err.Error(), "--start: expected a parameter that --fix does not hold at 1, found ESR=2") {
+		t.Errorf("error %v", err)
+	}
+}

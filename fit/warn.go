@@ -92,10 +92,12 @@ func countNonPassive(z []complex128) int {
 }
 
 // Limit says in the notation of a bound, such as "ESL < 0.3 nH", what is
-// known of a parameter that is not determined; "" if nothing is.
+// known of a parameter that is not determined, rounded outwards; "" if nothing
+// is.
 func (p Parameter) Limit() string {
 	low, high := !math.IsNaN(p.Low95), !math.IsNaN(p.High95)
-	number := func(v float64) string {
+	number := func(v float64, up bool) string {
+		v = quantity.Outward(v, up)
 		if p.Scale == models.LogitScale {
 			return fmt.Sprintf("%.2g", v)
 		}
@@ -103,11 +105,11 @@ func (p Parameter) Limit() string {
 	}
 	switch {
 	case low && high:
-		return fmt.Sprintf("%s < %s < %s", number(p.Low95), p.Name, number(p.High95))
+		return fmt.Sprintf("%s < %s < %s", number(p.Low95, false), p.Name, number(p.High95, true))
 	case low:
-		return fmt.Sprintf("%s > %s", p.Name, number(p.Low95))
+		return fmt.Sprintf("%s > %s", p.Name, number(p.Low95, false))
 	case high:
-		return fmt.Sprintf("%s < %s", p.Name, number(p.High95))
+		return fmt.Sprintf("%s < %s", p.Name, number(p.High95, true))
 	}
 	return ""
 }

@@ -91,28 +91,13 @@ func figureText(v Figure) (string, string) {
 func boundText(low, high *float64, unit string) string {
 	switch {
 	case low != nil && high != nil:
-		return quantity.Format(outward(*low, false), unit, 2) + " … " + quantity.Format(outward(*high, true), unit, 2)
+		return quantity.Format(quantity.Outward(*low, false), unit, 2) + " … " + quantity.Format(quantity.Outward(*high, true), unit, 2)
 	case high != nil:
-		return "< " + quantity.Format(outward(*high, true), unit, 2)
+		return "< " + quantity.Format(quantity.Outward(*high, true), unit, 2)
 	case low != nil:
-		return "> " + quantity.Format(outward(*low, false), unit, 2)
+		return "> " + quantity.Format(quantity.Outward(*low, false), unit, 2)
 	}
 	return ""
-}
-
-// outward rounds to two significant digits, up or down.
-func outward(v float64, up bool) float64 {
-	nearest, _ := strconv.ParseFloat(strconv.FormatFloat(v, 'e', 1, 64), 64)
-	if nearest == v || nearest > v == up {
-		return nearest
-	}
-	text := strconv.FormatFloat(v, 'e', 1, 64)
-	exponent, _ := strconv.Atoi(text[strings.IndexByte(text, 'e')+1:])
-	step := math.Pow10(exponent - 1)
-	if !up {
-		step = -step
-	}
-	return nearest + step
 }
 
 // relativeText gives the half-width of an interval relative to its value:

@@ -11,6 +11,7 @@ import (
 
 	"realpart/ingest"
 	"realpart/models"
+	"realpart/models/quantity"
 )
 
 func newSimulate(s streams) *cobra.Command {
@@ -90,7 +91,7 @@ func newSimulate(s streams) *cobra.Command {
 // grid returns the frequencies of a simulated sweep.
 func grid(from, to float64, points int, spacing string) ([]float64, error) {
 	if !(from > 0 && from < to) {
-		return nil, usagef("--from, --to: expected rising positive frequencies, found %v Hz to %v Hz", from, to)
+		return nil, usagef("--from, --to: expected rising positive frequencies, found %s to %s", quantity.Format(from, "Hz", 4), quantity.Format(to, "Hz", 4))
 	}
 	if points < 2 || points > 1_000_000 {
 		return nil, usagef("--points: expected 2 to 1000000, found %d", points)

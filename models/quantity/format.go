@@ -217,3 +217,17 @@ func join(number, unit string) string {
 	}
 	return number + " " + unit
 }
+
+// Outward rounds a positive bound to two significant digits, up or down, so that
+// it stays a bound.
+func Outward(v float64, up bool) float64 {
+	nearest, _ := strconv.ParseFloat(strconv.FormatFloat(v, 'e', 1, 64), 64)
+	if nearest == v || nearest > v == up {
+		return nearest
+	}
+	step := math.Pow10(int(math.Floor(math.Log10(v))) - 1)
+	if !up {
+		step = -step
+	}
+	return nearest + step
+}

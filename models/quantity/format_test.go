@@ -133,3 +133,18 @@ func FuzzFormat(f *testing.F) {
 		}
 	})
 }
+
+func TestOutward(t *testing.T) {
+	for _, c := range []struct {
+		v        float64
+		up, down float64
+	}{
+		{3.01e-10, 3.1e-10, 3.0e-10}, {1.24e-8, 1.3e-8, 1.2e-8}, {9.96e3, 1.0e4, 9.9e3}, {2.5, 2.5, 2.5}, {0.0449, 0.045, 0.044},
+	} {
+		for _, got := range [][2]float64{{Outward(c.v, true), c.up}, {Outward(c.v, false), c.down}} {
+			if !(math.Abs(got[0]/got[1]-1) < 1e-12) {
+				t.Errorf("Outward(%g) = %g, want %g", c.v, got[0], got[1])
+			}
+		}
+	}
+}

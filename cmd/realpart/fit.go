@@ -7,6 +7,7 @@ import (
 	"io"
 	"os"
 	"path/filepath"
+	"runtime"
 	"slices"
 	"strings"
 
@@ -299,8 +300,8 @@ func lotsOf(fits []*report.Fit) []*lots.Lot {
 	return out
 }
 
-// write writes the output files: those of the parts that could be fitted, and
-// none if no part could.
+// write writes the output files, and none if no part could be fitted. Where
+// there is a place for them, the parts that could not have their error.
 func (o *fitOutputs) write(all []kept, f *fitFlags, s streams) error {
 	var fits []*report.Fit
 	var good []kept
@@ -316,6 +317,10 @@ func (o *fitOutputs) write(all []kept, f *fitFlags, s streams) error {
 	if err := o.checkParts(len(good)); err != nil {
 		return err
 	}
+	jobs := f.jobs
+	if jobs == 0 {
+		jobs = runtime.GOMAXPROCS(0)
+	}
 	var failure error
 	for _, output := range []struct {
 		path  string
@@ -330,11 +335,7 @@ func (o *fitOutputs) write(all []kept, f *fitFlags, s streams) error {
 			return report.WriteResiduals(w, points)
 		}},
 		{o.netlist, func(w io.Writer) error {
-			var records []*report.Fit
-			for _, k := range good {
-				records = append(records, k.record)
-			}
-			return netlist.Write(w, records, netlist.Options{Jobs: f.jobs, Made: "realpart " + buildVersion()})
+			return netlist.Write(w, fits, netlist.Options{Jobs: jobs, Made: "realpart " + buildVersion()})
 		}},
 		{o.plot, func(w io.Writer) error {
 			var parts []figure.Part
@@ -345,14 +346,14 @@ func (o *fitOutputs) write(all []kept, f *fitFlags, s streams) error {
 		}},
 		{o.html, func(w io.Writer) error {
 			p := page.Page{Made: []page.Entry{{Name: "Version", Value: buildVersion()}, {Name: "Command", Value: s.command}, {Name: "Weight", Value: f.weightName()}}}
-			for _, k := range good {
+			for _, k := range all {
 				p.Parts = append(p.Parts, page.Part{Fit: k.record, Traces: k.traces})
 			}
 			var err error
 			if p.Lots, err = lotpage.Sections(lotsOf(fits), f.at); err != nil {
 				return err
 			}
-			return page.Write(w, p, f.jobs)
+			return page.Write(w, p, jobs)
 		}},
 		{o.touchstone, func(w io.Writer) error { return o.writeTouchstone(w, good[0]) }},
 	} {

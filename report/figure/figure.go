@@ -317,8 +317,13 @@ func (d drawing) parts() Panel {
 		}
 	}
 	d.resonances(p, false)
-	p.Add(crosses(above(x, low), d.style.Second), dots(above(r, low), d.style.Measured),
-		line(clip(curveX, low), d.style.Second), line(clip(curveR, low), d.style.Model))
+	p.Add(crosses(above(x, low), d.style.Second), dots(above(r, low), d.style.Measured))
+	for _, piece := range piecesAbove(curveX, low) {
+		p.Add(line(piece, d.style.Second))
+	}
+	for _, piece := range piecesAbove(curveR, low) {
+		p.Add(line(piece, d.style.Model))
+	}
 	panel.plot = p
 	panel.Alt = d.describe("Resistance", func(z complex128) float64 { return real(z) }, "Ω") + " " +
 		d.describe("Reactance, drawn without its sign,", func(z complex128) float64 { return imag(z) }, "Ω")
@@ -328,6 +333,9 @@ func (d drawing) parts() Panel {
 	}
 	if n := len(r) - len(above(r, low)); n > 0 {
 		panel.Notes = append(panel.Notes, fmt.Sprintf("Below the axis: %d more.", n))
+	}
+	if n := len(x) - len(above(x, low)); n > 0 {
+		panel.Notes = append(panel.Notes, fmt.Sprintf("Below the axis: |X| of %d points.", n))
 	}
 	return panel
 }
@@ -343,12 +351,35 @@ func above(s plotter.XYs, low float64) plotter.XYs {
 	return out
 }
 
-// clip raises what lies below the axis to it.
-func clip(s plotter.XYs, low float64) plotter.XYs {
-	for i := range s {
-		s[i].Y = max(s[i].Y, low)
+// piecesAbove cuts a curve where it passes below the axis. A line along the
+// axis would be read as a value.
+func piecesAbove(s plotter.XYs, low float64) []plotter.XYs {
+	var out []plotter.XYs
+	var piece plotter.XYs
+	for i, v := range s {
+		if i > 0 && (v.Y >= low) != (s[i-1].Y >= low) {
+			piece = append(piece, crossing(s[i-1], v, low))
+		}
+		if v.Y >= low {
+			piece = append(piece, v)
+			continue
+		}
+		if len(piece) > 1 {
+			out = append(out, piece)
+		}
+		piece = nil
 	}
-	return s
+	if len(piece) > 1 {
+		out = append(out, piece)
+	}
+	return out
+}
+
+// crossing is where the line from a to b, on logarithmic axes, passes y.
+func crossing(a, b plotter.XY, y float64) plotter.XY {
+	height := func(v float64) float64 { return math.Log(max(v/y, 1e-3)) } // of 0 and less, too
+	u := height(a.Y) / (height(a.Y) - height(b.Y))
+	return plotter.XY{X: a.X * math.Pow(b.X/a.X, u), Y: y}
 }
 
 // describe gives the course of a quantity in words: of the fitted circuit at

@@ -18,6 +18,7 @@ import (
 	"github.com/google/go-cmp/cmp"
 
 	"gonum.org/v1/plot"
+	"gonum.org/v1/plot/plotter"
 
 	"realpart/fit"
 	"realpart/models"
@@ -48,6 +49,22 @@ func meter(f, z float64) (float64, float64, bool) { return 0.001, 0.001, f < 1e6
 
 func ceramic(t testing.TB) *report.Traces {
 	return traces(t, "cap-esr-esl", []float64{0.0213, 4.1e-9, 9.87e-6}, 100, 1e7, 101, 0.002, meter)
+}
+
+// A curve below the axis is not drawn along it.
+func TestPiecesAbove(t *testing.T) {
+	curve := plotter.XYs{{X: 1, Y: 100}, {X: 10, Y: 1}, {X: 20, Y: 0}, {X: 100, Y: 1}, {X: 1000, Y: 100}, {X: 2000, Y: -3}, {X: 3000, Y: 2}}
+	want := []plotter.XYs{
+		{{X: 1, Y: 100}, {X: math.Sqrt(10), Y: 10}},
+		{{X: 100 * math.Sqrt(10), Y: 10}, {X: 1000, Y: 100}, {X: 1000 * math.Pow(2, 0.25), Y: 10}},
+	}
+	near := cmp.Comparer(func(a, b float64) bool { return math.Abs(a/b-1) < 1e-12 })
+	if diff := cmp.Diff(want, piecesAbove(curve, 10), near); diff != "" {
+		t.Errorf("-want +got:\n%s", diff)
+	}
+	if got := piecesAbove(curve[5:6], 10); len(got) != 0 {
+		t.Errorf("%v of a curve below the axis", got)
+	}
 }
 
 // The lowest label of a vertical axis is clear of the corner, where the first

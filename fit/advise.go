@@ -35,7 +35,7 @@ type Advice struct {
 func (a Advice) String() string {
 	now := "± " + percent(a.Now) + " now"
 	if math.IsInf(a.Now, 1) {
-		now = fmt.Sprintf("not determined now; for %s = %s", a.Parameter, quantity.Format(a.Assumed, a.unit, 2))
+		now = fmt.Sprintf("not determined now; if %s is %s", a.Parameter, quantity.Format(a.Assumed, a.unit, 2))
 	}
 	return fmt.Sprintf("%s more from %s to %s: 95 %% interval of %s ± %s (%s)",
 		pointCount(a.Points), quantity.Format(a.From, "Hz", 3), quantity.Format(a.To, "Hz", 3), a.Parameter, percent(a.Then), now)

@@ -211,14 +211,13 @@ func (q *profiler) limit(column int, direction, t float64) (x float64, open bool
 
 // bound replaces the intervals of parameters that are not determined by
 // profile limits: the two-sided 95 % interval where both sides are closed, a
-// one-sided 95 % limit where one is open. The other parameters' intervals
-// hold the vanished elements for absent; where one is not determined, those of
-// all are profiled, and if one turns out too wide it is not determined either.
+// one-sided 95 % limit where one is open. The linear intervals of the other
+// parameters hold the vanished elements for absent; they are profiled too, and
+// if one turns out too wide its parameter is not determined either.
 func (r *Result) bound() error {
 	if !slices.ContainsFunc(r.Free, func(i int) bool { return !r.Parameters[i].Determined }) {
 		return nil
 	}
-	linear := slices.Clone(r.Parameters)
 	if err := r.profileIntervals(func(*Parameter) bool { return true }); err != nil {
 		return err
 	}
@@ -234,8 +233,6 @@ func (r *Result) bound() error {
 		if wide {
 			q.Determined = false
 			q.Why = "other values do as well once other elements may vanish"
-		} else {
-			q.Low95, q.High95 = linear[i].Low95, linear[i].High95
 		}
 	}
 	return nil

@@ -210,3 +210,33 @@ func TestStartOfFixedParameter(t *testing.T) {
 		t.Errorf("error %v", err)
 	}
 }
+
+// Far below its resonance a resistor shows of L and C one combination alone,
+// L − R²C. A fit in which L has vanished gives C to a few percent, without
+// account of what L could be; the interval must hold all the same.
+func TestIntervalBesideVanishedElement(t *testing.T) {
+	const cases = 60
+	covered, vanished := 0, 0
+	for seed := range uint64(cases) {
+		p := shareOf(t, "res-full", seed, 0, 0.5, 101, 0.001)
+		a, err := Analyse(p.freq, p.z, Request{Circuit: p.circuit})
+		if err != nil {
+			t.Fatal(err)
+		}
+		all := true
+		for i, q := range a.Result.Parameters {
+			if q.AtBound {
+				vanished++
+			}
+			all = all && !(q.Low95 > p.values[i]) && !(q.High95 < p.values[i])
+		}
+		if all {
+			covered++
+		}
+	}
+	t.Logf("all three intervals cover the truth in %d of %d cases; in %d an element has vanished", covered, cases, vanished)
+	// All three intervals at once: at least 1 − 3·5 %.
+	if !(covered >= cases*85/100) || vanished == 0 {
+		t.Errorf("all intervals cover the truth in %d of %d cases, vanished in %d", covered, cases, vanished)
+	}
+}

@@ -14,6 +14,7 @@ import (
 	"realpart/models/quantity"
 	"realpart/report"
 	"realpart/report/derating"
+	"realpart/report/lots"
 )
 
 func newDerate(s streams) *cobra.Command {
@@ -26,7 +27,9 @@ func newDerate(s streams) *cobra.Command {
 current does to it: the loss by harmonic, the temperature, the voltage, the
 margins to the limits that you give, and the largest ripple current. It judges
 only against limits that you give. Of a lot it takes the upper one-sided
-tolerance bound of the ESR (95 % of the lot with 95 % confidence).
+tolerance bound of the ESR (95 % of the lot with 95 % confidence). A JSON Lines
+file written by realpart fit --json stands for the sweeps that it is of; all
+arguments together are one lot, and NAME=PATH names it.
 
 A ripple current is written as RMS values at frequencies, as a waveform, or is
 the name of a CSV file with the header frequency,i_rms or, for one period in
@@ -57,14 +60,14 @@ Several sweeps that state temperatures 5 K or more apart, in the file or by
 			if err := distinct(f.outputs(d.files()), d.inputs(args)); err != nil {
 				return err
 			}
-			inputs, err := f.find(args, s)
+			sources, err := f.derateSources(args, s)
 			if err != nil {
 				return err
 			}
 			if f.showReading {
-				return f.showReadings(inputs, s)
+				return f.showReadings(inputsOf(sources), s)
 			}
-			return d.run(f, inputs, s)
+			return d.run(f, sources, s)
 		},
 	}
 	f.register(cmd.Flags())
@@ -212,7 +215,11 @@ func (d *derateFlags) files() map[string]string {
 
 // inputs lists the files that are read.
 func (d *derateFlags) inputs(args []string) []string {
-	in := append(slices.Clone(args), d.temperatures.files...)
+	in := slices.Clone(d.temperatures.files)
+	for _, a := range args {
+		_, path := splitName(a)
+		in = append(in, path)
+	}
 	if !derating.IsRipple(d.ripple) {
 		in = append(in, d.ripple)
 	}
@@ -300,7 +307,6 @@ func (d *derateFlags) check(f *fitFlags) error {
 	}
 	c := derating.Conditions{
 		RTh: d.rth.value, Ambient: d.ambient.value, Limit: d.limit.value, Margin: *orZero(d.margin.value),
-		AccuracyStated: f.accuracy != "",
 	}
 	if p := d.ratedRipple.values; p != nil {
 		c.Rating = &derating.Rating{Current: p[0], Freq: p[1], Rise: *d.ratedRise.value, ESR: d.ratedESR.value}
@@ -322,25 +328,157 @@ func orZero(v *float64) *float64 {
 	return v
 }
 
-func (d *derateFlags) run(f *fitFlags, inputs []ingest.Input, s streams) error {
-	// Files that only --at-temperature names are of the part, not of the lot.
-	var more []string
-	for _, file := range d.temperatures.files {
-		if !slices.ContainsFunc(inputs, func(in ingest.Input) bool { return identity(in.Path) == identity(file) }) {
-			more = append(more, file)
+// derateSources opens the arguments and --files-from: sweeps, or records of
+// fits.
+func (f *fitFlags) derateSources(args []string, s streams) ([]*lotSource, error) {
+	var sources []*lotSource
+	for _, a := range args {
+		l, err := f.findLot(a, s)
+		if err != nil {
+			return nil, err
+		}
+		if name, _ := splitName(a); name != "" {
+			for i := range l.inputs {
+				l.inputs[i].Lot = name
+			}
+		}
+		sources = append(sources, l)
+	}
+	if f.filesFrom != "" {
+		listed, err := f.find(nil, s)
+		if err != nil {
+			return nil, err
+		}
+		sources = append(sources, &lotSource{inputs: listed})
+	}
+	return sources, nil
+}
+
+// furtherSources opens the files that only --at-temperature names: they are of
+// the part, not of the lot.
+func (d *derateFlags) furtherSources(f *fitFlags, sources []*lotSource, s streams) ([]*lotSource, error) {
+	known := map[string]bool{}
+	for _, l := range sources {
+		if l.records != nil {
+			known[identity(l.path)] = true
+		}
+		for _, in := range l.inputs {
+			known[identity(in.Path)] = true
+		}
+		for _, r := range l.records {
+			known[identity(r.Sweep.File)] = true
 		}
 	}
-	extra, err := ingest.Find(more)
-	if err != nil {
-		return &exitError{exitFailure, err}
+	var further []*lotSource
+	for _, file := range d.temperatures.files {
+		if known[identity(file)] {
+			continue
+		}
+		l, err := f.findLot(file, s)
+		if err != nil {
+			return nil, err
+		}
+		further = append(further, l)
 	}
-	var parts, series, named []derating.Sweep // named: the parts that --at-temperature names
-	groups := []lot{{inputs, len(inputs) > 1}, {extra, len(extra) > 1}}
-	batchErr := f.batchLots(groups[:1+min(1, len(extra))], s, func(r fitted) error {
+	return further, nil
+}
+
+// gathered are the sweeps that an assessment is made of.
+type gathered struct {
+	parts, series []derating.Sweep
+	named         []derating.Sweep // the parts that --at-temperature names
+	lots          []string         // of the parts, "" for none
+	noAccuracy    bool             // a sweep was fitted without a stated accuracy
+}
+
+// add takes a sweep of the part or the lot; a further one is of the series
+// alone. files are the names by which --at-temperature may know it.
+func (d *derateFlags) add(g *gathered, sweep derating.Sweep, lot string, further bool, files ...string) {
+	i := slices.IndexFunc(files, func(file string) bool { _, ok := d.temperatures.of(file); return ok })
+	if i >= 0 {
+		sweep.Temperature, _ = d.temperatures.of(files[i])
+	}
+	if further {
+		g.series = append(g.series, sweep)
+		return
+	}
+	if i >= 0 {
+		g.named = append(g.named, sweep)
+	}
+	g.parts, g.lots = append(g.parts, sweep), append(g.lots, lot)
+}
+
+// addRecords takes the records of a source, each sweep once. Those that failed
+// are told on standard error, a line each, and counted.
+func (d *derateFlags) addRecords(g *gathered, l *lotSource, further bool, s streams) error {
+	failed := 0
+	fail := func(where, why string) {
+		failed++
+		fmt.Fprintf(s.err, "realpart: %s: the record of %s: %s\n", l.path, where, oneLine(why))
+	}
+	for _, r := range l.records {
+		switch {
+		case r.Status == report.FitFailed:
+			where := r.Sweep.File
+			if r.Error.Line > 0 {
+				where += fmt.Sprintf(":%d", r.Error.Line)
+				if r.Error.Column > 0 {
+					where += fmt.Sprintf(":%d", r.Error.Column)
+				}
+			}
+			fail(where, r.Error.Text)
+		case r.Status != report.Converged:
+			fail(r.Sweep.File, "the fit did not converge")
+		}
+	}
+	for _, r := range lots.New(l.name, l.records).Fits {
+		sweep, err := derating.FromRecord(r)
+		if err != nil {
+			fail(r.Sweep.File, err.Error())
+			continue
+		}
+		g.noAccuracy = g.noAccuracy || !r.AccuracyStated()
+		d.add(g, sweep, l.name, further, r.Sweep.File, l.path)
+	}
+	if failed == 0 {
+		return nil
+	}
+	if len(l.records) > 1 {
+		fmt.Fprintf(s.err, "realpart: %s: %d of %d records failed\n", l.path, failed, len(l.records))
+	}
+	return &exitError{code: exitFailure}
+}
+
+// gather fits the sweeps of all sources and takes the records. The error has
+// been told where there are parts to go on with.
+func (d *derateFlags) gather(f *fitFlags, sources []*lotSource, s streams) (*gathered, error) {
+	further, err := d.furtherSources(f, sources, s)
+	if err != nil {
+		return nil, err
+	}
+	f.adopt(slices.Concat(sources, further))
+	g := &gathered{}
+	var failure error
+	for i, l := range slices.Concat(sources, further) {
+		if err := d.addRecords(g, l, i >= len(sources), s); err != nil {
+			failure = err
+		}
+	}
+	arguments := inputsOf(sources)
+	inputs := slices.Concat(arguments, inputsOf(further))
+	var groups []lot
+	for _, in := range [][]ingest.Input{arguments, inputs[len(arguments):]} {
+		if len(in) > 0 {
+			groups = append(groups, lot{in, len(in) > 1})
+		}
+	}
+	if len(groups) == 0 {
+		return g, failure
+	}
+	err = f.batchLots(groups, s, func(r fitted) error {
 		if r.err != nil || r.record.Status != report.Converged {
 			return nil
 		}
-		in := append(inputs[:len(inputs):len(inputs)], extra...)[r.input]
 		sweep := derating.Sweep{
 			File: r.record.Sweep.File, Part: r.record.Sweep.Part, SHA256: r.record.Sweep.SHA256,
 			Kind: r.analysis.Kind, Fit: r.analysis.Result, Temperature: math.NaN(),
@@ -351,29 +489,28 @@ func (d *derateFlags) run(f *fitFlags, inputs []ingest.Input, s streams) error {
 		if m := r.sweep.Metadata; m.HasTemperature {
 			sweep.Temperature = m.TemperatureC
 		}
-		if t, ok := d.temperatures.of(in.Path); ok {
-			sweep.Temperature = t
-			if r.input < len(inputs) {
-				named = append(named, sweep)
-			}
-		}
-		if r.input >= len(inputs) {
-			series = append(series, sweep)
-			return nil
-		}
-		parts = append(parts, sweep)
-		if lot := r.record.Sweep.Lot; len(parts) == 1 {
-			d.conditions.Lot = lot
-		} else if lot != d.conditions.Lot {
-			d.conditions.Lot = ""
-		}
+		g.noAccuracy = g.noAccuracy || f.accuracy == ""
+		d.add(g, sweep, r.record.Sweep.Lot, r.input >= len(arguments), inputs[r.input].Path)
 		return nil
 	})
-	if !told(batchErr) {
+	if !told(err) {
+		return nil, err
+	}
+	if err == nil {
+		err = failure
+	}
+	return g, err
+}
+
+func (d *derateFlags) run(f *fitFlags, sources []*lotSource, s streams) error {
+	g, batchErr := d.gather(f, sources, s)
+	if !told(batchErr) || len(g.parts) == 0 {
 		return batchErr
 	}
-	if len(parts) == 0 {
-		return batchErr
+	parts, series, named := g.parts, g.series, g.named
+	d.conditions.AccuracyStated = !g.noAccuracy
+	if len(slices.Compact(g.lots)) == 1 {
+		d.conditions.Lot = g.lots[0]
 	}
 	if d.conditions.Lot == "" && !slices.ContainsFunc(parts, func(p derating.Sweep) bool { return p.File != parts[0].File }) {
 		d.conditions.Lot = partOf(parts[0].File) // several parts in a file

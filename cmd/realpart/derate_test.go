@@ -149,3 +149,65 @@ func TestDerateExitCodes(t *testing.T) {
 		}
 	}
 }
+
+// Records of fits give what the sweeps gave, of a lot and of a part; only what
+// the points themselves say is absent.
+func TestDerateRecords(t *testing.T) {
+	const tolerance = 1e-9
+	folder := filepath.Join("..", "..", "testdata", "demo", "heron")
+	first, err := filepath.Glob(filepath.Join(folder, "*01.csv"))
+	if err != nil || len(first) != 1 {
+		t.Fatalf("the first sweep of %s: %v, %v", folder, first, err)
+	}
+	conditions := []string{"--ripple", "trapezoid:6A,duty=0.4,rise=60ns@100kHz", "--rth", "48", "--ambient", "55", "--limit", "105", "--margin", "15",
+		"--dc", "24", "--rated-voltage", "35", "--voltage-factor", "0.8"}
+	for _, sweeps := range []string{folder, first[0]} {
+		var records, stderr bytes.Buffer
+		if code := run([]string{"fit", "--json", "--circuit", "cap-two-branch", sweeps}, streams{in: strings.NewReader(""), out: &records, err: &stderr}); code != 0 {
+			t.Fatalf("fit: exit %d: %s", code, stderr.String())
+		}
+		file := filepath.Join(t.TempDir(), "heron.jsonl")
+		if err := os.WriteFile(file, records.Bytes(), 0o600); err != nil {
+			t.Fatal(err)
+		}
+		wantCode, want, _ := derateJSON(t, append([]string{"derate", sweeps, "--circuit", "cap-two-branch"}, conditions...)...)
+		code, got, told := derateJSON(t, append([]string{"derate", file}, conditions...)...)
+		if code != wantCode || code != 0 || told != "" {
+			t.Fatalf("%s: exit %d, from the sweeps %d (%s)", sweeps, code, wantCode, told)
+		}
+		for _, name := range []string{"verdict", "lot", "part", "parts", "kind", "cautions", "voltage.verdict"} {
+			a, _ := json.Marshal(at(got, name))
+			if b, _ := json.Marshal(at(want, name)); !bytes.Equal(a, b) {
+				t.Errorf("%s: %s is %s, from the sweeps %s", sweeps, name, a, b)
+			}
+		}
+		compared := 0
+		compare := func(name string) {
+			a, ok := at(got, name).(float64)
+			b, there := at(want, name).(float64)
+			if ok != there || there && !(math.Abs(a-b) <= tolerance*math.Abs(b)) {
+				t.Errorf("%s: %s is %v, from the sweeps %v", sweeps, name, at(got, name), at(want, name))
+			}
+			if there {
+				compared++
+			}
+		}
+		for _, name := range []string{"loss_w", "loss_low95_w", "loss_high95_w", "rise_k", "hot_spot_c", "hot_spot_low95_c", "hot_spot_high95_c", "margin_k",
+			"max_ripple_a", "voltage.ripple_peak_v", "lot_statistics.worst_loss_w", "lot_statistics.mean_loss_w", "lot_statistics.sd_loss_w"} {
+			compare(name)
+		}
+		harmonics, _ := at(want, "harmonics").([]any)
+		for i := range harmonics {
+			line := "harmonics." + strconv.Itoa(i) + "."
+			for _, name := range []string{"esr_ohm", "esr_low95_ohm", "esr_high95_ohm", "loss_w"} {
+				compare(line + name)
+			}
+			if in, of := at(got, line+"in_sweep"), at(want, line+"in_sweep"); in == nil || in != of {
+				t.Errorf("%s: %sin_sweep is %v, from the sweeps %v", sweeps, line, in, of)
+			}
+		}
+		if compared < 20 {
+			t.Errorf("%s: only %d numbers compared", sweeps, compared)
+		}
+	}
+}

@@ -19,6 +19,7 @@ import (
 // records of fits in JSON Lines.
 type lotSource struct {
 	name    string
+	path    string // as given; "" of a list
 	inputs  []ingest.Input
 	records []*report.Fit
 	fitted  []fitted // of the sweeps, in the order of the inputs
@@ -57,7 +58,7 @@ func splitName(argument string) (name, path string) {
 // file of `fit --json`; - for standard input.
 func (f *fitFlags) findLot(argument string, s streams) (*lotSource, error) {
 	name, path := splitName(argument)
-	l := &lotSource{name: name}
+	l := &lotSource{name: name, path: path}
 	if l.name == "" {
 		l.name = lotName(path)
 	}

@@ -29,7 +29,9 @@ type FigureValue struct {
 
 // Figure returns a figure at a frequency in Hz with its uncertainty by the
 // delta method. Figures that are positive for every passive part have an
-// interval symmetric in their logarithm.
+// interval symmetric in their logarithm. Where a parameter is not determined,
+// the delta method sees nothing of what its element could do; the interval
+// then also holds the figure of every circuit at the limits of the profiles.
 func (r *Result) Figure(f models.Figure, freq float64) FigureValue {
 	z, dz := r.at(freq)
 	value, byR, byX := f.Of(freq, z)
@@ -44,6 +46,7 @@ func (r *Result) Figure(f models.Figure, freq float64) FigureValue {
 	default:
 		v.Low95, v.High95 = value-u, value+u
 	}
+	r.widen(&v)
 	if measured, ok := r.measuredAt(freq); ok {
 		v.Measured, _, _ = f.Of(freq, measured)
 		if accuracy := r.phaseAccuracyAt(freq); accuracy > 0 {
@@ -52,6 +55,26 @@ func (r *Result) Figure(f models.Figure, freq float64) FigureValue {
 		}
 	}
 	return v
+}
+
+// widen takes the circuits at the limits of profiled parameters into the
+// interval of a figure.
+func (r *Result) widen(v *FigureValue) {
+	if len(r.extremes) == 0 {
+		return
+	}
+	values := r.Values()
+	e := r.Circuit.NewEvaluator([]float64{v.At})
+	var z [1]complex128
+	for _, x := range r.extremes {
+		for c, i := range r.Free {
+			values[i] = r.Parameters[i].Scale.Value(x[c])
+		}
+		e.Impedance(z[:], values)
+		if value, _, _ := v.Figure.Of(v.At, z[0]); !math.IsNaN(value) && !math.IsInf(value, 0) {
+			v.Low95, v.High95 = min(v.Low95, value), max(v.High95, value)
+		}
+	}
 }
 
 // at returns Z and ∂Z/∂x of all parameters at a frequency.

@@ -121,6 +121,10 @@ type Result struct {
 
 	problem *problem
 	x       []float64
+	// extremes holds unknowns at the limits of profiled parameters: other
+	// circuits that the sweep allows, by which figures take their share of
+	// what is not determined.
+	extremes [][]float64
 }
 
 // Values returns the fitted values in the order of the circuit.

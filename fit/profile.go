@@ -23,6 +23,8 @@ type profiler struct {
 	lower, upper []float64
 	sigma        float64
 	settings     lm.Settings
+	// reached holds the unknowns at the limits that were found.
+	reached [][]float64
 	// vague holds the columns of the parameters that are not determined:
 	// those that may have another minimum where an element has vanished.
 	vague []int
@@ -180,6 +182,7 @@ func (q *profiler) limit(column int, direction, t float64) (x float64, open bool
 			break
 		}
 		if outside == end {
+			q.reached = append(q.reached, next[:r.Covariance.SymmetricDim()])
 			return end, true, nil
 		}
 		inside, insideRise, state = outside, high, next
@@ -206,7 +209,11 @@ func (q *profiler) limit(column int, direction, t float64) (x float64, open bool
 	if outsideRise > insideRise {
 		share = (t - insideRise) / (outsideRise - insideRise)
 	}
-	return inside + share*(outside-inside), false, nil
+	x = inside + share*(outside-inside)
+	at := slices.Clone(state[:r.Covariance.SymmetricDim()])
+	at[column] = x
+	q.reached = append(q.reached, at)
+	return x, false, nil
 }
 
 // bound replaces the intervals of parameters that are not determined by
@@ -265,7 +272,50 @@ func (r *Result) profileIntervals(wanted func(*Parameter) bool) error {
 			return err
 		}
 	}
+	if q != nil {
+		if err := q.allVanished(nu); err != nil {
+			return err
+		}
+		r.extremes = append(r.extremes, q.reached...)
+	}
 	r.problem.set(r.x)
+	return nil
+}
+
+// allVanished adds the circuit in which every parameter with an open side has
+// gone to its end there, if the sweep allows it: together their cost may rise
+// by t² for each. A figure in which several of them share can be as small, or
+// as large, as there.
+func (q *profiler) allVanished(nu float64) error {
+	r, settings := q.result, q.settings
+	copy(settings.Lower, q.lower)
+	copy(settings.Upper, q.upper)
+	start := slices.Clone(q.x)
+	count := 0
+	for _, c := range q.vague {
+		p := r.Parameters[r.Free[c]]
+		switch {
+		case math.IsNaN(p.Low95):
+			settings.Upper[c] = q.lower[c]
+		case math.IsNaN(p.High95):
+			settings.Lower[c] = q.upper[c]
+		default:
+			continue
+		}
+		count++
+	}
+	if count < 2 {
+		return nil // the profile has been there
+	}
+	clamp(start, settings.Lower, settings.Upper)
+	s, err := lm.Solve(q.lm, start, &settings)
+	if err != nil {
+		return err
+	}
+	t := q.sigma * studentQuantile(0.975, nu)
+	if 2*(s.Cost-q.cost) <= t*t*float64(count) {
+		q.reached = append(q.reached, s.X[:r.Covariance.SymmetricDim()])
+	}
 	return nil
 }
 

@@ -86,7 +86,7 @@ func (o *acceptFlags) run(f *fitFlags, args []string, s streams) error {
 		_, path := splitName(a)
 		paths = append(paths, path)
 	}
-	if err := distinct(f.outputs(htmlOutput(o.html)), append(paths, o.limits)); err != nil {
+	if err := distinct(f.outputs(htmlOutput(o.html)), slices.Concat(f.besideSweeps(), paths, []string{o.limits})); err != nil {
 		return err
 	}
 	limits, lines, err := readLimits(o.limits, f.request.Circuit)

@@ -6,6 +6,7 @@ import (
 	"errors"
 	"fmt"
 	"io"
+	"slices"
 	"strings"
 
 	"github.com/spf13/cobra"
@@ -51,7 +52,7 @@ the smallest sum of AICc over all parts, unless --circuit says which.`,
 				_, path := splitName(a)
 				paths = append(paths, path)
 			}
-			if err := distinct(f.outputs(htmlOutput(html)), paths); err != nil {
+			if err := distinct(f.outputs(htmlOutput(html)), slices.Concat(f.besideSweeps(), paths)); err != nil {
 				return err
 			}
 			var sources []*lotSource

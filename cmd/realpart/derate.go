@@ -57,7 +57,7 @@ Several sweeps that state temperatures 5 K or more apart, in the file or by
 			if err := d.check(f); err != nil {
 				return err
 			}
-			if err := distinct(f.outputs(d.files()), d.inputs(args)); err != nil {
+			if err := distinct(f.outputs(d.files()), slices.Concat(f.besideSweeps(), d.inputs(args))); err != nil {
 				return err
 			}
 			sources, err := f.derateSources(args, s)

@@ -72,7 +72,11 @@ func (l ladder) String() string {
 	if l.inductive() {
 		kind = "R-L"
 	}
-	return fmt.Sprintf("%s: ladder of %d %s branches", l.element, l.Sections(), kind)
+	branches := "branches"
+	if l.Sections() == 1 {
+		branches = "branch"
+	}
+	return fmt.Sprintf("%s: ladder of %d %s %s", l.element, l.Sections(), kind, branches)
 }
 
 // at returns the impedance in Ω of the ladder as it is laid out.

@@ -4,7 +4,7 @@
 // minimises the cost ½‖r(x)‖². The package knows nothing of what the residuals mean.
 //
 // One round of the solve, after J. J. Moré, The Levenberg–Marquardt algorithm: implementation and theory, in: Numerical
-// Analysis, Dundee 1977, Lecture Notes in Mathematics 630 (1978) 105:
+// Analysis, Dundee 1977, Springer LNM 630 (1978) 105:
 //
 //  1. J is factorised, J = Q·R. From here on everything is n×n: R and Qᵀr stand for J and r.
 //  2. The variables are scaled by the diagonal D of the greatest column norms of J so far, which makes the solve

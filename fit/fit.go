@@ -205,6 +205,7 @@ func Fit(freq []float64, z []complex128, c *models.Circuit, settings *Settings) 
 			return nil, err
 		}
 	}
+	p.settle(solution)
 	return evaluate(p, &s, solution.X, solution), nil
 }
 
@@ -370,10 +371,7 @@ func (p *problem) solve(s *Settings) (*lm.Result, error) {
 	}
 	lower, upper := p.bounds(s)
 	noise := pointNoise(p.freq, p.measured)
-	// ½Σr² is about noise² per point, give or take a relative 1/√points.
-	goal := func(n int) float64 {
-		return noise * noise * float64(n) * (1 + 5/math.Sqrt(float64(n)))
-	}
+	goal := func(n int) float64 { return noiseCost(noise, n) }
 	if x := p.given(s); x != nil {
 		r, err := p.polish(x, lower, upper, s.Robust)
 		if err == nil && p.weight == Relative && r.Cost <= goal(len(p.freq)) {
@@ -403,6 +401,22 @@ func (p *problem) solve(s *Settings) (*lm.Result, error) {
 		}
 	}
 	return best, nil
+}
+
+// noiseCost is the cost ½Σr² up to which so many points are described to their
+// noise: noise² a point, give or take a relative 1/√points.
+func noiseCost(noise float64, points int) float64 {
+	return noise * noise * float64(points) * (1 + 5/math.Sqrt(float64(points)))
+}
+
+// settle counts a solution at the noise of the points as converged when the
+// solver stalled: in the flat valley of a parameter that is not determined,
+// the decrease that is left is lost in the rounding of the cost.
+func (p *problem) settle(solution *lm.Result) {
+	if solution.Status == lm.Stalled && p.weight == Relative && solution.Cost <= noiseCost(pointNoise(p.freq, p.measured), len(p.freq)) {
+		solution.Status = lm.CostConvergence
+		solution.Reason += "; the residuals are at the noise of the points"
+	}
 }
 
 // better reports whether a solution is to be preferred: one that converged to

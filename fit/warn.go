@@ -72,12 +72,7 @@ func (a *Analysis) warn(freq []float64, z []complex128, s *Settings) {
 // percent prints a share with two significant digits.
 func percent(share float64) string { return quantity.Format(100*share, "%", 2) }
 
-func pointCount(n int) string {
-	if n == 1 {
-		return "1 point"
-	}
-	return fmt.Sprintf("%d points", n)
-}
+func pointCount(n int) string { return quantity.Count(n, "point") }
 
 // countNonPassive counts points with a negative resistance, beyond what the
 // rounding of the numbers in a file explains.

@@ -5,6 +5,8 @@ import (
 	"fmt"
 	"math/cmplx"
 	"slices"
+
+	"realpart/models/quantity"
 )
 
 // sortedOrder returns the indices of v in ascending order, equal values in the
@@ -134,7 +136,7 @@ func (p *parsed) finish(d *partData) *Sweep {
 	}
 	s.Freq, s.Z, s.S = f, z, sp
 	if len(f) < 3 {
-		s.Warnings = append(s.Warnings, Warning{WarnCoverage, fmt.Sprintf("only %d points", len(f))})
+		s.Warnings = append(s.Warnings, Warning{WarnCoverage, "only "+quantity.Count(len(f), "point")})
 	}
 	return s
 }

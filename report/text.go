@@ -11,6 +11,7 @@ import (
 	"github.com/rivo/uniseg"
 
 	"realpart/models"
+	"realpart/models/quantity"
 )
 
 // TextOptions steer [WriteText].
@@ -159,9 +160,9 @@ func (t *text) heading(f *Fit) {
 		t.line(clean(f.Sweep.File))
 	}
 	if f.Sweep.Points > 0 {
-		points := fmt.Sprintf("%d points", f.Sweep.Points)
+		points := quantity.Count(f.Sweep.Points, "point")
 		if f.Sweep.UsedPoints != f.Sweep.Points {
-			points = fmt.Sprintf("%d of %d points used", f.Sweep.UsedPoints, f.Sweep.Points)
+			points = fmt.Sprintf("%d of %s used", f.Sweep.UsedPoints, quantity.Count(f.Sweep.Points, "point"))
 		}
 		t.line(points + ", " + FormatFrequency(f.Sweep.FMin) + " to " + FormatFrequency(f.Sweep.FMax))
 	}

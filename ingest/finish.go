@@ -136,7 +136,7 @@ func (p *parsed) finish(d *partData) *Sweep {
 	}
 	s.Freq, s.Z, s.S = f, z, sp
 	if len(f) < 3 {
-		s.Warnings = append(s.Warnings, Warning{WarnCoverage, "only "+quantity.Count(len(f), "point")})
+		s.Warnings = append(s.Warnings, Warning{WarnCoverage, "only " + quantity.Count(len(f), "point")})
 	}
 	return s
 }

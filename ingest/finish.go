@@ -3,6 +3,7 @@ package ingest
 import (
 	"cmp"
 	"fmt"
+	"math"
 	"math/cmplx"
 	"slices"
 
@@ -91,6 +92,9 @@ func (p *parsed) finish(d *partData) *Sweep {
 	for i, f := range d.freq {
 		z := d.z[i]
 		switch {
+		case math.IsNaN(f) || math.IsInf(f, 0):
+			p.drop(d.line[i], "overload or no number in frequency")
+			continue
 		case f == 0:
 			p.drop(d.line[i], "frequency of exactly 0")
 			continue

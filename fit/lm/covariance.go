@@ -44,7 +44,7 @@ func Covariance(j mat.Matrix, variance float64) (*mat.SymDense, error) {
 	if m < n {
 		return nil, fmt.Errorf("lm: the Jacobian is %d×%d, must have at least as many rows as columns", m, n)
 	}
-	s := new(Workspace).prepare(m, n)
+	s := new(Workspace).prepare(m, n, false)
 	s.jac.Copy(j)
 	if k := s.tri.factorise(s.jac, s.r); k >= 0 {
 		return nil, fmt.Errorf("lm: column %d of the Jacobian is not finite", k)
@@ -92,4 +92,37 @@ func (s *state) singular(limit float64) error {
 		}
 	}
 	return e
+}
+
+// NormalCovariance is [Covariance] from JᵀJ, n×n by rows, instead of J: (JᵀJ)⁻¹·s². It is faster and has fewer digits;
+// it returns false where JᵀJ is not finite or not so clearly regular that they suffice for a standard deviation.
+func NormalCovariance(jtj []float64, n int, variance float64) (*mat.SymDense, bool) {
+	memory := make([]float64, n+(n+1)*n+n*n)
+	t := triangle{n: n, norms: memory[:n], data: memory[n : n+(n+1)*n]}
+	inverse := memory[n+(n+1)*n:] // R⁻¹, upper triangle by rows
+	if !t.cholesky(jtj, memory[n+(n+1)*n:][:n]) {
+		return nil, false
+	}
+	for k := range n {
+		column := t.column(k)
+		inverse[k*n+k] = 1 / column[k]
+		for i := range k {
+			var sum float64
+			for l := i; l < k; l++ {
+				sum -= inverse[i*n+l] * column[l]
+			}
+			inverse[i*n+k] = sum / column[k]
+		}
+	}
+	c := make([]float64, n*n)
+	for p := range n {
+		for q := p; q < n; q++ {
+			var sum float64
+			for i := q; i < n; i++ {
+				sum += inverse[p*n+i] * inverse[q*n+i]
+			}
+			c[p*n+q] = sum * variance
+		}
+	}
+	return mat.NewSymDense(n, c), true
 }

@@ -19,7 +19,7 @@ const maxSweeps = 60
 //	‖r + J·p‖² = ‖Qᵀr + R·p‖² + const
 type triangle struct {
 	n, m  int
-	data  []float64 // (n+1)×m, see factorise
+	data  []float64 // (n+1)×m, see factorise; of a triangle from JᵀJ (n+1)×n, with n for m
 	norms []float64 // ‖J_j‖, Euclidean norm of each column
 }
 
@@ -31,8 +31,9 @@ type triangle struct {
 // Gelqf does the same and takes 1.3 to 1.6 times as long for 402×8 to 402×3, because it guards every norm against
 // overflow. A column that overflows here, above 10¹⁵⁴, is refused instead.
 func (t *triangle) factorise(j *mat.Dense, r []float64) (bad int) {
-	n, m := t.n, t.m
 	raw := j.RawMatrix()
+	n, m := t.n, raw.Rows
+	t.m = m
 	for i := range m {
 		for k, v := range raw.Data[i*raw.Stride : i*raw.Stride+n] {
 			t.data[k*m+i] = v
@@ -60,6 +61,44 @@ func (t *triangle) factorise(j *mat.Dense, r []float64) (bad int) {
 		v.Data[0] = beta
 	}
 	return -1
+}
+
+// leastPivot is the smallest pivot, of JᵀJ with the columns of J scaled to length 1, at which the Cholesky factor serves:
+// the squared sine of the angle between a column and those before it. Its relative error is about ε over the pivot.
+const leastPivot = 1e-9
+
+// cholesky forms R and Qᵀr from JᵀJ and Jᵀr,
+//
+//	JᵀJ = Rᵀ·R,  Rᵀ·(Qᵀr) = Jᵀr
+//
+// It returns false where JᵀJ is not finite or not clearly regular; then the triangle is undefined.
+func (t *triangle) cholesky(jtj, jtr []float64) bool {
+	n := t.n
+	t.m = n
+	projected := t.projected()
+	for k := range n {
+		col := t.column(k)
+		size := jtj[k*n+k]
+		t.norms[k] = math.Sqrt(size)
+		pivot, rhs := size, jtr[k]
+		for i := range k {
+			other := t.column(i)
+			sum := jtj[k*n+i]
+			for l := range i {
+				sum -= other[l] * col[l]
+			}
+			v := sum / other[i]
+			col[i] = v
+			pivot -= v * v
+			rhs -= v * projected[i]
+		}
+		if !(pivot > leastPivot*size && size < math.MaxFloat64 && isFinite(rhs)) {
+			return false
+		}
+		col[k] = math.Sqrt(pivot)
+		projected[k] = rhs / col[k]
+	}
+	return true
 }
 
 // vector returns column l of [J r] from row k on.

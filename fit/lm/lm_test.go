@@ -473,7 +473,7 @@ func TestStep(t *testing.T) {
 	random := rand.New(rand.NewPCG(3, 4))
 	const m, n = 9, 4
 	for trial := range 50 {
-		s := new(Workspace).prepare(m, n)
+		s := new(Workspace).prepare(m, n, false)
 		for k := range n {
 			s.x[k], s.low[k], s.high[k] = 1, math.Inf(-1), math.Inf(1)
 			s.scale[k] = math.Exp(5 * random.NormFloat64())
@@ -490,7 +490,7 @@ func TestStep(t *testing.T) {
 		g.MulVec(j.T(), r)
 		copy(s.gradient, g.RawVector().Data)
 		s.hold()
-		s.split(s.tri.projected())
+		s.resolve(s.tri.projected())
 		radius := math.Exp(3 * random.NormFloat64())
 		s.step(radius, math.Inf(1))
 

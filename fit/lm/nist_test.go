@@ -90,8 +90,8 @@ func TestNISTJacobians(t *testing.T) {
 // TestNIST solves all 27 problems from both starts with the default settings, with our derivatives and with differences.
 func TestNIST(t *testing.T) {
 	for _, c := range []struct {
-		name     string
-		analytic bool
+		name             string
+		analytic, normal bool
 		// Least digits of agreement. The sum of squares keeps ten where the residuals are 1e-6 of the data (Lanczos2).
 		//
 		// With differences the columns of J carry an error of about 1e-10 of the model's size. What misses 8 digits of
@@ -101,8 +101,9 @@ func TestNIST(t *testing.T) {
 		parameters, deviations, rss float64
 		steps                       int // most in all; measured 2892 and 2976 on amd64
 	}{
-		{"analytic", true, 8, 8.5, 9.5, 3200},
-		{"differences", false, 6.5, 6, 9.5, 3600},
+		{"analytic", true, false, 8, 8.5, 9.5, 3200},
+		{"normal", true, true, 8, 8.5, 9.5, 3200},
+		{"differences", false, false, 6.5, 6, 9.5, 3600},
 	} {
 		t.Run(c.name, func(t *testing.T) {
 			t.Logf("%-9s %5s %10s %10s %6s  %5s %9s %9s  %s", "", "start", "parameters", "deviations", "rss", "steps", "residuals", "Jacobians", "status")
@@ -110,14 +111,31 @@ func TestNIST(t *testing.T) {
 			total := [3]int{}
 			for _, p := range nistProblems(t) {
 				for start := range p.starts {
-					r, err := Solve(p.problem(c.analytic), p.starts[start], nil)
+					problem := p.problem(c.analytic)
+					if c.normal {
+						problem.Normal = normalOf(problem, len(p.certified))
+					}
+					r, err := Solve(problem, p.starts[start], nil)
 					if err != nil {
 						t.Errorf("%s from start %d: %v", p.name, start+1, err)
 						continue
 					}
 					variance := 2 * r.Cost / float64(len(p.y)-len(r.X))
 					deviation := make([]float64, len(r.X))
+					if c.normal {
+						r.Jacobian = mat.NewDense(problem.Size, len(r.X), nil)
+						problem.Jacobian(r.Jacobian, r.X)
+					}
 					covariance, err := Covariance(r.Jacobian, variance)
+					if c.normal {
+						if fast, ok := NormalCovariance(r.Normal, len(r.X), variance); ok {
+							for k := range r.X {
+								if ratio := fast.At(k, k) / covariance.At(k, k); !(math.Abs(ratio-1) <= 1e-5) {
+									t.Errorf("%s from start %d: variance of parameter %d is %v times that by QR", p.name, start+1, k, ratio)
+								}
+							}
+						}
+					}
 					if err != nil {
 						t.Errorf("%s from start %d: %v", p.name, start+1, err)
 						continue
@@ -154,6 +172,20 @@ func TestNIST(t *testing.T) {
 			}
 			t.Logf("least           %10.1f %10.1f %6.1f  %5d %9d %9d", least[0], least[1], least[2], total[0], total[1], total[2])
 		})
+	}
+}
+
+// normalOf returns Problem.Normal of a problem, by its definition.
+func normalOf(p Problem, n int) func(jtj, jtr, x []float64) float64 {
+	r, j := make([]float64, p.Size), mat.NewDense(p.Size, n, nil)
+	return func(jtj, jtr, x []float64) float64 {
+		p.Residual(r, x)
+		if jtj != nil {
+			p.Jacobian(j, x)
+			mat.NewDense(n, n, jtj).Mul(j.T(), j)
+			mat.NewVecDense(n, jtr).MulVec(j.T(), mat.NewVecDense(p.Size, r))
+		}
+		return dot(r, r)
 	}
 }
 

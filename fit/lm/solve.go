@@ -36,16 +36,25 @@ type Problem struct {
 	// which is always the point for which Residual was called last, so that common terms may be kept from there. Nil:
 	// central differences with relative steps, 2n evaluations of Residual.
 	Jacobian func(dst *mat.Dense, x []float64)
+	// Normal, where given, fills jtj (n×n by rows, all of it) with JᵀJ and jtr (n) with Jᵀr at x and returns ‖r‖²; where
+	// both are nil only the latter is wanted. A problem with many residuals for its few variables can sum them without
+	// storing J, which is several times faster than the QR decomposition. It halves the digits, though: at every point
+	// whose JᵀJ is not clearly regular the solver uses Residual and Jacobian, which must both be given, instead. What is
+	// not finite shows as for Residual.
+	Normal func(jtj, jtr, x []float64) (squares float64)
 }
 
 // Result is where a solve ended. It shares no memory with the arguments or the Workspace.
 type Result struct {
 	X         []float64  // the best point, n
 	Cost      float64    // ½‖r(X)‖²
-	Residuals []float64  // r(X), m
-	Jacobian  *mat.Dense // J(X), m×n
+	Residuals []float64  // r(X), m; nil for a problem with Normal
+	Jacobian  *mat.Dense // J(X), m×n; nil for a problem with Normal
 	Gradient  []float64  // Jᵀr at X, n
-	AtBound   []bool     // X_j is equal to its lower or upper bound, n
+	// Normal is JᵀJ at X by rows, n×n, for a problem with Normal, else nil. If the solve ended with CostConvergence it and
+	// the Gradient are those of the point before the last step.
+	Normal  []float64
+	AtBound []bool // X_j is equal to its lower or upper bound, n
 
 	Status Status
 	Reason string // Status in words, with the measured value and its threshold
@@ -96,7 +105,7 @@ func Solve(p Problem, start []float64, settings *Settings) (*Result, error) {
 	if w == nil {
 		w = new(Workspace)
 	}
-	s := w.prepare(p.Size, len(start))
+	s := w.prepare(p.Size, len(start), p.Normal != nil)
 	s.problem, s.settings = p, o
 	s.begin(start)
 	if err := s.evaluate(); err != nil {
@@ -124,6 +133,8 @@ func checkLengths(p Problem, start []float64, s *Settings) {
 		panic(fmt.Sprintf("lm: Problem.Size is %d, must be positive", p.Size))
 	case n == 0:
 		panic("lm: start is empty")
+	case p.Normal != nil && p.Jacobian == nil:
+		panic("lm: Problem.Normal without Problem.Jacobian")
 	case s != nil && s.Lower != nil && len(s.Lower) != n:
 		panic(fmt.Sprintf("lm: %d lower bounds for %d variables", len(s.Lower), n))
 	case s != nil && s.Upper != nil && len(s.Upper) != n:
@@ -146,6 +157,16 @@ func (s *state) begin(start []float64) {
 
 // evaluate computes residuals and Jacobian at the start.
 func (s *state) evaluate() error {
+	if s.normal {
+		s.cost = s.problem.Normal(s.jtj, s.jtr, s.x) / 2
+		s.residuals++
+		if isFinite(s.cost) && s.linearise() < 0 {
+			return nil
+		}
+		// Once more with what tells where the fault is.
+		s.normal = false
+		s.tall()
+	}
 	s.residual(s.r, s.x)
 	s.cost = dot(s.r, s.r) / 2
 	if !isFinite(s.cost) {
@@ -167,8 +188,16 @@ func (s *state) residual(dst, x []float64) {
 }
 
 // linearise computes the Jacobian at x into spare, exchanges it with jac and factorises it. It returns the first column
-// that is not finite, or -1; then the former Jacobian is in spare.
+// that is not finite, or -1; then the former Jacobian is in spare. With Normal, JᵀJ and Jᵀr at x are there already.
 func (s *state) linearise() (bad int) {
+	if s.normal {
+		if s.regular = s.tri.cholesky(s.jtj, s.jtr); s.regular {
+			s.jacobians++
+			return -1
+		}
+		s.tall()
+		s.residual(s.r, s.x)
+	}
 	s.jac, s.spare = s.spare, s.jac
 	if s.problem.Jacobian == nil {
 		s.differences(s.jac)
@@ -184,7 +213,11 @@ func (s *state) inspect() {
 	o := &s.settings
 	projected := s.tri.projected()
 	for k := range s.n {
-		s.gradient[k] = dot(s.tri.column(k), projected)
+		if s.regular {
+			s.gradient[k] = s.jtr[k]
+		} else {
+			s.gradient[k] = dot(s.tri.column(k), projected)
+		}
 		if !o.UnitScaling {
 			// Never less than before (Moré 1978): a variable whose influence fades, such as a rate that runs away, is not
 			// set free by it.
@@ -192,14 +225,18 @@ func (s *state) inspect() {
 		}
 	}
 	s.hold()
-	s.split(projected)
-	s.reduced = false
+	var offset float64 // ‖P·r‖
+	if s.split = false; s.regular && len(s.free) == s.n {
+		offset = norm(projected)
+	} else {
+		s.resolve(projected)
+		offset = norm(s.c[:len(s.free)])
+	}
 	if s.radius == 0 {
 		s.radius = s.firstRadius()
 	}
 
 	size := math.Sqrt(2 * s.cost)
-	offset := norm(s.c[:len(s.free)]) // ‖P·r‖
 	// The residuals cannot be known better than x is, whose rounding changes them by up to this.
 	s.rounding = 0
 	for k, x := range s.x {
@@ -274,18 +311,13 @@ func (s *state) advance() {
 			return
 		}
 		s.iterations++
-		s.residual(s.trialR, s.trial)
-		cost := dot(s.trialR, s.trialR) / 2
+		// The last step: after it nothing is linearised any more.
+		last := s.normal && full && predicted <= o.CostTolerance*s.cost
+		cost, actual := s.try(last)
 		if !isFinite(cost) {
 			s.radius = mostShrink * s.length
 			continue
 		}
-		// Summed by differences: of two nearly equal costs only the leading digits would cancel.
-		var actual float64
-		for i, r := range s.r {
-			actual += (r - s.trialR[i]) * (r + s.trialR[i])
-		}
-		actual /= 2
 		// Where rounding hides the decrease, the ratio tends to 1 and the prediction is trusted (Conn, Gould and Toint,
 		// Trust-Region Methods, 2000, section 17.4.2). Note: only for a full step, the last ones of a good solve. With
 		// a wrong Jacobian the radius shrinks until all steps are lost in rounding, and those must not be taken for
@@ -304,13 +336,26 @@ func (s *state) advance() {
 			continue
 		}
 		former := s.cost
+		if last {
+			if math.Abs(actual) <= o.CostTolerance*former+noise {
+				s.x, s.trial = s.trial, s.x
+				s.cost = cost
+				s.stop(CostConvergence, predicted/former, o.CostTolerance)
+				return
+			}
+			s.try(false) // the prediction was wrong: on from there
+		}
 		s.exchange()
 		s.cost = cost
 		if s.linearise() >= 0 {
-			s.jac, s.spare = s.spare, s.jac
 			s.exchange()
 			s.cost = former
-			s.tri.factorise(s.jac, s.r)
+			if s.normal {
+				s.linearise()
+			} else {
+				s.jac, s.spare = s.spare, s.jac
+				s.tri.factorise(s.jac, s.r)
+			}
 			s.radius = mostShrink * s.length
 			continue
 		}
@@ -328,10 +373,32 @@ func (s *state) advance() {
 	}
 }
 
+// try evaluates the trial point: its cost, and how much less that is than the cost at x. With costOnly its JᵀJ and Jᵀr
+// are left out.
+func (s *state) try(costOnly bool) (cost, decrease float64) {
+	if s.normal {
+		s.residuals++
+		if costOnly {
+			cost = s.problem.Normal(nil, nil, s.trial) / 2
+		} else {
+			cost = s.problem.Normal(s.trialJTJ, s.trialJTR, s.trial) / 2
+		}
+		return cost, s.cost - cost
+	}
+	s.residual(s.trialR, s.trial)
+	// Summed by differences: of two nearly equal costs only the leading digits would cancel.
+	for i, r := range s.r {
+		decrease += (r - s.trialR[i]) * (r + s.trialR[i])
+	}
+	return dot(s.trialR, s.trialR) / 2, decrease / 2
+}
+
 // exchange swaps the current and the trial point.
 func (s *state) exchange() {
 	s.x, s.trial = s.trial, s.x
 	s.r, s.trialR = s.trialR, s.r
+	s.jtj, s.trialJTJ = s.trialJTJ, s.jtj
+	s.jtr, s.trialJTR = s.trialJTR, s.jtr
 }
 
 // change is the largest relative change of a variable by the step.
@@ -370,12 +437,14 @@ func (s *state) stop(status Status, measured, limit float64) {
 // result copies the end point out of the workspace.
 func (s *state) result() *Result {
 	m, n := s.m, s.n
-	memory := make([]float64, 2*n+m+m*n)
+	size := 2*n + m + m*n
+	if s.normal {
+		size = 2*n + n*n
+	}
+	memory := make([]float64, size)
 	r := &Result{
 		X:                   memory[:n:n],
 		Gradient:            memory[n : 2*n : 2*n],
-		Residuals:           memory[2*n : 2*n+m : 2*n+m],
-		Jacobian:            mat.NewDense(m, n, memory[2*n+m:]),
 		AtBound:             make([]bool, n),
 		Cost:                s.cost,
 		Status:              s.status,
@@ -384,10 +453,17 @@ func (s *state) result() *Result {
 		ResidualEvaluations: s.residuals,
 		JacobianEvaluations: s.jacobians,
 	}
+	if s.normal {
+		r.Normal = memory[2*n:]
+		copy(r.Normal, s.jtj)
+	} else {
+		r.Residuals = memory[2*n : 2*n+m : 2*n+m]
+		copy(r.Residuals, s.r)
+		r.Jacobian = mat.NewDense(m, n, memory[2*n+m:])
+		r.Jacobian.Copy(s.jac)
+	}
 	copy(r.X, s.x)
-	copy(r.Residuals, s.r)
 	copy(r.Gradient, s.gradient)
-	r.Jacobian.Copy(s.jac)
 	for k, x := range r.X {
 		r.AtBound[k] = x == s.low[k] || x == s.high[k]
 	}

@@ -18,16 +18,23 @@ type state struct {
 	jac       *mat.Dense // J
 	spare     *mat.Dense // for the J of the next point
 	tri       triangle   // R and Qᵀr
-	gradient  []float64  // Jᵀr
-	rounding  float64    // change of r by the rounding of x
-	low, high []float64  // bounds
-	bounded   bool       // there is a finite bound
+
+	normal        bool      // the problem gives JᵀJ and Jᵀr
+	jtj, trialJTJ []float64 // JᵀJ at x and at trial, n×n by rows
+	jtr, trialJTR []float64 // Jᵀr there
+	regular       bool      // R came from JᵀJ, which is clearly regular
+	workspace     *Workspace
+
+	gradient  []float64 // Jᵀr
+	rounding  float64   // change of r by the rounding of x
+	low, high []float64 // bounds
+	bounded   bool      // there is a finite bound
 
 	scale  []float64 // D, the diagonal of the trust region's norm ‖D·p‖; zero while a column of J never was anything else
 	radius float64   // zero before the first step
 
 	free     []int     // variables that may move, ascending
-	reduced  bool      // b, v, sigma and c are for fewer variables than are free at x
+	split    bool      // b, v, sigma and c are for the variables that are free at x
 	b, v     []float64 // k×n and k×k for k free variables, see rightSingular
 	sigma, c []float64 // singular values of R·D⁻¹, and Uᵀ·rhs
 	rhs      []float64 // Qᵀr plus what the variables set to a bound add
@@ -77,8 +84,9 @@ func (s *state) decompose() {
 	}
 }
 
-// split decomposes R·D⁻¹ for the free variables and resolves rhs in it.
-func (s *state) split(rhs []float64) {
+// resolve decomposes R·D⁻¹ for the free variables and resolves rhs in it.
+func (s *state) resolve(rhs []float64) {
+	s.split = true
 	s.decompose()
 	n, k := s.n, len(s.free)
 	// A direction whose singular value is nothing but rounding is no direction: it takes no part in a step.
@@ -142,13 +150,15 @@ func (s *state) expand() {
 
 // step computes p for a radius, inside the bounds and not above maxStep (+Inf: no limit) in any variable.
 func (s *state) step(radius, maxStep float64) {
-	if s.reduced {
-		s.hold()
-		s.split(s.tri.projected())
-		s.reduced = false
-	}
 	clear(s.p)
 	clear(s.onto)
+	if s.regular && len(s.free) == s.n && s.newton(radius, maxStep) {
+		return
+	}
+	if !s.split {
+		s.hold()
+		s.resolve(s.tri.projected())
+	}
 	s.damp(radius)
 	s.expand()
 	s.cut = false
@@ -181,6 +191,36 @@ func (s *state) step(radius, maxStep float64) {
 	}
 }
 
+// newton computes the full step, R·p = −Qᵀr, and reports whether it may be taken: it is not longer than the radius, in
+// no variable above maxStep, and stays inside the bounds.
+func (s *state) newton(radius, maxStep float64) bool {
+	projected := s.tri.projected()
+	for k := s.n - 1; k >= 0; k-- {
+		sum := -projected[k]
+		for l := k + 1; l < s.n; l++ {
+			sum -= s.tri.column(l)[k] * s.p[l]
+		}
+		s.p[k] = sum / s.tri.column(k)[k]
+	}
+	var squares float64
+	for k, p := range s.p {
+		squares += s.scale[k] * p * s.scale[k] * p
+		to := s.x[k] + p
+		if !(math.Abs(p) <= maxStep && to > s.low[k] && to < s.high[k]) {
+			squares = math.Inf(1)
+		}
+	}
+	if !(squares <= radius*radius) {
+		clear(s.p)
+		return false
+	}
+	s.lambda, s.cut, s.length = 0, false, math.Sqrt(squares)
+	for k, v := range projected {
+		s.image[k] = -v
+	}
+	return true
+}
+
 // confine keeps the step inside the bounds: a variable that would leave is set to its bound, and the others are
 // solved for again with it there, until none leaves.
 func (s *state) confine(radius float64) {
@@ -201,9 +241,9 @@ func (s *state) confine(radius float64) {
 		if len(kept) == len(s.free) {
 			return
 		}
-		s.reduced = true
 		s.free = kept
-		s.split(s.rhs)
+		s.resolve(s.rhs)
+		s.split = false // for the next radius the variables set to a bound are free again
 		s.damp(radius)
 		s.expand()
 	}

@@ -37,10 +37,11 @@ type Circuit struct {
 	root       *Node
 	parameters []Parameter
 	index      map[string]int
+	program    *program
 }
 
 func newCircuit(root *Node, parameters []Parameter) *Circuit {
-	c := &Circuit{root: root, parameters: parameters, index: make(map[string]int, len(parameters))}
+	c := &Circuit{root: root, parameters: parameters, index: make(map[string]int, len(parameters)), program: compile(root)}
 	for i, p := range parameters {
 		c.index[p.Name] = i
 	}

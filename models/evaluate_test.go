@@ -257,70 +257,87 @@ func TestExtremeValuesStayFinite(t *testing.T) {
 // ideal series circuit Y has one. Both stay numbers, also inside of other
 // circuits and for parts of very low and very high impedance.
 func TestIdealResonanceStaysFinite(t *testing.T) {
-	// f, L and C with ωL and 1/(ωC) the same float64.
-	exact := func(f, reactance float64) (l, c float64) {
+	// L and C whose reactances, of about the given size, or for a parallel
+	// circuit susceptances, cancel to the last bit as the evaluation rounds
+	// them; 0, 0 if none are found.
+	exact := func(f, reactance float64, parallel bool) (l, c float64) {
 		omega := 2 * math.Pi * f
+		rest := func(l, c float64) float64 {
+			if parallel {
+				return c*omega - 1/l*(1/omega)
+			}
+			return l*omega - 1/c*(1/omega)
+		}
 		l = reactance / omega
 		c = 1 / (omega * (omega * l))
 		for range 100 {
-			if omega*l == 1/(omega*c) {
+			switch r := rest(l, c); {
+			case r == 0:
 				return l, c
-			}
-			if 1/(omega*c) > omega*l {
+			case r < 0: // both rise with C
 				c = math.Nextafter(c, 1e300)
-			} else {
+			default:
 				c = math.Nextafter(c, 0)
 			}
 		}
 		return 0, 0
 	}
-	hits := 0
+	expressions := map[bool][]string{
+		true:  {"L || C", "R + (L || C)", "R || L || C", "R1 || (R2 + (L || C))", "R1 || (L1 + (L || C))"},
+		false: {"L + C", "R || (L + C)", "C1 || (L + C)", "R + (C1 || (L + C))", "R1 || (R2 + (C1 || (L + C)))"},
+	}
+	hits := map[bool]int{}
 	for _, reactance := range []float64{1e-30, 1e-6, 0.01, 1, 37, 1e6, 1e30} {
 		for _, f := range []float64{1e-3, 159.1549431, 1e6, 1.0001e6, 7.3e6, 99e9} {
-			l, cap := exact(f, reactance)
-			if l == 0 {
-				continue
-			}
-			hits++
-			for _, expression := range []string{
-				"L || C", "R + (L || C)", "R || L || C", "R1 || (R2 + (L || C))", "R1 || (L1 + (L || C))",
-				"L + C", "R || (L + C)", "C1 || (L + C)", "R + (C1 || (L + C))", "R1 || (R2 + (C1 || (L + C)))",
-			} {
-				c := mustParse(expression)
-				for _, other := range []float64{MinValue, 1e-6, 1, 1e6, MaxValue} {
-					values := make([]float64, len(c.Parameters()))
-					for k, p := range c.Parameters() {
-						switch p.Name {
-						case "L":
-							values[k] = l
-						case "C":
-							values[k] = cap
-						default:
-							values[k] = other
+			for parallel, written := range expressions {
+				l, cap := exact(f, reactance, parallel)
+				if l == 0 {
+					continue
+				}
+				hits[parallel]++
+				for _, expression := range written {
+					c := mustParse(expression)
+					for _, other := range []float64{MinValue, 1e-6, 1, 1e6, MaxValue} {
+						values := make([]float64, len(c.Parameters()))
+						for k, p := range c.Parameters() {
+							switch p.Name {
+							case "L":
+								values[k] = l
+							case "C":
+								values[k] = cap
+							default:
+								values[k] = other
+							}
 						}
-					}
-					z, by := poisoned(1), columns(len(values), 1)
-					c.NewEvaluator([]float64{f}).Jacobian(z, by, values)
-					if !finite(z[0]) {
-						t.Errorf("%s with %v at %g Hz: Z = %v", c, values, f, z[0])
-					}
-					for k := range by {
-						if !finite(by[k][0]) {
-							t.Errorf("%s with %v at %g Hz: derivative by %s = %v", c, values, f, c.Parameters()[k].Name, by[k][0])
+						z, by := poisoned(1), columns(len(values), 1)
+						c.NewEvaluator([]float64{f}).Jacobian(z, by, values)
+						if !finite(z[0]) {
+							t.Errorf("%s with %v at %g Hz: Z = %v", c, values, f, z[0])
+						}
+						for k := range by {
+							if !finite(by[k][0]) {
+								t.Errorf("%s with %v at %g Hz: derivative by %s = %v", c, values, f, c.Parameters()[k].Name, by[k][0])
+							}
 						}
 					}
 				}
-			}
-			if z := mustParse("L || C").At(f, []float64{l, cap}); !(cmplx.Abs(z) > 1e80) {
-				t.Errorf("L || C with %v, %v at %g Hz: Z = %v, want next to infinity", l, cap, f, z)
-			}
-			if z := mustParse("R || L || C").At(f, []float64{5, l, cap}); reactance >= 1e-6 && reactance <= 1e6 {
-				requireClose(t, fmt.Sprintf("R || L || C at its resonance, %g Hz", f), z, 5, 1e-15, 5)
+				if !parallel {
+					if z := mustParse("L + C").At(f, []float64{l, cap}); z != 0 {
+						t.Errorf("L + C with %v, %v at %g Hz: Z = %v, want 0", l, cap, f, z)
+					}
+					continue
+				}
+				if z := mustParse("L || C").At(f, []float64{l, cap}); !(cmplx.Abs(z) > 1e80) {
+					t.Errorf("L || C with %v, %v at %g Hz: Z = %v, want next to infinity", l, cap, f, z)
+				}
+				if z := mustParse("R || L || C").At(f, []float64{5, l, cap}); reactance >= 1e-6 && reactance <= 1e6 {
+					requireClose(t, fmt.Sprintf("R || L || C at its resonance, %g Hz", f), z, 5, 1e-15, 5)
+				}
 			}
 		}
 	}
-	if hits < 30 {
-		t.Errorf("only %d of 42 resonances hit exactly: nothing was tested", hits)
+	if hits[true] < 30 || hits[false] < 30 {
+		t.Errorf("of 42 resonances only %d parallel and %d series ones hit exactly: too little was tested", hits[true], hits[false])
 	}
 }
 

@@ -1,0 +1,62 @@
+package models
+
+import (
+	"fmt"
+	"math"
+)
+
+// BlockSize is the number of frequencies evaluated together. A group of a
+// circuit needs two complex numbers a frequency, so that ten groups stay
+// within 20 KB, which fits the first-level cache of any current processor.
+const BlockSize = 64
+
+// Grid holds the frequencies of a sweep and what the laws of the elements need
+// of them. Made once a sweep, it is shared by any number of evaluators, also
+// concurrently as long as nobody calls [Grid.Set]. The zero Grid is without
+// frequencies.
+type Grid struct {
+	freq    []float64 // Hz
+	omega   []float64 // ω = 2πf
+	inverse []float64 // 1/ω
+	root    []float64 // √ω
+	log     []float64 // ln ω
+	buffer  []float64 // that the five are cut from
+}
+
+// NewGrid returns a grid of frequencies in Hz. It panics unless each is
+// positive and finite.
+func NewGrid(freq []float64) *Grid {
+	g := new(Grid)
+	g.Set(freq)
+	return g
+}
+
+// Frequencies returns the frequencies in Hz. The caller must not change them.
+func (g *Grid) Frequencies() []float64 { return g.freq }
+
+// Set changes the frequencies, in Hz. It panics, without a change, unless each
+// is positive and finite. It allocates only if there are more than ever
+// before.
+func (g *Grid) Set(freq []float64) {
+	for _, f := range freq {
+		if !(f > 0) || math.IsInf(f, 1) {
+			panic(fmt.Sprintf("models: frequency %v Hz is not positive and finite", f))
+		}
+	}
+	n := len(freq)
+	if cap(g.buffer) < 5*n {
+		g.buffer = make([]float64, 5*n)
+	}
+	cut := func(i int) []float64 { return g.buffer[i*n : (i+1)*n : (i+1)*n] }
+	g.buffer = g.buffer[:cap(g.buffer)]
+	g.freq = cut(0)
+	copy(g.freq, freq) // first: it may overlap with what is replaced
+	g.omega, g.inverse, g.root, g.log = cut(1), cut(2), cut(3), cut(4)
+	for i, f := range g.freq {
+		omega := 2 * math.Pi * f
+		g.omega[i] = omega
+		g.inverse[i] = 1 / omega
+		g.root[i] = math.Sqrt(omega)
+		g.log[i] = math.Log(omega)
+	}
+}

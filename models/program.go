@@ -1,0 +1,96 @@
+package models
+
+// program is a circuit compiled for evaluation: its groups, children before
+// parents, the root last. Every group adds immittances: a series group the
+// impedances of its members, a parallel group their admittances. As series and
+// parallel groups alternate, a group hands its parent the reciprocal of its
+// sum; only a series group at the root hands out the sum itself.
+type program struct {
+	groups  []group
+	columns int // of scratch memory that an evaluation needs, BlockSize each
+}
+
+type group struct {
+	parallel bool
+	root     bool
+	// leaves are the resistors, inductors and capacitors. Their sum needs one
+	// pass, however many there are.
+	leaves []leaf
+	// powers are the other elements. They stand only in series groups; one
+	// beside others in parallel gets a series group of its own.
+	powers []power
+	// parts are the columns that are added to the leaves: the impedances of
+	// powers and the outputs of the groups inside.
+	parts []int
+	// output is the column of the reciprocal of the sum, factor that of
+	// ∂Z/∂sum. Z itself is the output of the root.
+	output, factor int
+	parent         int // the group that this one stands in; −1 for the root
+}
+
+// leaf is an element whose impedance and admittance are real or imaginary.
+type leaf struct {
+	element   Element
+	parameter int
+}
+
+// power is an element whose law needs a power or a hyperbolic function of the
+// frequency.
+type power struct {
+	element Element
+	p, q    int // parameters; q is −1 if there is one only
+	// z is the column of the impedance, first and second those of its
+	// derivatives by the unknowns of p and q. first is used only where the
+	// derivative isn't plus or minus z.
+	z, first, second int
+}
+
+func compile(root *Node) *program {
+	p := new(program)
+	if root.Kind == Leaf {
+		root = &Node{Kind: Series, Children: []*Node{root}}
+	}
+	last := p.group(root)
+	p.groups[last].root = true
+	p.groups[last].parent = -1
+	return p
+}
+
+// column reserves a column of scratch memory.
+func (p *program) column() int {
+	p.columns++
+	return p.columns - 1
+}
+
+// group appends the group of a node, after those inside it, and returns its
+// place.
+func (p *program) group(n *Node) int {
+	g := group{parallel: n.Kind == Parallel}
+	var inside []int
+	for _, child := range n.Children {
+		switch {
+		case child.Kind != Leaf:
+			inside = append(inside, p.group(child))
+		case child.Element <= Capacitor:
+			g.leaves = append(g.leaves, leaf{child.Element, child.Parameters[0]})
+		case g.parallel:
+			inside = append(inside, p.group(&Node{Kind: Series, Children: []*Node{child}}))
+		default:
+			w := power{element: child.Element, p: child.Parameters[0], q: -1, z: p.column()}
+			if len(child.Parameters) > 1 {
+				w.q = child.Parameters[1]
+				w.first, w.second = p.column(), p.column()
+			}
+			g.powers = append(g.powers, w)
+			g.parts = append(g.parts, w.z)
+		}
+	}
+	place := len(p.groups)
+	for _, i := range inside {
+		p.groups[i].parent = place
+		g.parts = append(g.parts, p.groups[i].output)
+	}
+	g.output, g.factor = p.column(), p.column()
+	p.groups = append(p.groups, g)
+	return place
+}

@@ -2,53 +2,74 @@ package models
 
 import (
 	"math"
+	"strings"
 	"testing"
 )
 
-// Circuits that span the kinds of work: plain elements, two levels of
-// grouping, and the elements that need a power or a hyperbolic function.
-var benchmarked = []string{"cap-esr-esl", "cap-two-branch", "ind-core", "cap-loss", "cap-line"}
-
-func benchmarkCircuit(b *testing.B, name string) (*Evaluator, []float64) {
-	b.Helper()
-	m, ok := Lookup(name)
-	if !ok {
-		b.Fatalf("no circuit %s", name)
+// benchmarked lists the circuits that are timed: three of plain elements, for
+// which fused kernels in C served as the measure, and the library.
+func benchmarked() []Model {
+	var all []Model
+	for _, expression := range []string{
+		"ESR + ESL + C", "ESL + ESR + C + (R1 || C1)", "(R + L) || Cp || Rp",
+	} {
+		all = append(all, Model{Name: strings.ReplaceAll(expression, " ", ""), Circuit: mustParse(expression)})
 	}
-	values := make([]float64, len(m.Circuit.Parameters()))
-	for i, p := range m.Circuit.Parameters() {
-		values[i] = typical(p)
-	}
-	return m.Circuit.NewEvaluator(logFrequencies(100, 100e6, 201)), values
+	return append(all, Library()...)
 }
 
-func BenchmarkImpedance(b *testing.B) {
-	for _, name := range benchmarked {
-		b.Run(name, func(b *testing.B) {
-			e, values := benchmarkCircuit(b, name)
-			dst := make([]complex128, len(e.Frequencies()))
+// benchmarkBlock times the evaluation of 201 frequencies by blocks, as a fit
+// does it.
+func benchmarkBlock(b *testing.B, wantDerivatives bool) {
+	grid := NewGrid(logFrequencies(100, 100e6, 201))
+	n := len(grid.Frequencies())
+	for _, m := range benchmarked() {
+		b.Run(m.Name, func(b *testing.B) {
+			values := make([]float64, len(m.Circuit.Parameters()))
+			for i, p := range m.Circuit.Parameters() {
+				values[i] = typical(p)
+			}
+			var e Evaluator
+			e.Use(m.Circuit, grid)
+			z := make([]complex128, BlockSize)
+			var derivatives [][]complex128
+			if wantDerivatives {
+				derivatives = columns(len(values), BlockSize)
+			}
 			b.ReportAllocs()
 			for b.Loop() {
-				e.Impedance(dst, values)
+				for from := 0; from < n; from += BlockSize {
+					e.Block(from, min(from+BlockSize, n), values, z, derivatives)
+				}
 			}
-			reportPerPoint(b, len(dst))
+			reportPerPoint(b, n)
 		})
 	}
 }
 
-func BenchmarkJacobian(b *testing.B) {
-	for _, name := range benchmarked {
-		b.Run(name, func(b *testing.B) {
-			e, values := benchmarkCircuit(b, name)
-			dst := make([]complex128, len(e.Frequencies()))
-			derivatives := columns(len(values), len(dst))
-			b.ReportAllocs()
-			for b.Loop() {
-				e.Jacobian(dst, derivatives, values)
-			}
-			reportPerPoint(b, len(dst))
-		})
+func BenchmarkImpedance(b *testing.B) { benchmarkBlock(b, false) }
+func BenchmarkJacobian(b *testing.B)  { benchmarkBlock(b, true) }
+
+// BenchmarkUse is the change to another circuit and grid.
+func BenchmarkUse(b *testing.B) {
+	grids := []*Grid{NewGrid(logFrequencies(100, 100e6, 201)), NewGrid(logFrequencies(1, 1e6, 11))}
+	circuits := Library()
+	var e Evaluator
+	b.ReportAllocs()
+	for i := 0; b.Loop(); i++ {
+		e.Use(circuits[i%len(circuits)].Circuit, grids[i%2])
 	}
+}
+
+// BenchmarkGrid is the change of the frequencies of a sweep.
+func BenchmarkGrid(b *testing.B) {
+	freq := logFrequencies(100, 100e6, 201)
+	var g Grid
+	b.ReportAllocs()
+	for b.Loop() {
+		g.Set(freq)
+	}
+	reportPerPoint(b, len(freq))
 }
 
 func BenchmarkResonances(b *testing.B) {

@@ -143,36 +143,43 @@ func (e *Evaluator) up(from, to int, values []float64, z []complex128, derivativ
 		if !g.root {
 			output = e.column(g.output, len(z))
 		}
-		constant, rising, falling := g.lump(values)
-		if len(g.parts) == 0 {
-			setImmittance(output, constant, rising, omega, falling, inverse)
-		} else {
-			setSum(output, e.column(g.parts[0], len(z)), constant, rising, omega, falling, inverse)
-			for _, part := range g.parts[1:] {
-				add(output, e.column(part, len(z)))
+		var parts []complex128
+		switch len(g.parts) {
+		case 0:
+		case 1:
+			parts = e.column(g.parts[0], len(z))
+		default:
+			setSum(output, e.column(g.parts[0], len(z)), e.column(g.parts[1], len(z)))
+			for _, part := range g.parts[2:] {
+				setSum(output, output, e.column(part, len(z)))
 			}
+			parts = output
 		}
-		if g.parallel || !g.root {
-			invert(output)
+		constant, rising, falling := g.lump(values)
+		if g.root && !g.parallel {
+			setImmittance(output, parts, constant, rising, omega, falling, inverse)
+		} else {
+			setReciprocal(output, parts, constant, rising, omega, falling, inverse)
 		}
 	}
 }
 
-// lump adds the immittances of the leaves: their sum at ω is
-// constant + j(rising·ω + falling/ω).
+// lump adds the immittances of the plain elements.
 func (g *group) lump(values []float64) (constant, rising, falling float64) {
-	for _, l := range g.leaves {
-		v := values[l.parameter]
-		switch {
-		case l.element == Resistor && g.parallel:
-			constant += 1 / v
-		case l.element == Resistor:
-			constant += v
-		case (l.element == Capacitor) == g.parallel:
-			rising += v
-		default:
-			falling -= 1 / v
+	if g.parallel {
+		for _, p := range g.resistors {
+			constant += 1 / values[p]
 		}
+	} else {
+		for _, p := range g.resistors {
+			constant += values[p]
+		}
+	}
+	for _, p := range g.rising {
+		rising += values[p]
+	}
+	for _, p := range g.falling {
+		falling -= 1 / values[p]
 	}
 	return constant, rising, falling
 }
@@ -184,33 +191,36 @@ func (e *Evaluator) down(from, to int, values []float64, z []complex128, derivat
 	groups := e.circuit.program.groups
 	for i := len(groups) - 1; i >= 0; i-- {
 		g := &groups[i]
-		factor := e.column(g.factor, n)
-		switch {
-		case g.root && !g.parallel:
-			factor = nil // it is 1
-		case g.root:
-			setSquare(factor, z)
-		case groups[g.parent].root && !groups[g.parent].parallel:
-			setSquare(factor, e.column(g.output, n))
-		default:
-			setProductSquare(factor, e.column(groups[g.parent].factor, n), e.column(g.output, n))
-		}
-		for _, l := range g.leaves {
-			dst := derivatives[l.parameter]
-			if dst == nil {
-				continue
+		var factor []complex128 // nil is 1
+		if g.factor >= 0 {
+			factor = e.column(g.factor, n)
+			var above []complex128
+			if !g.root && groups[g.parent].factor >= 0 {
+				above = e.column(groups[g.parent].factor, n)
 			}
-			dst = dst[:n]
-			v := values[l.parameter]
-			switch {
-			case l.element == Resistor && g.parallel:
-				scale(dst, -1/v, factor)
-			case l.element == Resistor:
-				scale(dst, v, factor)
-			case (l.element == Capacitor) == g.parallel:
-				turn90(dst, v, omega, factor)
-			default:
-				turn90(dst, 1/v, inverse, factor)
+			output := z
+			if !g.root {
+				output = e.column(g.output, n)
+			}
+			setFactor(factor, above, output)
+		}
+		for _, p := range g.resistors {
+			if dst := derivatives[p]; dst != nil {
+				s := values[p]
+				if g.parallel {
+					s = -1 / s
+				}
+				setScaled(dst[:n], s, factor)
+			}
+		}
+		for _, p := range g.rising {
+			if dst := derivatives[p]; dst != nil {
+				setTurned(dst[:n], values[p], omega, factor)
+			}
+		}
+		for _, p := range g.falling {
+			if dst := derivatives[p]; dst != nil {
+				setTurned(dst[:n], 1/values[p], inverse, factor)
 			}
 		}
 		for k := range g.powers {
@@ -223,10 +233,10 @@ func (e *Evaluator) down(from, to int, values []float64, z []complex128, derivat
 				first = e.column(w.first, n)
 			}
 			if dst := derivatives[w.p]; dst != nil {
-				multiply(dst[:n], sign, first, factor)
+				setProduct(dst[:n], sign, first, factor)
 			}
 			if w.q >= 0 && derivatives[w.q] != nil {
-				multiply(derivatives[w.q][:n], 1, e.column(w.second, n), factor)
+				setProduct(derivatives[w.q][:n], 1, e.column(w.second, n), factor)
 			}
 		}
 	}

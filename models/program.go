@@ -10,28 +10,26 @@ type program struct {
 	columns int // of scratch memory that an evaluation needs, BlockSize each
 }
 
+// group is a series or parallel node. The sum of its immittances at ω is
+//
+//	S = constant + j(rising·ω + falling/ω) + parts
+//
+// in which resistors make the constant, whatever grows as ω (inductors in
+// series, capacitors in parallel) the rising and the others the falling term.
 type group struct {
-	parallel bool
-	root     bool
-	// leaves are the resistors, inductors and capacitors. Their sum needs one
-	// pass, however many there are.
-	leaves []leaf
+	parallel, root             bool
+	resistors, rising, falling []int // parameters
 	// powers are the other elements. They stand only in series groups; one
 	// beside others in parallel gets a series group of its own.
 	powers []power
-	// parts are the columns that are added to the leaves: the impedances of
-	// powers and the outputs of the groups inside.
+	// parts are the columns with the impedances of the powers and the outputs
+	// of the groups inside.
 	parts []int
-	// output is the column of the reciprocal of the sum, factor that of
-	// ∂Z/∂sum. Z itself is the output of the root.
+	// output is the column of 1/S, factor that of ∂Z/∂S. The output of the
+	// root is Z itself and has no column, nor has the factor of a series root,
+	// which is 1: they are −1.
 	output, factor int
 	parent         int // the group that this one stands in; −1 for the root
-}
-
-// leaf is an element whose impedance and admittance are real or imaginary.
-type leaf struct {
-	element   Element
-	parameter int
 }
 
 // power is an element whose law needs a power or a hyperbolic function of the
@@ -50,9 +48,7 @@ func compile(root *Node) *program {
 	if root.Kind == Leaf {
 		root = &Node{Kind: Series, Children: []*Node{root}}
 	}
-	last := p.group(root)
-	p.groups[last].root = true
-	p.groups[last].parent = -1
+	p.group(root, true)
 	return p
 }
 
@@ -64,17 +60,21 @@ func (p *program) column() int {
 
 // group appends the group of a node, after those inside it, and returns its
 // place.
-func (p *program) group(n *Node) int {
-	g := group{parallel: n.Kind == Parallel}
+func (p *program) group(n *Node, root bool) int {
+	g := group{parallel: n.Kind == Parallel, root: root, output: -1, factor: -1, parent: -1}
 	var inside []int
 	for _, child := range n.Children {
 		switch {
 		case child.Kind != Leaf:
-			inside = append(inside, p.group(child))
-		case child.Element <= Capacitor:
-			g.leaves = append(g.leaves, leaf{child.Element, child.Parameters[0]})
+			inside = append(inside, p.group(child, false))
+		case child.Element == Resistor:
+			g.resistors = append(g.resistors, child.Parameters[0])
+		case child.Element == Inductor && !g.parallel, child.Element == Capacitor && g.parallel:
+			g.rising = append(g.rising, child.Parameters[0])
+		case child.Element == Inductor, child.Element == Capacitor:
+			g.falling = append(g.falling, child.Parameters[0])
 		case g.parallel:
-			inside = append(inside, p.group(&Node{Kind: Series, Children: []*Node{child}}))
+			inside = append(inside, p.group(&Node{Kind: Series, Children: []*Node{child}}, false))
 		default:
 			w := power{element: child.Element, p: child.Parameters[0], q: -1, z: p.column()}
 			if len(child.Parameters) > 1 {
@@ -90,7 +90,12 @@ func (p *program) group(n *Node) int {
 		p.groups[i].parent = place
 		g.parts = append(g.parts, p.groups[i].output)
 	}
-	g.output, g.factor = p.column(), p.column()
+	if !root {
+		g.output = p.column()
+	}
+	if !root || g.parallel {
+		g.factor = p.column()
+	}
 	p.groups = append(p.groups, g)
 	return place
 }

@@ -3,6 +3,7 @@ package fit
 import (
 	"context"
 	"runtime"
+	"sync/atomic"
 
 	"golang.org/x/sync/errgroup"
 )
@@ -12,49 +13,59 @@ import (
 // output is the same for any number of jobs. Results wait only within a
 // window of a few per job: memory does not grow with n. The first error of
 // emit or of the context stops it and is returned. jobs below 1 means the
-// processors.
+// processors; one job, or one piece of work, needs no other goroutine.
 func InOrder[T any](ctx context.Context, n, jobs int, work func(i int) T, emit func(i int, result T) error) error {
 	if jobs < 1 {
 		jobs = runtime.GOMAXPROCS(0)
 	}
-	group, ctx := errgroup.WithContext(ctx)
-	// pending holds, in order, a channel for each result under way; its
-	// capacity is the window.
-	pending := make(chan chan T, 4*jobs)
-	slots := make(chan struct{}, jobs)
-	group.Go(func() error {
-		defer close(pending)
+	if jobs = min(jobs, n); jobs <= 1 {
 		for i := range n {
-			result := make(chan T, 1)
-			select {
-			case slots <- struct{}{}:
-			case <-ctx.Done():
-				return ctx.Err()
+			if err := ctx.Err(); err != nil {
+				return err
 			}
-			go func() {
-				defer func() { <-slots }()
-				result <- work(i)
-			}()
-			select {
-			case pending <- result:
-			case <-ctx.Done():
-				return ctx.Err()
+			if err := emit(i, work(i)); err != nil {
+				return err
 			}
 		}
 		return nil
-	})
+	}
+	group, ctx := errgroup.WithContext(ctx)
+	// Result i waits in place i of the window, taken anew when it is emitted.
+	// Who works on i has a token; as there are no more than places, and a token
+	// comes back when its result leaves, the place is empty.
+	window := make([]chan T, 4*jobs)
+	for i := range window {
+		window[i] = make(chan T, 1)
+	}
+	tokens := make(chan struct{}, len(window))
+	var next atomic.Int64
+	for range jobs {
+		group.Go(func() error {
+			for {
+				select {
+				case tokens <- struct{}{}:
+				case <-ctx.Done():
+					return ctx.Err()
+				}
+				i := int(next.Add(1)) - 1
+				if i >= n {
+					return nil
+				}
+				window[i%len(window)] <- work(i)
+			}
+		})
+	}
 	group.Go(func() error {
-		i := 0
-		for result := range pending {
+		for i := range n {
 			select {
-			case r := <-result:
+			case r := <-window[i%len(window)]:
 				if err := emit(i, r); err != nil {
 					return err
 				}
+				<-tokens
 			case <-ctx.Done():
 				return ctx.Err()
 			}
-			i++
 		}
 		return nil
 	})

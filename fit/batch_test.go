@@ -3,6 +3,7 @@ package fit
 import (
 	"context"
 	"errors"
+	"fmt"
 	"slices"
 	"sync/atomic"
 	"testing"
@@ -49,5 +50,20 @@ func TestInOrderStops(t *testing.T) {
 		})
 	if !errors.Is(err, stop) || emitted != 11 || started.Load() > 1000 {
 		t.Errorf("error %v after %d results, %d started", err, emitted, started.Load())
+	}
+}
+
+// BenchmarkInOrder hands over results of hardly any work.
+func BenchmarkInOrder(b *testing.B) {
+	for _, jobs := range []int{1, 2} {
+		b.Run(fmt.Sprintf("jobs=%d", jobs), func(b *testing.B) {
+			b.ReportAllocs()
+			sum := 0
+			if err := InOrder(context.Background(), b.N, jobs,
+				func(i int) int { return i },
+				func(_, r int) error { sum += r; return nil }); err != nil {
+				b.Fatal(err)
+			}
+		})
 	}
 }

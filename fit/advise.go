@@ -148,9 +148,7 @@ func (r *Result) rowsAt(freq []float64, values []float64) (*mat.Dense, error) {
 	}
 	p := newProblem(r.Circuit, pts, r.Weight, &s)
 	copy(p.values, values)
-	j := mat.NewDense(2*len(freq), len(r.Free), nil)
-	p.jacobian(j, p.unknowns())
-	return j, nil
+	return p.jacobianAt(p.unknowns()), nil
 }
 
 // extensions returns the sets of frequencies that an advice considers.

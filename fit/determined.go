@@ -84,8 +84,10 @@ func (r *Result) withoutElement(i int) (probability, cost float64, ok bool) {
 		for c := range all {
 			all[c] = c
 		}
-		_, rest, _ := regularCovariance(solution.Jacobian, all, 1)
-		lost = len(r.Free) - len(rest)
+		if normalCovariance(solution.Normal, len(all), all) == nil {
+			_, all, _ = regularCovariance(p.jacobianAt(solution.X), all, 1)
+		}
+		lost = len(r.Free) - len(all)
 	} else {
 		residuals := make([]float64, 2*len(p.freq))
 		p.residual(residuals, nil)

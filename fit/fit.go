@@ -5,12 +5,10 @@ import (
 	"math"
 	"slices"
 	"strings"
-	"sync"
 
 	"gonum.org/v1/gonum/mat"
 
 	"realpart/fit/lm"
-	"realpart/fit/residual"
 	"realpart/models"
 )
 
@@ -184,11 +182,6 @@ func Fit(freq []float64, z []complex128, c *models.Circuit, settings *Settings) 
 		return nil, err
 	}
 	p := newProblem(c, pts, s.Weight, &s)
-	p.workspace = workspaces.Get().(*lm.Workspace)
-	defer func() {
-		workspaces.Put(p.workspace)
-		p.workspace = nil // the result keeps the problem, not the workspace
-	}()
 	if len(p.free) == 0 {
 		return evaluate(p, &s, nil, &lm.Result{Status: lm.GradientConvergence, Reason: "all parameters are fixed"}), nil
 	}
@@ -208,9 +201,6 @@ func Fit(freq []float64, z []complex128, c *models.Circuit, settings *Settings) 
 	p.settle(solution)
 	return evaluate(p, &s, solution.X, solution), nil
 }
-
-// workspaces are the solver's memory of fits that are over.
-var workspaces = sync.Pool{New: func() any { return new(lm.Workspace) }}
 
 // check finds faults of the settings before anything is computed.
 func (s *Settings) check(freq []float64, c *models.Circuit) error {
@@ -297,16 +287,29 @@ func sortedKeys[V any](m map[string]V) []string {
 	return keys
 }
 
+// safe is a square of a magnitude that has a reciprocal.
+const safe = 1e-290
+
 // points prepares a sweep for the problem.
 func (s *Settings) points(freq []float64, z []complex128) (points, error) {
-	pts := points{freq: freq, measured: z, inverse: make([]complex128, len(z))}
+	pts := points{freq: freq, measured: z, inverse: make([]complex128, len(z)), grid: models.NewGrid(freq)}
+	low, high := math.Inf(1), 0.0 // |Z|²
 	for i, v := range z {
-		a := abs(v)
-		if !(a > 0) || math.IsInf(a, 1) {
-			return pts, &InputError{Found: fmt.Sprintf("Z = %v at %v Hz", v, freq[i]), Expected: "a finite impedance that is not zero"}
+		squares := real(v)*real(v) + imag(v)*imag(v)
+		if !(squares > safe && squares < 1/safe) {
+			if a := abs(v); !(a > 0) || math.IsInf(a, 1) {
+				return pts, &InputError{Found: fmt.Sprintf("Z = %v at %v Hz", v, freq[i]), Expected: "a finite impedance that is not zero"}
+			}
+			pts.inverse[i] = 1 / v
+			squares = min(max(squares, safe), 1/safe)
+		} else {
+			d := 1 / squares
+			pts.inverse[i] = complex(real(v)*d, -imag(v)*d)
 		}
-		pts.inverse[i] = 1 / v
+		low, high = min(low, squares), max(high, squares)
 	}
+	pts.low, pts.high = math.Sqrt(low), math.Sqrt(high)
+	pts.noise = newNoise(z, pts.inverse)
 	if s.Weight == SParameter {
 		pts.s = s.S
 		if pts.s == nil {
@@ -370,16 +373,14 @@ func (p *problem) solve(s *Settings) (*lm.Result, error) {
 		p.values[i] = v
 	}
 	lower, upper := p.bounds(s)
-	noise := pointNoise(p.freq, p.measured)
-	goal := func(n int) float64 { return noiseCost(noise, n) }
 	if x := p.given(s); x != nil {
-		r, err := p.polish(x, lower, upper, s.Robust)
-		if err == nil && p.weight == Relative && r.Cost <= goal(len(p.freq)) {
+		r, err := p.fromStart(x, lower, upper, s)
+		if err == nil && p.weight == Relative && p.noise.explains(r.Cost, len(p.freq)) {
 			return r, nil
 		}
 	}
 	search := p.newSearch(s, lower, upper)
-	search.run(goal(len(search.thinned.freq)))
+	search.run(true)
 	if len(search.best) == 0 {
 		return nil, fmt.Errorf("no starting values found: %w", search.failure)
 	}
@@ -387,10 +388,10 @@ func (p *problem) solve(s *Settings) (*lm.Result, error) {
 	if err != nil {
 		return nil, err
 	}
-	if p.weight == Relative && best.Cost <= goal(len(p.freq)) && best.Status.Converged() {
+	if p.weight == Relative && p.noise.explains(best.Cost, len(p.freq)) && best.Status.Converged() {
 		return best, nil
 	}
-	search.run(0)
+	search.run(false)
 	for _, c := range search.best {
 		if c.cost > 2*search.best[0].cost {
 			break // on the thinned sweep already much worse
@@ -403,17 +404,34 @@ func (p *problem) solve(s *Settings) (*lm.Result, error) {
 	return best, nil
 }
 
-// noiseCost is the cost ½Σr² up to which so many points are described to their
-// noise: noise² a point, give or take a relative 1/√points.
-func noiseCost(noise float64, points int) float64 {
-	return noise * noise * float64(points) * (1 + 5/math.Sqrt(float64(points)))
+// fromStart goes from starting values to a minimum: most of the way on a few
+// points of the sweep, whose minimum is within a few standard uncertainties of
+// that of the whole.
+func (p *problem) fromStart(x, lower, upper []float64, s *Settings) (*lm.Result, error) {
+	few := max(16, 4*len(x))
+	if len(p.freq) > 2*few && !s.Robust {
+		thinned := newProblem(p.circuit, p.pick(thin(p.freq, p.measured, few)), Relative, s)
+		copy(thinned.values, p.values)
+		settings := p.searcher(lower, upper)
+		if r, err := lm.Solve(thinned.lm(), x, &settings); err == nil && r.Status.Converged() {
+			x = r.X
+		}
+	}
+	return p.polish(x, lower, upper, s.Robust)
+}
+
+// searcher returns the settings of a fit on a thinned sweep.
+func (p *problem) searcher(lower, upper []float64) lm.Settings {
+	return lm.Settings{UnitScaling: true, MaxStep: maxStep, MaxIterations: searchSteps,
+		GradientTolerance: searchTolerance, StepTolerance: searchTolerance, CostTolerance: searchTolerance,
+		Lower: lower, Upper: upper}
 }
 
 // settle counts a solution at the noise of the points as converged when the
 // solver stalled: in the flat valley of a parameter that is not determined,
 // the decrease that is left is lost in the rounding of the cost.
 func (p *problem) settle(solution *lm.Result) {
-	if solution.Status == lm.Stalled && p.weight == Relative && solution.Cost <= noiseCost(pointNoise(p.freq, p.measured), len(p.freq)) {
+	if solution.Status == lm.Stalled && p.weight == Relative && p.noise.explains(solution.Cost, len(p.freq)) {
 		solution.Status = lm.CostConvergence
 		solution.Reason += "; the residuals are at the noise of the points"
 	}
@@ -476,9 +494,7 @@ func (p *problem) newSearch(s *Settings, lower, upper []float64) *search {
 	f := newFeatures(pts, searchPoints)
 	q := &search{
 		whole: p, thinned: newProblem(p.circuit, f.points, Relative, s), settings: s, sampler: newSampler(f, s.Seed),
-		solver: lm.Settings{UnitScaling: true, MaxStep: maxStep, MaxIterations: searchSteps,
-			GradientTolerance: searchTolerance, StepTolerance: searchTolerance, CostTolerance: searchTolerance,
-			Lower: lower, Upper: upper, Workspace: p.workspace},
+		solver: p.searcher(lower, upper),
 	}
 	copy(q.thinned.values, p.values)
 	if s.Robust {
@@ -491,11 +507,13 @@ func (p *problem) newSearch(s *Settings, lower, upper []float64) *search {
 // most.
 func rounds(unknowns int) int { return 2 + unknowns*unknowns/2 }
 
-// run goes on until the cost reaches the goal, the rounds are used up, or the
-// same minimum has come back so often that there is hardly a lower one.
-func (q *search) run(goal float64) {
+// run goes on until the rounds are used up, or the same minimum has come back
+// so often that there is hardly a lower one, or, if that is enough, the sweep
+// is described to its noise.
+func (q *search) run(noiseIsEnough bool) {
+	done := func() bool { return noiseIsEnough && q.whole.noise.explains(q.best[0].cost, len(q.thinned.freq)) }
 	for ; q.round < rounds(len(q.whole.free)); q.round++ {
-		if len(q.best) > 0 && (q.best[0].cost <= goal || q.repeats >= 2*solvesPerRound) {
+		if len(q.best) > 0 && (done() || q.repeats >= 2*solvesPerRound) {
 			return
 		}
 		starts := q.draw()
@@ -515,7 +533,7 @@ func (q *search) run(goal float64) {
 				q.repeats = 0
 			}
 			q.best = keep(q.best, candidate{x: r.X, cost: r.Cost}, kept)
-			if q.best[0].cost <= goal {
+			if done() {
 				break
 			}
 		}
@@ -580,21 +598,6 @@ func (q *search) draw() []candidate {
 	return starts
 }
 
-// pointNoise estimates the relative standard deviation of real and imaginary
-// part of ln Z from third differences over neighbouring points, which a
-// smooth sweep does not contribute to.
-func pointNoise(freq []float64, z []complex128) float64 {
-	if len(z) < 8 {
-		return 0
-	}
-	d := make([]float64, 0, 2*len(z))
-	for i := 3; i < len(z); i++ {
-		a, b := logRatio(z[i] / z[i-1] * (z[i-2] / z[i-1]) / (z[i-1] / z[i-2] * (z[i-3] / z[i-2])))
-		d = append(d, a/math.Sqrt(20), b/math.Sqrt(20)) // 1 + 9 + 9 + 1
-	}
-	return residual.MAD(d)
-}
-
 // solver returns the settings of a fit on the whole sweep. The gradient
 // tolerance is in standard uncertainties of the solution: 1e-7 of them is
 // far below what anybody prints, and above the rounding of the residuals. The
@@ -602,8 +605,8 @@ func pointNoise(freq []float64, z []complex128) float64 {
 // not determined, where a step changes χ² by less than 1e-6.
 func (p *problem) solver(lower, upper []float64) lm.Settings {
 	return lm.Settings{UnitScaling: true, MaxStep: maxStep, MaxIterations: polishSteps,
-		GradientTolerance: 1e-6, StepTolerance: 1e-9, CostTolerance: 1e-9,
-		Lower: lower, Upper: upper, Workspace: p.workspace}
+		GradientTolerance: 1e-6, StepTolerance: 1e-9, CostTolerance: 1e-7,
+		Lower: lower, Upper: upper}
 }
 
 // polish minimises over the whole sweep: first the relative residual, whose

@@ -2,6 +2,7 @@ package fit
 
 import (
 	"math"
+	"sync"
 
 	"gonum.org/v1/gonum/mat"
 
@@ -16,7 +17,6 @@ type problem struct {
 	circuit    *models.Circuit
 	parameters []models.Parameter
 	settings   *Settings
-	evaluator  *models.Evaluator
 	points
 	weight     Weight
 	reference  float64
@@ -25,25 +25,25 @@ type problem struct {
 	values []float64 // of all parameters; the fixed ones stay
 	free   []int     // indices of the free parameters
 	scale  float64   // of the soft-L1 loss, in units of the residual; 0: none
-
-	workspace *lm.Workspace // of the solver; nil: each solve makes its own
-
-	z  []complex128   // model at the last evaluation
-	dz [][]complex128 // ∂z/∂x, nil for fixed parameters
 }
 
 // points is a sweep with what its weighting needs of it.
 type points struct {
 	freq     []float64
+	grid     *models.Grid // of freq
 	measured []complex128
 	inverse  []complex128 // 1/measured
 	s        []complex128 // S-parameter of measured, for SParameter
 	magnitude,
 	phase []float64 // stated accuracy of each point, for Accuracy and the meter's part of the uncertainty; nil: none
+	low, high float64 // the least and the largest |Z|
+	noise     *noise
 }
 
 func (p *points) pick(index []int) points {
-	q := points{freq: make([]float64, 0, len(index)), measured: make([]complex128, 0, len(index)), inverse: make([]complex128, 0, len(index))}
+	n := len(index)
+	memory := make([]complex128, 2*n)
+	q := points{freq: make([]float64, 0, n), measured: memory[:0:n], inverse: memory[n:n], low: p.low, high: p.high, noise: p.noise}
 	for _, i := range index {
 		q.freq = append(q.freq, p.freq[i])
 		q.measured = append(q.measured, p.measured[i])
@@ -56,6 +56,7 @@ func (p *points) pick(index []int) points {
 			q.phase = append(q.phase, p.phase[i])
 		}
 	}
+	q.grid = models.NewGrid(q.freq)
 	return q
 }
 
@@ -63,13 +64,8 @@ func newProblem(c *models.Circuit, pts points, weight Weight, s *Settings) *prob
 	p := &problem{
 		circuit: c, parameters: c.Parameters(), settings: s, points: pts, weight: weight,
 		reference: s.Reference, connection: s.Connection,
-		evaluator: c.NewEvaluator(pts.freq),
-		values:    make([]float64, len(c.Parameters())),
-		z:         make([]complex128, len(pts.freq)),
-		dz:        make([][]complex128, len(c.Parameters())),
+		values: make([]float64, len(c.Parameters())),
 	}
-	n := len(pts.freq)
-	columns := make([]complex128, n*len(p.parameters))
 	p.free = make([]int, 0, len(p.parameters))
 	for i, parameter := range p.parameters {
 		if v, ok := s.Fixed[parameter.Name]; ok {
@@ -77,13 +73,44 @@ func newProblem(c *models.Circuit, pts points, weight Weight, s *Settings) *prob
 			continue
 		}
 		p.free = append(p.free, i)
-		p.dz[i] = columns[i*n : (i+1)*n : (i+1)*n]
 	}
 	return p
 }
 
 func (p *problem) lm() lm.Problem {
-	return lm.Problem{Size: 2 * len(p.freq), Residual: p.residual, Jacobian: p.jacobian}
+	return lm.Problem{Size: 2 * len(p.freq), Residual: p.residual, Jacobian: p.jacobian, Normal: p.normal}
+}
+
+// block is the memory in which one block of points is evaluated.
+type block struct {
+	evaluator models.Evaluator
+	z         [models.BlockSize]complex128 // of the model
+	rho       [models.BlockSize]complex128 // weighted residual, its two parts
+	weight    [models.BlockSize]float64
+	weighted  [models.BlockSize]complex128
+	dz        [][]complex128 // ∂z/∂x, nil for fixed parameters
+	columns   []complex128
+}
+
+// blocks are those that no problem works with: one is enough for a worker.
+var blocks = sync.Pool{New: func() any { return new(block) }}
+
+// block returns memory for the evaluation of this problem, for blocks.Put
+// afterwards.
+func (p *problem) block() *block {
+	b := blocks.Get().(*block)
+	b.evaluator.Use(p.circuit, p.grid)
+	n := len(p.parameters)
+	if len(b.columns) < n*models.BlockSize {
+		b.columns = make([]complex128, n*models.BlockSize)
+		b.dz = make([][]complex128, n)
+	}
+	b.dz = b.dz[:n]
+	clear(b.dz)
+	for _, i := range p.free {
+		b.dz[i] = b.columns[i*models.BlockSize : (i+1)*models.BlockSize]
+	}
+	return b
 }
 
 // set puts the unknowns of the free parameters into the values.
@@ -104,14 +131,34 @@ func (p *problem) unknowns() []float64 {
 
 func (p *problem) residual(dst, x []float64) {
 	p.set(x)
-	p.evaluator.Impedance(p.z, p.values)
-	for i, z := range p.z {
-		a, b := p.pair(i, z)
-		if p.scale > 0 {
-			g, _ := softL1((a*a + b*b) / (p.scale * p.scale))
-			a, b = g*a, g*b
+	b := p.block()
+	defer blocks.Put(b)
+	for from := 0; from < len(p.freq); from += models.BlockSize {
+		to := min(from+models.BlockSize, len(p.freq))
+		b.evaluator.Block(from, to, p.values, b.z[:], nil)
+		for i := from; i < to; i++ {
+			dst[2*i], dst[2*i+1] = p.robust(p.pair(i, b.z[i-from]))
 		}
-		dst[2*i], dst[2*i+1] = a, b
+	}
+}
+
+// robust makes the two parts of a residual those of the soft-L1 loss, if that
+// is asked for.
+func (p *problem) robust(a, b float64) (float64, float64) {
+	if p.scale > 0 {
+		g, _ := softL1((a*a + b*b) / (p.scale * p.scale))
+		a, b = g*a, g*b
+	}
+	return a, b
+}
+
+// model sets dst to the impedance in Ω at the points for the present values.
+func (p *problem) model(dst []complex128) {
+	b := p.block()
+	defer blocks.Put(b)
+	for from := 0; from < len(p.freq); from += models.BlockSize {
+		to := min(from+models.BlockSize, len(p.freq))
+		b.evaluator.Block(from, to, p.values, dst[from:to], nil)
 	}
 }
 
@@ -156,28 +203,171 @@ func logRatio(q complex128) (a, b float64) {
 	return 0.5 * math.Log(s), math.Atan2(im, re)
 }
 
-func (p *problem) jacobian(dst *mat.Dense, x []float64) {
-	p.set(x)
-	p.evaluator.Jacobian(p.z, p.dz, p.values)
-	raw := dst.RawMatrix()
-	for i, z := range p.z {
-		slope, sa, sb := p.slope(i, z)
-		even := raw.Data[2*i*raw.Stride : 2*i*raw.Stride+raw.Cols]
-		odd := raw.Data[(2*i+1)*raw.Stride : (2*i+1)*raw.Stride+raw.Cols]
-		for k, j := range p.free {
-			d := p.dz[j][i] * slope
-			even[k], odd[k] = real(d)*sa, imag(d)*sb
+// logRatios sets dst to ln(z·inverse), as [logRatio] but faster still where
+// that is below 1/128 in both parts: four terms suffice there, and one
+// division.
+func logRatios(dst, z, inverse []complex128) {
+	inverse, dst = inverse[:len(z)], dst[:len(z)]
+	for i, v := range z {
+		q := v * inverse[i]
+		re, im := real(q), imag(q)
+		s := re*re + im*im
+		if s > 1-1./65 && s < 1+1./65 && im < re*(1./128) && im > -re*(1./128) {
+			d := 1 / ((s + 1) * re)
+			u, t := ((re-1)*(re+1)+im*im)*(re*d), im*((s+1)*d)
+			v, w := u*u, t*t
+			dst[i] = complex(u+u*v*(1./3+v*(1./5+v*(1./7))), t-t*w*(1./3-w*(1./5-w*(1./7))))
+			continue
 		}
-		if p.scale > 0 {
-			a, b := p.pair(i, z)
-			g, dg := softL1((a*a + b*b) / (p.scale * p.scale))
-			dg *= 2 / (p.scale * p.scale)
-			for k := range even {
-				da, db := even[k], odd[k]
-				ds := dg * (a*da + b*db)
-				even[k], odd[k] = g*da+a*ds, g*db+b*ds
+		a, b := logRatio(q)
+		dst[i] = complex(a, b)
+	}
+}
+
+// normal sums JᵀJ and Jᵀr over the points, see [lm.Problem]. With w_i a weight
+// of point i and d_ik, ρ_i complex,
+//
+//	(JᵀJ)_kl = Σ w_i·Re(d_ik·d*_il),  (Jᵀr)_k = Σ w_i·Re(d_ik·ρ*_i),
+//
+// where d_ik = ∂z_i/∂x_k, w_i = 1/|z_i|² and ρ_i = z_i·r_i for the relative
+// residual r_i = ln(z_i/measured): to turn and scale the two parts of a
+// point's residual together changes neither sum.
+func (p *problem) normal(jtj, jtr, x []float64) (squares float64) {
+	p.set(x)
+	b := p.block()
+	defer blocks.Put(b)
+	dz := b.dz
+	if jtj == nil {
+		dz = nil
+	}
+	clear(jtj)
+	clear(jtr)
+	for from := 0; from < len(p.freq); from += models.BlockSize {
+		to := min(from+models.BlockSize, len(p.freq))
+		z, rho, weight := b.z[:to-from], b.rho[:to-from], b.weight[:to-from]
+		b.evaluator.Block(from, to, p.values, z, dz)
+		if p.weight == Relative && p.scale == 0 {
+			logRatios(rho, z, p.inverse[from:to])
+			for i, r := range rho {
+				squares += real(r)*real(r) + imag(r)*imag(r)
+				if jtj != nil {
+					re, im := real(z[i]), imag(z[i])
+					weight[i] = 1 / (re*re + im*im)
+					rho[i] = complex(re*real(r)-im*imag(r), re*imag(r)+im*real(r))
+				}
+			}
+		} else {
+			for i := range rho {
+				a, c := p.pair(from+i, z[i])
+				if jtj != nil {
+					p.row(b.dz, i, from+i, z[i])
+					weight[i] = 1
+				}
+				a, c = p.robust(a, c)
+				rho[i] = complex(a, c)
+				squares += a*a + c*c
 			}
 		}
+		if jtj != nil {
+			p.accumulate(jtj, jtr, b, to-from)
+		}
+	}
+	n := len(p.free)
+	for k := range jtr {
+		for l := range k {
+			jtj[l*n+k] = jtj[k*n+l]
+		}
+	}
+	return squares
+}
+
+// accumulate adds a block of points to JᵀJ, of which it fills the lower
+// triangle, and Jᵀr.
+func (p *problem) accumulate(jtj, jtr []float64, b *block, points int) {
+	n := len(p.free)
+	rho, weight, weighted := b.rho[:points], b.weight[:points], b.weighted[:points]
+	for k, i := range p.free {
+		column := b.dz[i][:points]
+		var re, im float64
+		for i, d := range column {
+			w := complex(weight[i]*real(d), weight[i]*imag(d))
+			weighted[i] = w
+			re += real(w) * real(rho[i])
+			im += imag(w) * imag(rho[i])
+		}
+		jtr[k] += re + im
+		row := jtj[k*n : k*n+k+1]
+		l := 0
+		for ; l+1 < len(row); l += 2 {
+			s, t := products(weighted, b.dz[p.free[l]][:points], b.dz[p.free[l+1]][:points])
+			row[l] += s
+			row[l+1] += t
+		}
+		if l < len(row) {
+			s, _ := products(weighted, column, column)
+			row[l] += s
+		}
+	}
+}
+
+// products returns the scalar products of w with a and with b, all seen as
+// vectors of real numbers. Two at once share the reading of w.
+func products(w, a, b []complex128) (wa, wb float64) {
+	a, b = a[:len(w)], b[:len(w)]
+	var ar, ai, br, bi float64
+	for i, v := range w {
+		ar += real(v) * real(a[i])
+		ai += imag(v) * imag(a[i])
+		br += real(v) * real(b[i])
+		bi += imag(v) * imag(b[i])
+	}
+	return ar + ai, br + bi
+}
+
+func (p *problem) jacobian(dst *mat.Dense, x []float64) {
+	p.set(x)
+	b := p.block()
+	defer blocks.Put(b)
+	raw := dst.RawMatrix()
+	for from := 0; from < len(p.freq); from += models.BlockSize {
+		to := min(from+models.BlockSize, len(p.freq))
+		b.evaluator.Block(from, to, p.values, b.z[:], b.dz)
+		for i := from; i < to; i++ {
+			p.row(b.dz, i-from, i, b.z[i-from])
+			even := raw.Data[2*i*raw.Stride : 2*i*raw.Stride+raw.Cols]
+			odd := raw.Data[(2*i+1)*raw.Stride : (2*i+1)*raw.Stride+raw.Cols]
+			for k, j := range p.free {
+				even[k], odd[k] = real(b.dz[j][i-from]), imag(b.dz[j][i-from])
+			}
+		}
+	}
+}
+
+// jacobianAt returns the Jacobian of the weighted residuals.
+func (p *problem) jacobianAt(x []float64) *mat.Dense {
+	j := mat.NewDense(2*len(p.freq), len(p.free), nil)
+	p.jacobian(j, x)
+	return j
+}
+
+// row turns element k of the columns ∂z/∂x into the derivatives of the two
+// parts of the weighted residual of point i, as real and imaginary part.
+func (p *problem) row(dz [][]complex128, k, i int, z complex128) {
+	slope, sa, sb := p.slope(i, z)
+	var a, b, g, dg float64
+	if p.scale > 0 {
+		a, b = p.pair(i, z)
+		g, dg = softL1((a*a + b*b) / (p.scale * p.scale))
+		dg *= 2 / (p.scale * p.scale)
+	}
+	for _, j := range p.free {
+		d := dz[j][k] * slope
+		da, db := real(d)*sa, imag(d)*sb
+		if p.scale > 0 {
+			ds := dg * (a*da + b*db)
+			da, db = g*da+a*ds, g*db+b*ds
+		}
+		dz[j][k] = complex(da, db)
 	}
 }
 

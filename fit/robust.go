@@ -71,8 +71,7 @@ func (r *Result) robustSpread() (*mat.Dense, float64) {
 	plain := p.plainResiduals(r.x)
 	scale := p.scale
 	p.scale = 0
-	j := mat.NewDense(2*len(p.freq), len(p.free), nil)
-	p.jacobian(j, r.x)
+	j := p.jacobianAt(r.x)
 	p.scale = scale
 	squares, slope := 0.0, 0.0
 	for i := range p.freq {

@@ -154,12 +154,8 @@ func (s *sampler) draw(c *models.Circuit, values []float64) {
 // seven decades beyond what could show in the sweep, where an element has
 // vanished for any purpose and the arithmetic is still at ease.
 func (p *problem) box() (lower, upper []float64) {
-	low, high := math.Inf(1), 0.0
-	for _, z := range p.measured {
-		low, high = min(low, abs(z)), max(high, abs(z))
-	}
 	const beyond = 1e7
-	low, high = low/beyond, high*beyond
+	low, high := p.low/beyond, p.high*beyond
 	first, last := 2*math.Pi*p.freq[0], 2*math.Pi*p.freq[len(p.freq)-1]
 	lower, upper = make([]float64, len(p.free)), make([]float64, len(p.free))
 	for k, i := range p.free {

@@ -40,17 +40,22 @@ func evaluate(p *problem, s *Settings, x []float64, solution *lm.Result) *Result
 		p.values[i] = v
 	}
 	p.set(x)
-	p.evaluator.Impedance(r.Model, p.values)
-	sum := 0.0
-	re, im := make([]float64, n), make([]float64, n)
-	for i, z := range r.Model {
-		a, b := logRatio(z * p.inverse[i])
-		r.Residuals[i] = complex(a, b)
+	p.model(r.Model)
+	logRatios(r.Residuals, r.Model, p.inverse)
+	sum, largest, at := 0.0, 0.0, 0
+	parts := make([]float64, 2*n)
+	re, im := parts[:n], parts[n:]
+	for i, rho := range r.Residuals {
+		a, b := real(rho), imag(rho)
 		re[i], im[i] = a, b
-		sum += a*a + b*b
-		if d := math.Hypot(a, b); d > r.MaxRelative {
-			r.MaxRelative, r.MaxAtHz = d, p.freq[i]
+		squares := a*a + b*b
+		sum += squares
+		if squares > largest {
+			largest, at = squares, i
 		}
+	}
+	if largest > 0 {
+		r.MaxRelative, r.MaxAtHz = math.Sqrt(largest), p.freq[at]
 	}
 	r.RMSRelative = math.Sqrt(sum / float64(n))
 	r.structure(re, im)
@@ -115,11 +120,12 @@ func (r *Result) uncertainty(s *Settings, solution *lm.Result) {
 	r.Covariance = mat.NewSymDense(k, nil)
 	r.Correlation = mat.NewSymDense(k, nil)
 	nu := float64(r.DegreesOfFreedom)
-	jacobian := solution.Jacobian
+	normal, jacobian := solution.Normal, solution.Jacobian
 	if nu > 0 {
 		r.Sigma = math.Sqrt(2 * solution.Cost / nu)
 		if p.scale > 0 {
 			jacobian, r.Sigma = r.robustSpread()
+			normal = nil
 		}
 	}
 	determined := make([]int, 0, k) // columns that the sweep determines at all
@@ -134,7 +140,13 @@ func (r *Result) uncertainty(s *Settings, solution *lm.Result) {
 		}
 		determined = append(determined, c)
 	}
-	covariance, determined, vague := regularCovariance(jacobian, determined, 1)
+	covariance, vague := normalCovariance(normal, k, determined), []int(nil)
+	if jacobian == nil && (covariance == nil || p.magnitude != nil) {
+		jacobian = p.jacobianAt(r.x)
+	}
+	if covariance == nil {
+		covariance, determined, vague = regularCovariance(jacobian, determined, 1)
+	}
 	for _, c := range vague {
 		q := &r.Parameters[p.free[c]]
 		q.Determined = false
@@ -240,6 +252,26 @@ func studentQuantile(p, nu float64) float64 {
 }
 
 var quantiles sync.Map // of studentQuantile
+
+// normalCovariance returns the covariance (JᵀJ)⁻¹ of the given columns of a
+// Jacobian of n columns from its JᵀJ; nil where that is not clearly regular, or
+// not given.
+func normalCovariance(jtj []float64, n int, columns []int) *mat.SymDense {
+	if jtj == nil || len(columns) == 0 {
+		return nil
+	}
+	part := jtj
+	if k := len(columns); k < n {
+		part = make([]float64, 0, k*k)
+		for _, a := range columns {
+			for _, b := range columns {
+				part = append(part, jtj[a*n+b])
+			}
+		}
+	}
+	covariance, _ := lm.NormalCovariance(part, len(columns), 1)
+	return covariance
+}
 
 // regularCovariance returns the covariance of the given columns of a
 // Jacobian. Of columns that cannot be told apart, all are vague, and one

@@ -118,8 +118,7 @@ const alike = 0.999
 // same effect. It returns "" where there is none.
 func (r *Result) confusedWith(column int) (name, where string) {
 	p := r.problem
-	j := mat.NewDense(2*len(r.Freq), len(r.Free), nil)
-	p.jacobian(j, r.x)
+	j := p.jacobianAt(r.x)
 	best, size := -1, 0.9
 	for c := range r.Free {
 		if c == column {
@@ -297,7 +296,7 @@ func (r *Result) second() []float64 {
 	s := p.settings
 	lower, upper := p.bounds(s)
 	search := p.newSearch(s, lower, upper)
-	search.run(0)
+	search.run(false)
 	t := studentQuantile(0.975, float64(r.DegreesOfFreedom))
 	defer p.set(r.x)
 	for _, c := range search.best {

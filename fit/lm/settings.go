@@ -47,7 +47,7 @@ type Settings struct {
 	// Lower and Upper are bounds that every point evaluated keeps, both ends included; equal ones fix a variable. A
 	// variable without a bound has -Inf or +Inf. Nil: no bounds.
 	Lower, Upper []float64
-	// Workspace is memory to use again. Nil: the solve makes its own.
+	// Workspace is memory to use again. Nil: the solve takes that of one that is over.
 	Workspace *Workspace
 }
 

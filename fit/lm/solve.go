@@ -103,7 +103,8 @@ func Solve(p Problem, start []float64, settings *Settings) (*Result, error) {
 	}
 	w := o.Workspace
 	if w == nil {
-		w = new(Workspace)
+		w = workspaces.Get().(*Workspace)
+		defer workspaces.Put(w)
 	}
 	s := w.prepare(p.Size, len(start), p.Normal != nil)
 	s.problem, s.settings = p, o

@@ -2,6 +2,7 @@ package lm
 
 import (
 	"math"
+	"sync"
 
 	"gonum.org/v1/gonum/blas/blas64"
 	"gonum.org/v1/gonum/mat"
@@ -18,6 +19,9 @@ type Workspace struct {
 	jac    [2]mat.Dense
 	state  state
 }
+
+// workspaces are those of solves that were given none.
+var workspaces = sync.Pool{New: func() any { return new(Workspace) }}
 
 // prepare cuts the memory for m residuals and n variables. With normal, what grows with m is left out until tall asks
 // for it.

@@ -529,9 +529,12 @@ func (b *builder) radians(seg *segment, col int, f, mag []float64, quiet bool) (
 		if h.negate {
 			signed = negated(raw)
 		}
-		unit, why := phaseUnit(f, mag, signed)
-		line := slopeFactor(f, mag, signed)
-		if largest(signed) <= beyondPi && !line.gainsays() {
+		most, line := largest(signed), slopeFactor(f, mag, signed)
+		unit := angleDegrees
+		if !(most > beyondPi) {
+			unit = line.unit()
+		}
+		if most <= beyondPi && !line.gainsays() {
 			unit = angleUnknown
 		}
 		stated := angleDegrees
@@ -546,6 +549,7 @@ func (b *builder) radians(seg *segment, col int, f, mag []float64, quiet bool) (
 			}
 			key := roles[h.role].key
 			e := b.headError(seg.plan, col, "phase in "+other[stated]+where, fmt.Sprintf("--units %s=%s, or %s=%s if the header is right", key, unit.short(), key, stated.short()))
+			_, why := phaseUnit(f, mag, signed)
 			e.Found, e.bare, e.Err = "values that look like "+other[unit]+": "+why, true, ErrAmbiguous
 			b.refuse(e)
 			return nil, false

@@ -4,6 +4,7 @@ import (
 	"bytes"
 	"errors"
 	"unicode/utf8"
+	"unsafe"
 
 	"golang.org/x/text/encoding"
 	"golang.org/x/text/encoding/charmap"
@@ -35,7 +36,8 @@ func decode(data []byte) (text, name string, err error) {
 		name = "UTF-8"
 	}
 	if utf8.Valid(data) {
-		return string(data), name, nil
+		// The text is the buffer itself: nothing writes to it any more.
+		return unsafe.String(unsafe.SliceData(data), len(data)), name, nil
 	}
 	return convert(data, charmap.Windows1252, "Windows-1252")
 }

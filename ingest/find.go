@@ -2,7 +2,6 @@ package ingest
 
 import (
 	"errors"
-	"io"
 	"io/fs"
 	"os"
 	"path/filepath"
@@ -129,7 +128,7 @@ func Open(path string, o *Options) ([]*Sweep, error) {
 	if path == "-" {
 		return Read(path, os.Stdin, o)
 	}
-	if !exists(path) {
+	if strings.IndexByte(path, '+') >= 0 && !exists(path) {
 		if one, two, ok := splitPair(path); ok {
 			return openPair(path, one, two, opt)
 		}
@@ -158,7 +157,7 @@ func exists(path string) bool {
 // readFile reads a regular file or a pipe.
 func readFile(path string, o Options) ([]byte, error) {
 	file, _ := splitSheet(path)
-	if exists(path) {
+	if file != path && exists(path) {
 		file = path
 	}
 	bad := func(found, expected, hint string, err error) ([]byte, error) {
@@ -186,25 +185,15 @@ func readFile(path string, o Options) ([]byte, error) {
 		return bad(err.Error(), "a readable file", "", err)
 	}
 	defer f.Close()
-	if info.Mode().IsRegular() {
-		// Reading at once needs no growing buffer; the limit guards against a
-		// file that grows meanwhile.
-		data := make([]byte, info.Size(), info.Size()+1)
-		n, err := io.ReadFull(f, data)
-		if err != nil && err != io.ErrUnexpectedEOF && err != io.EOF {
-			return bad(err.Error(), "a readable file", "", err)
-		}
-		if int64(n) == info.Size() {
-			rest, err := io.ReadAll(io.LimitReader(f, o.MaxBytes-int64(n)+1))
-			if err != nil {
-				return bad(err.Error(), "a readable file", "", err)
-			}
-			if int64(n+len(rest)) > o.MaxBytes {
-				return nil, tooLarge(path, o.MaxBytes)
-			}
-			return append(data[:n], rest...), nil
-		}
-		return data[:n], nil
+	if !info.Mode().IsRegular() {
+		return readAll(path, f, o.MaxBytes)
 	}
-	return readAll(path, f, o.MaxBytes)
+	data, err := slurp(f, info.Size(), o.MaxBytes)
+	switch {
+	case errors.Is(err, ErrTooLarge): // it grew meanwhile
+		return nil, tooLarge(path, o.MaxBytes)
+	case err != nil:
+		return bad(err.Error(), "a readable file", "", err)
+	}
+	return data, nil
 }

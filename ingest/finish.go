@@ -91,7 +91,9 @@ func (p *parsed) finish(d *partData) *Sweep {
 	faults := len(p.faults)
 	for i, f := range d.freq {
 		z := d.z[i]
-		switch {
+		switch size := math.Abs(real(z)) + math.Abs(imag(z)); {
+		case f > 0 && f <= math.MaxFloat64 && size > 0 && size <= math.MaxFloat64:
+			// A good point; the cases below are for all others.
 		case math.IsNaN(f) || math.IsInf(f, 0):
 			p.drop(d.line[i], "overload or no number in frequency")
 			continue

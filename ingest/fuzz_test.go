@@ -125,7 +125,7 @@ func FuzzSheetCells(f *testing.F) {
 		for n, l := range strings.Split(text, "\n") {
 			from := len(src.text)
 			src.text += strings.ReplaceAll(l, "|", string(rune(cellMark)))
-			if !allBlank(src.text[from:]) {
+			if strings.Trim(src.text[from:], " \t\v\f") != "" {
 				src.lines = append(src.lines, line{int32(from), int32(len(src.text)), int32(n + 1)})
 			}
 		}

@@ -25,8 +25,10 @@
 package ingest
 
 import (
+	"bytes"
 	"crypto/sha256"
 	"encoding/hex"
+	"errors"
 	"fmt"
 	"io"
 	"path"
@@ -131,14 +133,31 @@ func Read(name string, r io.Reader, o *Options) ([]*Sweep, error) {
 
 // readAll reads at most limit bytes.
 func readAll(name string, r io.Reader, limit int64) ([]byte, error) {
-	data, err := io.ReadAll(io.LimitReader(r, limit+1))
-	if err != nil {
+	size := 0
+	if known, ok := r.(interface{ Len() int }); ok { // what is left of a buffer
+		size = known.Len()
+	}
+	data, err := slurp(r, int64(size), limit)
+	switch {
+	case errors.Is(err, ErrTooLarge):
+		return nil, tooLarge(name, limit)
+	case err != nil:
 		return nil, &Error{File: name, Found: err.Error(), Expected: "a readable input", Err: err}
 	}
-	if int64(len(data)) > limit {
-		return nil, tooLarge(name, limit)
-	}
 	return data, nil
+}
+
+// slurp reads at most limit bytes, or returns ErrTooLarge. size is how many
+// there should be, 0 if that is not known; where it is right, the buffer does
+// not grow.
+func slurp(r io.Reader, size, limit int64) ([]byte, error) {
+	var buffer bytes.Buffer
+	buffer.Grow(int(min(size, limit)) + bytes.MinRead)
+	n, err := buffer.ReadFrom(io.LimitReader(r, limit+1))
+	if err == nil && n > limit {
+		err = ErrTooLarge
+	}
+	return buffer.Bytes(), err
 }
 
 func tooLarge(name string, limit int64) *Error {

@@ -3,6 +3,7 @@ package ingest
 import (
 	"fmt"
 	"math"
+	"slices"
 )
 
 // angleUnit is the outcome of telling degrees from radians.
@@ -49,15 +50,16 @@ func phaseUnit(freq, mag, phase []float64) (angleUnit, string) {
 	}
 	s := slopeFactor(freq, mag, phase)
 	k := s.factor
+	unit := s.unit()
 	switch {
+	case unit == angleDegrees:
+		return unit, fmt.Sprintf("the slope of ln|Z| agrees (factor %.2f)", k)
+	case unit == angleRadians:
+		return unit, fmt.Sprintf("the slope of ln|Z| agrees (factor %.2f)", k*180/math.Pi)
 	case s.pairs < 3 || s.predicted < 3:
 		return angleUnknown, "the magnitude changes too little to tell"
 	case !(s.agreement >= leastAgreement):
 		return angleUnknown, "the phase does not follow the slope of ln|Z|"
-	case leastFactor <= k && k <= mostFactor:
-		return angleDegrees, fmt.Sprintf("the slope of ln|Z| agrees (factor %.2f)", k)
-	case leastFactor <= k*180/math.Pi && k*180/math.Pi <= mostFactor:
-		return angleRadians, fmt.Sprintf("the slope of ln|Z| agrees (factor %.2f)", k*180/math.Pi)
 	}
 	return angleUnknown, fmt.Sprintf("the slope of ln|Z| fits neither (factor %.3g)", k)
 }
@@ -86,18 +88,28 @@ const (
 // slopePoints are enough to tell a factor of 57.
 const slopePoints = 64
 
-// thinned keeps about so many of the indices, evenly, the first and the last
-// among them.
-func thinned(order []int, most int) []int {
-	step := (len(order) + most - 1) / most
-	if step <= 1 {
-		return order
+// thinned returns the indices of about so many of the values in ascending order,
+// evenly spread, the first and the last among them.
+func thinned(v []float64, most int) []int {
+	var order []int // nil while the values stand in order
+	if !slices.IsSorted(v) {
+		order = sortedOrder(v)
 	}
-	var out []int
-	for i := 0; i < len(order)-1; i += step {
-		out = append(out, order[i])
+	at := func(i int) int {
+		if order != nil {
+			return order[i]
+		}
+		return i
 	}
-	return append(out, order[len(order)-1])
+	step := max(1, (len(v)+most-1)/most)
+	out := make([]int, 0, most+1)
+	for i := 0; i < len(v)-1; i += step {
+		out = append(out, at(i))
+	}
+	if len(v) > 0 {
+		out = append(out, at(len(v)-1))
+	}
+	return out
 }
 
 // slope is how a phase follows the slope of the magnitude.
@@ -106,6 +118,20 @@ type slope struct {
 	predicted float64 // rms of 90° times the slope, degrees
 	agreement float64 // 0 … 1, the cosine between the two
 	pairs     int     // of points
+}
+
+// unit is the unit in which the phase would follow the slope.
+func (s slope) unit() angleUnit {
+	k := s.factor
+	switch {
+	case s.pairs < 3 || s.predicted < 3 || !(s.agreement >= leastAgreement):
+		return angleUnknown
+	case leastFactor <= k && k <= mostFactor:
+		return angleDegrees
+	case leastFactor <= k*180/math.Pi && k*180/math.Pi <= mostFactor:
+		return angleRadians
+	}
+	return angleUnknown
 }
 
 // gainsays reports whether there is evidence enough to doubt what a header says:
@@ -124,7 +150,7 @@ func slopeFactor(freq, mag, phase []float64) slope {
 	var sxy, sxx, syy float64
 	n := 0
 	j := 0
-	order := thinned(sortedOrder(freq), slopePoints)
+	order := thinned(freq, slopePoints)
 	for _, i := range order {
 		a := order[j]
 		if !(freq[i] > 1.05*freq[a]) {

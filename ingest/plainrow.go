@@ -2,6 +2,7 @@ package ingest
 
 import (
 	"math"
+	"math/bits"
 	"strconv"
 	"strings"
 )
@@ -51,32 +52,32 @@ func newPlainRow(s *source, p *plan) *plainRow {
 }
 
 // read reads a line into vals; false means that the line is not plain.
-func (pr *plainRow) read(text string) bool {
-	i := 0
+func (pr *plainRow) read(text string, l line) bool {
+	i, end := int(l.start), int(l.end)
 	for c := 0; ; c++ {
 		k := pr.slot[c]
 		if k < 0 {
-			if i < len(text) && text[i] == '"' {
+			if i < end && text[i] == '"' {
 				return false // a delimiter may hide between quotes
 			}
-			j := strings.IndexByte(text[i:], pr.delim)
+			j := strings.IndexByte(text[i:end], pr.delim)
 			if j < 0 {
 				return false // the last column is always needed
 			}
 			i += j + 1
 			continue
 		}
-		for i < len(text) && text[i] == ' ' {
+		for i < end && text[i] == ' ' {
 			i++
 		}
-		v, end, ok := decimal(text, i)
+		v, next, ok := decimal(text, i)
 		if !ok {
 			// Too long for the short way, or no number at all.
-			j := strings.IndexByte(text[i:], pr.delim)
-			if j < 0 {
-				j = len(text) - i
+			if next = strings.IndexByte(text[i:end], pr.delim); next < 0 {
+				next = end - i
 			}
-			cell := strings.TrimRight(text[i:i+j], " ")
+			next += i
+			cell := strings.TrimRight(text[i:next], " ")
 			if cell == "" || cell[0] > '9' || isHex(cell) {
 				return false
 			}
@@ -84,10 +85,9 @@ func (pr *plainRow) read(text string) bool {
 			if v, err = strconv.ParseFloat(cell, 64); err != nil || !(math.Abs(v) < overload) {
 				return false
 			}
-			end = i + j
 		}
-		i = end
-		for i < len(text) && text[i] == ' ' {
+		i = next
+		for i < end && text[i] == ' ' {
 			i++
 		}
 		if v < 0 && pr.never[k] {
@@ -98,9 +98,9 @@ func (pr *plainRow) read(text string) bool {
 		}
 		pr.vals[k] = v
 		if c == pr.last {
-			return i == len(text) || text[i] == pr.delim && c+1+strings.Count(text[i:], string(rune(pr.delim))) <= pr.cols
+			return i >= end || text[i] == pr.delim && c+1+strings.Count(text[i:end], string(rune(pr.delim))) <= pr.cols
 		}
-		if i >= len(text) || text[i] != pr.delim {
+		if i >= end || text[i] != pr.delim {
 			return false
 		}
 		i++
@@ -110,48 +110,79 @@ func (pr *plainRow) read(text string) bool {
 // powers are exact in float64.
 var powers = [...]float64{1e0, 1e1, 1e2, 1e3, 1e4, 1e5, 1e6, 1e7, 1e8, 1e9, 1e10, 1e11, 1e12, 1e13, 1e14, 1e15, 1e16, 1e17, 1e18, 1e19, 1e20, 1e21, 1e22}
 
-// decimal reads a short decimal number at text[i] while it looks for its end:
-// up to 15 digits and a power of ten up to 10^22, both exact in float64, so that
-// one multiplication or division gives the correctly rounded number (Clinger
-// 1990, "How to read floating point numbers accurately", the fast case; strconv
-// does the same, but needs to know the end first). Anything else is not ok and
-// goes to strconv.ParseFloat.
+// powersUint are for digits8.
+var powersUint = [...]uint64{1e0, 1e1, 1e2, 1e3, 1e4, 1e5, 1e6, 1e7, 1e8}
+
+// Limits of the short way: the digits that a uint64 holds, and the mantissa up
+// to which every integer is a float64.
+const (
+	maxDigits   = 19
+	maxMantissa = 1 << 53
+)
+
+// decimalWindow is how many bytes decimal looks at: a sign, the digits, a point,
+// an exponent, and up to eight bytes behind them.
+const decimalWindow = 32
+
+// decimal reads a decimal number at text[i] while it looks for its end: a
+// mantissa up to 2⁵³ and a power of ten up to 10^22, both exact in float64, so
+// that one multiplication or division gives the correctly rounded number
+// (Clinger 1990, "How to read floating point numbers accurately", the fast case;
+// strconv does the same, but needs to know the end first). Anything else is not
+// ok and goes to strconv.ParseFloat.
 func decimal(text string, i int) (v float64, end int, ok bool) {
-	negative := false
-	if i < len(text) && (text[i] == '-' || text[i] == '+') {
-		negative = text[i] == '-'
-		i++
+	if len(text)-i < decimalWindow {
+		var tail [decimalWindow]byte
+		copy(tail[:], text[i:])
+		v, end, ok = decimal(string(tail[:]), 0)
+		return v, i + end, ok
 	}
-	mantissa, digits, start := uint64(0), 0, i
-	for i < len(text) && text[i]-'0' < 10 {
-		mantissa = mantissa*10 + uint64(text[i]-'0')
-		i++
+	t := text[i : i+decimalWindow]
+	k := 0
+	negative := t[0] == '-'
+	if negative || t[0] == '+' {
+		k = 1
 	}
-	digits = i - start
-	exp := 0
-	if i < len(text) && text[i] == '.' {
-		i++
-		point := i
-		for i < len(text) && text[i]-'0' < 10 {
-			mantissa = mantissa*10 + uint64(text[i]-'0')
-			i++
+	mantissa, n := digits8(t, k)
+	digits := n
+	k += n
+	for n == 8 {
+		if digits > maxDigits-8 {
+			return 0, i, false
 		}
-		exp = point - i
-		digits -= exp
+		var more uint64
+		more, n = digits8(t, k)
+		mantissa = mantissa*powersUint[n] + more
+		digits += n
+		k += n
 	}
-	if digits == 0 || digits > 15 {
+	exp := 0
+	if t[k] == '.' {
+		k++
+		point := k
+		for n = 8; n == 8; {
+			var more uint64
+			more, n = digits8(t, k)
+			if digits += n; digits > maxDigits {
+				return 0, i, false
+			}
+			mantissa = mantissa*powersUint[n] + more
+			k += n
+		}
+		exp = point - k
+	}
+	if digits == 0 || mantissa > maxMantissa {
 		return 0, i, false
 	}
-	if i < len(text) && text[i]|0x20 == 'e' {
-		j := i + 1
-		minus := false
-		if j < len(text) && (text[j] == '-' || text[j] == '+') {
-			minus = text[j] == '-'
+	if t[k]|0x20 == 'e' {
+		j := k + 1
+		minus := t[j] == '-'
+		if minus || t[j] == '+' {
 			j++
 		}
 		e, first := 0, j
-		for j < len(text) && text[j]-'0' < 10 && j < first+4 {
-			e = e*10 + int(text[j]-'0')
+		for t[j]-'0' < 10 && j < first+4 {
+			e = e*10 + int(t[j]-'0')
 			j++
 		}
 		if j == first {
@@ -161,14 +192,14 @@ func decimal(text string, i int) (v float64, end int, ok bool) {
 			e = -e
 		}
 		exp += e
-		i = j
+		k = j
 	}
 	v = float64(mantissa)
 	switch {
 	case exp == 0:
-	case 0 < exp && exp <= 22:
+	case 0 < exp && exp < len(powers):
 		v *= powers[exp]
-	case -22 <= exp && exp < 0:
+	case exp < 0 && -exp < len(powers):
 		v /= powers[-exp]
 	default:
 		return 0, i, false
@@ -179,5 +210,23 @@ func decimal(text string, i int) (v float64, end int, ok bool) {
 	if negative {
 		v = -v
 	}
-	return v, i, true
+	return v, i + k, true
+}
+
+// digits8 reads the decimal digits at text[i], up to eight of them: their value
+// and their number. It takes eight bytes at once, because a loop over digits,
+// whose number differs from cell to cell, is mostly waiting for branches that
+// were predicted wrongly.
+func digits8(text string, i int) (value uint64, n int) {
+	text = text[i : i+8]
+	w := uint64(text[0]) | uint64(text[1])<<8 | uint64(text[2])<<16 | uint64(text[3])<<24 |
+		uint64(text[4])<<32 | uint64(text[5])<<40 | uint64(text[6])<<48 | uint64(text[7])<<56
+	w ^= 0x3030303030303030 // digits are now 0 to 9, all else is more
+	// The top bit of each byte says that it is no digit; a carry spoils only
+	// bytes behind the first that is none.
+	other := (w + 0x7676767676767676 | w) & 0x8080808080808080
+	n = bits.TrailingZeros64(other) / 8
+	w <<= 64 - 8*uint(n) // zeros in front of the digits
+	w = w*10 + w>>8      // in every second byte: pairs
+	return ((w&0x000000ff000000ff)*(100+1000000<<32) + (w>>16&0x000000ff000000ff)*(1+10000<<32)) >> 32, n
 }

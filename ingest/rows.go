@@ -163,7 +163,7 @@ func (r *reader) readRows(p *plan, seg *segment) (table, *segment, bool) {
 			broken = true
 		}
 		lastNum = l.num
-		if plain != nil && plain.read(r.lineText(l)) {
+		if plain != nil && plain.read(r.text, l) {
 			if broken {
 				seg, broken = r.segmentFor(p, seg, plain.vals[0], len(r.lines)-i), false
 			}

@@ -43,8 +43,7 @@ func newSource(name, text, enc string) *source {
 		end = '\r'
 	}
 	quotes := strings.IndexByte(text, '"') >= 0
-	// Most lines of a sweep are about this long; append corrects the guess.
-	s.lines = make([]line, 0, len(text)/32+1)
+	s.lines = make([]line, 0, strings.Count(text, string(rune(end)))+1)
 	num := int32(0)
 	for start := 0; start < len(text); {
 		stop := strings.IndexByte(text[start:], end)
@@ -63,7 +62,7 @@ func newSource(name, text, enc string) *source {
 		for to > from && (text[to-1] == '\r' || isBlank(text[to-1])) {
 			to--
 		}
-		if to > from && !allBlank(text[from:to]) {
+		if to > from {
 			s.lines = append(s.lines, line{int32(from), int32(to), num})
 		}
 		num += extra
@@ -108,15 +107,6 @@ func openQuote(text string, start, stop int, end byte) (to, lines int) {
 }
 
 func isBlank(c byte) bool { return c == ' ' || c == '\t' || c == '\v' || c == '\f' }
-
-func allBlank(s string) bool {
-	for i := 0; i < len(s); i++ {
-		if !isBlank(s[i]) {
-			return false
-		}
-	}
-	return true
-}
 
 func (s *source) lineText(l line) string { return s.text[l.start:l.end] }
 

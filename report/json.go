@@ -10,13 +10,11 @@ import (
 
 // WriteJSON writes a record as one line of JSON (JSON Lines).
 func WriteJSON(w io.Writer, f *Fit) error {
-	var b bytes.Buffer
-	e := json.NewEncoder(&b)
-	e.SetEscapeHTML(false) // units and names stay readable
-	if err := e.Encode(f); err != nil {
-		return fmt.Errorf("report: the record of %s: %w", f.Sweep.File, err)
+	line, err := AppendJSON(nil, f)
+	if err != nil {
+		return err
 	}
-	_, err := w.Write(b.Bytes())
+	_, err = w.Write(line)
 	return err
 }
 

@@ -190,32 +190,32 @@ func isDigits(s string) bool {
 // that the Laurent series of coth is used there (coefficients from the
 // Bernoulli numbers, 2^(2k)·B_2k/(2k)!).
 func lineFactor(theta float64) (g, slope complex128) {
-	u := complex(0, theta)
 	if theta < 0.5 {
 		// g = 1/u + Σ a_k u^k, u·g′ = −1/u + Σ k·a_k·u^k. The ratio of
 		// successive coefficients tends to 1/π², so that 14 terms reach
-		// (0.5/π²)^14 ≈ 1e-18.
-		power := complex(1, 0)
-		for k, a := range cothSeries {
-			g += complex(a, 0) * power
-			slope += complex(float64(k)*a, 0) * power
-			power *= u
+		// (0.5/π²)^14 ≈ 1e-18. The even ones are real, the odd ones imaginary.
+		square := theta * theta
+		var re, im, reSlope, imSlope float64
+		for i := len(cothSeries) - 2; i >= 0; i -= 2 {
+			even, odd := cothSeries[i], cothSeries[i+1]
+			re = even - square*re
+			im = odd - square*im
+			reSlope = float64(i)*even - square*reSlope
+			imSlope = float64(i+1)*odd - square*imSlope
 		}
-		pole := complex(0, -1/theta)
-		return g + pole, slope - pole
+		return complex(re, theta*im-1/theta), complex(reSlope, theta*imSlope+1/theta)
 	}
 	t := math.Sqrt(2 * theta)
-	root := complex(t/2, t/2)
 	if t > 40 { // coth √u − 1 and 1/sinh²√u are below the rounding of 1
-		g = 1 / root
-		return g, -g / 2
+		return complex(1/t, -1/t), complex(-0.5/t, 0.5/t)
 	}
 	sin, cos := math.Sincos(t)
-	sinh, cosh := math.Sinh(t), math.Cosh(t)
-	d := cosh - cos
-	coth := complex(sinh/d, -sin/d)
-	g = coth / root
-	return g, -(g + coth*coth - 1) / 2
+	grow := math.Exp(t)
+	decay := 1 / grow
+	d := 2 / (grow + decay - 2*cos)
+	re, im := (grow-decay)/2*d, -sin*d // coth √u
+	g = complex((re+im)/t, (im-re)/t)  // coth √u·(1 − j)/t
+	return g, complex((1-re*re+im*im-real(g))/2, -re*im-imag(g)/2)
 }
 
 // cothSeries holds a_k of coth(√u)/√u = 1/u + Σ a_k·u^k, k = 0, 1, …:

@@ -257,39 +257,43 @@ func (e *Evaluator) power(w *power, from, to int, values []float64, derivatives 
 		}
 	case LossCapacitor:
 		tand := values[w.q]
-		second := e.column(w.second, n)
 		// rise = 1 − n. For large tand, atan is next to π/2 and n next to 0.
 		rise := 2 / math.Pi * math.Atan(tand)
 		dRise := 2 / math.Pi * tand / (1 + tand*tand) // by ln tand
-		omega := e.grid.omega[from:to]
+		perC := 1 / p
+		inverse := e.grid.inverse[from:to]
+		second := e.column(w.second, n)
 		for k, log := range e.grid.log[from:to] {
 			log -= logLossReference
-			scale := math.Exp(rise*log) / (omega[k] * p)
-			z[k] = complex(scale*tand, -scale)
+			x := math.Exp(rise*log) * inverse[k] * perC
+			r := x * tand
+			z[k] = complex(r, -x)
 			if derivatives {
-				second[k] = complex(dRise*log, 0)*z[k] + complex(scale*tand, 0)
+				h := dRise * log
+				second[k] = complex(h*r+r, -h*x)
 			}
 		}
 	case ConstantPhase:
-		n := values[w.q]
-		second := e.column(w.second, len(z))
-		dn := LogitScale.Slope(n)
-		sin, cos := math.Sincos(n * math.Pi / 2)
+		exponent := values[w.q]
+		dn := LogitScale.Slope(exponent)
+		sin, cos := math.Sincos(exponent * math.Pi / 2)
+		re, im := cos/p, -sin/p
+		second := e.column(w.second, n)
 		for k, log := range e.grid.log[from:to] {
-			scale := math.Exp(-n*log) / p
-			z[k] = complex(scale*cos, -scale*sin)
+			scale := math.Exp(-exponent * log)
+			z[k] = complex(scale*re, scale*im)
 			if derivatives {
 				second[k] = z[k] * complex(-dn*log, -dn*math.Pi/2)
 			}
 		}
 	case RCLine:
-		c := values[w.q]
+		rc := p * values[w.q]
 		first, second := e.column(w.first, n), e.column(w.second, n)
 		for k, omega := range e.grid.omega[from:to] {
-			g, slope := lineFactor(omega * p * c)
-			z[k] = complex(p, 0) * g
+			g, slope := lineFactor(omega * rc)
+			z[k] = complex(p*real(g), p*imag(g))
 			if derivatives {
-				second[k] = complex(p, 0) * slope
+				second[k] = complex(p*real(slope), p*imag(slope))
 				first[k] = z[k] + second[k]
 			}
 		}

@@ -38,8 +38,8 @@ type power struct {
 	element Element
 	p, q    int // parameters; q is −1 if there is one only
 	// z is the column of the impedance, first and second those of its
-	// derivatives by the unknowns of p and q. first is used only where the
-	// derivative isn't plus or minus z.
+	// derivatives by the unknowns of p and q. There is a first only for the RC
+	// line; for the others that derivative is plus or minus z.
 	z, first, second int
 }
 
@@ -79,7 +79,10 @@ func (p *program) group(n *Node, root bool) int {
 			w := power{element: child.Element, p: child.Parameters[0], q: -1, z: p.column()}
 			if len(child.Parameters) > 1 {
 				w.q = child.Parameters[1]
-				w.first, w.second = p.column(), p.column()
+				w.second = p.column()
+			}
+			if w.element == RCLine {
+				w.first = p.column()
 			}
 			g.powers = append(g.powers, w)
 			g.parts = append(g.parts, w.z)

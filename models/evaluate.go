@@ -129,6 +129,14 @@ func (e *Evaluator) column(i, n int) []complex128 {
 	return e.scratch[i*BlockSize:][:n]
 }
 
+// columnIfAny is column, and nil for none.
+func (e *Evaluator) columnIfAny(i, n int) []complex128 {
+	if i == none {
+		return nil
+	}
+	return e.column(i, n)
+}
+
 // up computes the output of every group; with derivatives also those of
 // elements whose derivatives are not multiples of their impedance.
 func (e *Evaluator) up(from, to int, values []float64, z []complex128, derivatives bool) {
@@ -184,60 +192,39 @@ func (g *group) lump(values []float64) (constant, rising, falling float64) {
 	return constant, rising, falling
 }
 
-// down hands each group its factor and fills the derivatives.
+// down computes the factor of every group and from it the derivatives.
 func (e *Evaluator) down(from, to int, values []float64, z []complex128, derivatives [][]complex128) {
-	omega, inverse := e.grid.omega[from:to], e.grid.inverse[from:to]
 	n := len(z)
-	groups := e.circuit.program.groups
-	for i := len(groups) - 1; i >= 0; i-- {
-		g := &groups[i]
-		var factor []complex128 // nil is 1
-		if g.factor >= 0 {
-			factor = e.column(g.factor, n)
-			var above []complex128
-			if !g.root && groups[g.parent].factor >= 0 {
-				above = e.column(groups[g.parent].factor, n)
-			}
-			output := z
-			if !g.root {
-				output = e.column(g.output, n)
-			}
-			setFactor(factor, above, output)
+	program := e.circuit.program
+	for i := range program.factors {
+		f := &program.factors[i]
+		output := z
+		if f.output != none {
+			output = e.column(f.output, n)
 		}
-		for _, p := range g.resistors {
-			if dst := derivatives[p]; dst != nil {
-				s := values[p]
-				if g.parallel {
-					s = -1 / s
-				}
-				setScaled(dst[:n], s, factor)
-			}
+		setFactor(e.column(f.column, n), e.columnIfAny(f.above, n), output)
+	}
+	for i := range program.derivatives {
+		d := &program.derivatives[i]
+		dst := derivatives[d.parameter]
+		if dst == nil {
+			continue
 		}
-		for _, p := range g.rising {
-			if dst := derivatives[p]; dst != nil {
-				setTurned(dst[:n], values[p], omega, factor)
-			}
-		}
-		for _, p := range g.falling {
-			if dst := derivatives[p]; dst != nil {
-				setTurned(dst[:n], 1/values[p], inverse, factor)
-			}
-		}
-		for k := range g.powers {
-			w := &g.powers[k]
-			first, sign := e.column(w.z, n), 1.0
-			switch w.element {
-			case LossCapacitor, ConstantPhase:
-				sign = -1
-			case RCLine:
-				first = e.column(w.first, n)
-			}
-			if dst := derivatives[w.p]; dst != nil {
-				setProduct(dst[:n], sign, first, factor)
-			}
-			if w.q >= 0 && derivatives[w.q] != nil {
-				setProduct(derivatives[w.q][:n], 1, e.column(w.second, n), factor)
-			}
+		dst = dst[:n]
+		factor := e.columnIfAny(d.factor, n)
+		switch v := values[d.parameter]; d.rule {
+		case resistance:
+			setScaled(dst, v, factor)
+		case conductance:
+			setScaled(dst, -1/v, factor)
+		case rising:
+			setTurned(dst, v, e.grid.omega[from:to], factor)
+		case falling:
+			setTurned(dst, 1/v, e.grid.inverse[from:to], factor)
+		case product:
+			setProduct(dst, 1, e.column(d.element, n), factor)
+		case minusProduct:
+			setProduct(dst, -1, e.column(d.element, n), factor)
 		}
 	}
 }

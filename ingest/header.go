@@ -1,8 +1,10 @@
 package ingest
 
 import (
+	"slices"
 	"strings"
 	"unicode"
+	"unicode/utf8"
 )
 
 // heading is what a column's header says.
@@ -30,15 +32,15 @@ const maxHeading = 200
 func readHeading(text string) heading {
 	h := heading{text: strings.TrimSpace(text)}
 	t := strings.ReplaceAll(h.text, `""`, `"`)
-	t = tidyHeader.Replace(strings.Trim(t, `"`))
-	t = strings.TrimSpace(t)
+	t = strings.TrimSpace(tidy(strings.Trim(t, `"`)))
 	if t == "" || len(t) > maxHeading {
 		return h
 	}
 	if h.identify(t) {
 		return h
 	}
-	for _, cut := range unitCuts(t) {
+	var cuts [16]unitCut
+	for _, cut := range unitCuts(t, cuts[:0]) {
 		u, ok, ambiguous := readUnit(cut.unit)
 		if !ok {
 			continue
@@ -69,14 +71,23 @@ func readHeading(text string) heading {
 var tidyHeader = strings.NewReplacer("\u03bc", "µ", "\u2126", "Ω", "’", "'", "‘", "'", "′", "'", "″", "''", "”", "''",
 	"\u2212", "-", "ϕ", "φ", "Φ", "φ", "ϑ", "θ", "Θ", "θ", "\u00a0", " ", "\u2009", " ", "\ufeff", "", "\n", " ", "\r", " ")
 
+// tidy writes the variants of a sign in one way. Most headers have none.
+func tidy(t string) string {
+	for i := 0; i < len(t); i++ {
+		if c := t[i]; c >= utf8.RuneSelf || c == '\n' || c == '\r' {
+			return tidyHeader.Replace(t)
+		}
+	}
+	return t
+}
+
 // unitCut is one way to take a header apart.
 type unitCut struct{ name, unit string }
 
 // unitCuts lists the places where people put units: in brackets, behind a
-// slash, a comma, an underscore, "in", or the last blank.
-func unitCuts(t string) []unitCut {
-	var cuts []unitCut
-	for _, b := range []string{"()", "[]", "{}", "<>"} {
+// slash, a comma, an underscore, "in", or the last blank. They are appended to cuts.
+func unitCuts(t string, cuts []unitCut) []unitCut {
+	for _, b := range [...]string{"()", "[]", "{}", "<>"} {
 		i := strings.LastIndexByte(t, b[0])
 		if i < 0 {
 			continue
@@ -85,7 +96,7 @@ func unitCuts(t string) []unitCut {
 			cuts = append(cuts, unitCut{t[:i] + t[i+j+1:], t[i+1 : i+j]})
 		}
 	}
-	for _, sep := range []string{" / ", "/", ",", " in ", "_", ":", " ", "-", "."} {
+	for _, sep := range [...]string{" / ", "/", ",", " in ", "_", ":", " ", "-", "."} {
 		if i := strings.LastIndex(t, sep); i > 0 {
 			cuts = append(cuts, unitCut{t[:i], strings.TrimSpace(t[i+len(sep):])})
 		}
@@ -140,7 +151,7 @@ func dimFits(want, got string) bool {
 func (h *heading) identify(name string) bool {
 	name = strings.TrimSpace(name)
 	key, negate := squeeze(name)
-	if r, ok := names[key]; ok {
+	if r, ok := namedRole(key); ok {
 		h.name, h.role, h.negate = name, r, negate
 		if negate && r != roleX && r != roleB && r != roleIm && !r.isAngle() {
 			h.role, h.negate = roleNone, false
@@ -158,7 +169,11 @@ func squeeze(name string) (key string, negate bool) {
 	if len(name) > 1 && name[0] == '-' {
 		negate, name = true, name[1:]
 	}
+	if !slices.ContainsFunc([]byte(name), func(c byte) bool { return !('a' <= c && c <= 'z' || '0' <= c && c <= '9') }) {
+		return name, negate
+	}
 	var b strings.Builder
+	b.Grow(len(name))
 	for _, r := range name {
 		switch r {
 		case ' ', '.', '_', '-', '\t', '"', ':', '*', '=', '#':
@@ -178,13 +193,12 @@ func squeeze(name string) (key string, negate bool) {
 // identifyS recognises S-parameter columns: s11 or s21 (or the loss that stands
 // for it) with words for the part of it.
 func (h *heading) identifyS(name string) bool {
-	words := strings.FieldsFunc(strings.ToLower(name), func(r rune) bool {
-		return !(unicode.IsLetter(r) || unicode.IsDigit(r))
-	})
 	port, part := 0, roleS
 	loss := false
-	var stated unit
-	for i, w := range words {
+	angle := ""
+	i := -1
+	for w := range strings.FieldsFuncSeq(strings.ToLower(name), func(r rune) bool { return !(unicode.IsLetter(r) || unicode.IsDigit(r)) }) {
+		i++
 		switch {
 		case len(w) >= 3 && w[0] == 's' && (w[1] == '1' || w[1] == '2') && (w[2] == '1' || w[2] == '2'):
 			port = int(w[1]-'0')*10 + int(w[2]-'0')
@@ -217,16 +231,17 @@ func (h *heading) identifyS(name string) bool {
 			return false
 		}
 		part = p
-		if u, ok, _ := readUnit(w); ok && p == roleSPhase && isAngleDim(u.dim) {
-			stated = u
+		switch w {
+		case "deg", "degrees", "°", "rad":
+			angle = w
 		}
 	}
 	if port == 0 {
 		return false
 	}
 	h.name, h.port, h.role = name, port, part
-	if stated.dim != "" {
-		h.unit = stated
+	if u, ok, _ := readUnit(angle); ok && isAngleDim(u.dim) {
+		h.unit = u
 	}
 	if loss && part != roleSPhase {
 		h.role, h.lossDB = roleSdB, true

@@ -2,6 +2,7 @@ package ingest
 
 import (
 	"fmt"
+	"slices"
 	"strconv"
 	"strings"
 	"unicode"
@@ -86,11 +87,15 @@ func (s *source) cellTexts(l line, dataCells int) ([]string, []span) {
 			cells = commas
 		}
 	}
+	return s.texts(cells), cells
+}
+
+func (s *source) texts(cells []span) []string {
 	texts := make([]string, len(cells))
 	for i, c := range cells {
 		texts[i] = s.cell(c)
 	}
-	return texts, cells
+	return texts
 }
 
 // splitWide cuts at tabs and at two blanks or more.
@@ -168,7 +173,7 @@ func (s *source) tryHeader(i int) (table, bool) {
 		next++
 	}
 	t.first = next
-	if next < len(s.lines) {
+	if next < len(s.lines) && next != data {
 		second := s.uncomment(s.lines[next])
 		texts2, cells2 := s.cellTexts(second, n)
 		if k := s.look(cells2); k.cells >= 1 && k.numbers == 0 && k.letters {
@@ -306,16 +311,28 @@ func (s *source) groupRow(t *table) {
 }
 
 func repeatsRole(cols []heading) bool {
-	seen := map[heading]bool{}
+	type kind struct {
+		role  role
+		port  int
+		label string
+	}
+	var few [16]kind // most tables have no more
+	seen := few[:0]
+	var more map[kind]bool
 	for _, c := range cols {
-		if !c.role.quantity() {
-			continue
-		}
-		k := heading{role: c.role, port: c.port, label: c.label}
-		if seen[k] {
+		k := kind{c.role, c.port, c.label}
+		switch {
+		case !c.role.quantity():
+		case slices.Contains(seen, k) || more[k]:
 			return true
+		case len(seen) < cap(seen):
+			seen = append(seen, k)
+		default:
+			if more == nil {
+				more = map[kind]bool{}
+			}
+			more[k] = true
 		}
-		seen[k] = true
 	}
 	return false
 }

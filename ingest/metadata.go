@@ -33,70 +33,62 @@ type Metadata struct {
 	reference float64
 }
 
-// metadataKeys maps the words before a colon to fields. Common practice, no
-// source.
-var metadataKeys = map[string]func(m *Metadata, value, unit string){}
-
-func init() {
-	add := func(words string, set func(m *Metadata, value, unit string)) {
-		for _, w := range strings.Fields(words) {
-			metadataKeys[w] = set
+// set stores a value under the words before its colon, squeezed; false if they
+// are not known. unit is what they say in brackets. Common practice, no source.
+func (m *Metadata) set(key, value, unit string) bool {
+	switch key {
+	case "part", "partid", "partname", "partno", "partnumber", "dut", "dutid", "dutname", "sample", "samplename", "sampleid", "specimen",
+		"device", "deviceid", "devicename", "component", "componentname", "componentid", "bauteil", "prüfling":
+		m.Part = value
+	case "serial", "serialno", "serialnumber", "serialnr", "sn", "s/n", "dutserial", "partserial", "seriennummer":
+		m.Serial = value
+	case "lot", "lotno", "lotnumber", "lotid", "batch", "batchno", "batchnumber", "batchid", "los", "charge":
+		m.Lot = value
+	case "date", "datetime", "dateandtime", "time", "timestamp", "testdate", "measurementdate", "dateoftest", "datum", "saved", "measured":
+		if m.Date == "" {
+			m.Date = value
+		} else if !strings.Contains(m.Date, value) {
+			m.Date += " " + value
 		}
+	case "testlevel", "level", "osclevel", "oscillatorlevel", "oscillation", "signallevel", "testsignallevel", "testsignal", "aclevel",
+		"acvoltage", "testvoltage", "signalvoltage", "drivelevel", "amplitude", "acamplitude", "excitation", "testcurrent", "osc", "pegel",
+		"messpegel":
+		m.TestLevel = value
+		m.TestLevelV, m.TestLevelA, m.HasTestLevel = voltsOrAmps(value, unit)
+	case "bias", "dcbias", "biasvoltage", "dcbiasvoltage", "dcvoltage", "biaslevel", "dcbiaslevel", "vbias", "ubias", "biascurrent",
+		"dcbiascurrent", "dccurrent", "ibias", "vdc", "idc":
+		m.Bias = value
+		m.BiasV, m.BiasA, m.HasBias = voltsOrAmps(value, unit)
+	case "temperature", "temp", "ambient", "ambienttemperature", "temperatur", "chambertemperature", "t(°c)", "testtemperature":
+		m.Temperature = value
+		t, err := quantity.Parse(value, "°C")
+		if err != nil {
+			var k float64
+			if k, err = quantity.Parse(value, "K"); err == nil {
+				t = k - 273.15
+			}
+		}
+		if err != nil {
+			return true
+		}
+		if unit == "K" && t == scaleOnly(value) {
+			t -= 273.15
+		}
+		m.TemperatureC, m.HasTemperature = t, true
+	case "mode", "function", "measurementmode", "measurementfunction", "measfunction", "measuremode", "parameter", "parameters",
+		"measurementparameter", "measurementparameters", "type", "quantity", "func", "primary", "primaryparameter":
+		if m.mode == "" {
+			m.mode = strings.ToLower(value)
+		}
+	case "z0", "zref", "referenceimpedance", "referenceresistance", "systemimpedance", "refimpedance", "impedancereference",
+		"portimpedance", "portz":
+		if r, err := quantity.Parse(value, "Ω"); err == nil && r > 0 {
+			m.reference = r
+		}
+	default:
+		return false
 	}
-	add("part partid partname partno partnumber dut dutid dutname sample samplename sampleid specimen device deviceid devicename component componentname componentid bauteil prüfling",
-		func(m *Metadata, v, _ string) { m.Part = v })
-	add("serial serialno serialnumber serialnr sn s/n dutserial partserial seriennummer",
-		func(m *Metadata, v, _ string) { m.Serial = v })
-	add("lot lotno lotnumber lotid batch batchno batchnumber batchid los charge",
-		func(m *Metadata, v, _ string) { m.Lot = v })
-	add("date datetime dateandtime time timestamp testdate measurementdate dateoftest datum saved measured",
-		func(m *Metadata, v, _ string) {
-			if m.Date == "" {
-				m.Date = v
-			} else if !strings.Contains(m.Date, v) {
-				m.Date += " " + v
-			}
-		})
-	add("testlevel level osclevel oscillatorlevel oscillation signallevel testsignallevel testsignal aclevel acvoltage testvoltage signalvoltage drivelevel amplitude acamplitude excitation testcurrent osc pegel messpegel",
-		func(m *Metadata, v, unit string) {
-			m.TestLevel = v
-			m.TestLevelV, m.TestLevelA, m.HasTestLevel = voltsOrAmps(v, unit)
-		})
-	add("bias dcbias biasvoltage dcbiasvoltage dcvoltage biaslevel dcbiaslevel vbias ubias biascurrent dcbiascurrent dccurrent ibias vdc idc",
-		func(m *Metadata, v, unit string) {
-			m.Bias = v
-			m.BiasV, m.BiasA, m.HasBias = voltsOrAmps(v, unit)
-		})
-	add("temperature temp ambient ambienttemperature temperatur chambertemperature t(°c) testtemperature",
-		func(m *Metadata, v, unit string) {
-			m.Temperature = v
-			t, err := quantity.Parse(v, "°C")
-			if err != nil {
-				var k float64
-				if k, err = quantity.Parse(v, "K"); err == nil {
-					t = k - 273.15
-				}
-			}
-			switch {
-			case err != nil:
-				return
-			case unit == "K" && t == scaleOnly(v):
-				t -= 273.15
-			}
-			m.TemperatureC, m.HasTemperature = t, true
-		})
-	add("mode function measurementmode measurementfunction measfunction measuremode parameter parameters measurementparameter measurementparameters type quantity func primary primaryparameter",
-		func(m *Metadata, v, _ string) {
-			if m.mode == "" {
-				m.mode = strings.ToLower(v)
-			}
-		})
-	add("z0 zref referenceimpedance referenceresistance systemimpedance refimpedance impedancereference portimpedance portz",
-		func(m *Metadata, v, _ string) {
-			if r, err := quantity.Parse(v, "Ω"); err == nil && r > 0 {
-				m.reference = r
-			}
-		})
+	return true
 }
 
 // scaleOnly is the plain number in a text, to tell whether it had its own unit.
@@ -145,12 +137,7 @@ func (m *Metadata) read(text string) bool {
 		key = key[:i]
 	}
 	word, _ := squeeze(key)
-	set, ok := metadataKeys[word]
-	if !ok {
-		return false
-	}
-	set(m, value, unit)
-	return true
+	return m.set(word, value, unit)
 }
 
 // keyValue cuts a preamble line in two.

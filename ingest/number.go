@@ -96,7 +96,10 @@ var marks = []string{
 
 func isMark(s string) bool {
 	t := strings.Trim(s, " .")
-	if t != "" && (strings.Trim(t, "-") == "" || strings.Trim(t, "*") == "" || strings.Trim(t, "?") == "" || strings.Trim(t, "#") == "" || strings.Trim(t, "—–") == "") {
+	if t == "" {
+		return false
+	}
+	if c := t[0]; c|0x20-'a' >= 26 && (strings.Trim(t, "-") == "" || strings.Trim(t, "*") == "" || strings.Trim(t, "?") == "" || strings.Trim(t, "#") == "" || strings.Trim(t, "—–") == "") {
 		return true
 	}
 	if t = strings.TrimLeft(t, "+-"); len(t) > len("OVERFLOW") {
@@ -193,6 +196,9 @@ func thousands(s string) bool {
 
 // parseComplex reads 1.2-3.4j, 1.2 - j3.4, 1.2-3.4i, (1.2-3.4j) or 5j.
 func parseComplex(s string) (complex128, bool) {
+	if !strings.ContainsAny(s, "ijIJ") {
+		return 0, false
+	}
 	s = strings.TrimSuffix(strings.TrimPrefix(strings.TrimSpace(s), "("), ")")
 	s = strings.ReplaceAll(strings.ReplaceAll(s, " ", ""), "\u2212", "-")
 	if s == "" {

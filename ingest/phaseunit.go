@@ -102,7 +102,7 @@ func thinned(v []float64, most int) []int {
 		return i
 	}
 	step := max(1, (len(v)+most-1)/most)
-	out := make([]int, 0, most+1)
+	out := make([]int, 0, min(len(v), most+1))
 	for i := 0; i < len(v)-1; i += step {
 		out = append(out, at(i))
 	}

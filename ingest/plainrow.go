@@ -14,12 +14,16 @@ import (
 // checks and messages; it never decides anything itself.
 type plainRow struct {
 	delim byte
-	last  int   // last column needed
-	cols  int   // of the header; a row with more is not plain
-	slot  []int // by column: index of the value in a row, −1 if it is not needed
-	exp   []int // by slot
-	never []bool
-	vals  []float64
+	cols  int // of the header; a row with more is not plain
+	cells []plainCell
+	vals  []float64 // of the columns needed
+}
+
+// plainCell is a column up to the last that is needed.
+type plainCell struct {
+	slot          int // index of the value in vals, −1 if it is not needed
+	exp           int
+	neverNegative bool
 }
 
 // newPlainRow returns nil where a plan is not plain.
@@ -27,36 +31,41 @@ func newPlainRow(s *source, p *plan) *plainRow {
 	if len(p.groups) != 1 || p.groups[0].part >= 0 || len(p.also) > 0 || s.delim == blanks || s.decimal != '.' {
 		return nil
 	}
-	pr := &plainRow{delim: s.delim, slot: make([]int, len(p.cols)), cols: len(p.cols)}
+	pr := &plainRow{delim: s.delim, cells: make([]plainCell, len(p.cols)), cols: len(p.cols)}
 	if p.loose {
 		pr.cols = math.MaxInt
 	}
-	for i := range pr.slot {
-		pr.slot[i] = -1
+	for i := range pr.cells {
+		pr.cells[i].slot = -1
 	}
-	for _, c := range append(freqsOf(p), p.need...) {
+	last, slots := 0, 0
+	for n := -1; n < len(p.need); n++ {
+		c := p.groups[0].freq
+		if n >= 0 {
+			c = p.need[n]
+		}
 		switch p.cols[c].role {
 		case roleZ, roleY, roleS:
 			return nil
 		}
-		if pr.slot[c] >= 0 {
+		if pr.cells[c].slot >= 0 {
 			continue
 		}
-		pr.slot[c] = len(pr.exp)
-		pr.exp = append(pr.exp, p.cols[c].unit.exp)
-		pr.never = append(pr.never, p.cols[c].role.neverNegative())
-		pr.last = max(pr.last, c)
+		pr.cells[c] = plainCell{slots, p.cols[c].unit.exp, p.cols[c].role.neverNegative()}
+		slots++
+		last = max(last, c)
 	}
-	pr.vals = make([]float64, len(pr.exp))
+	pr.cells = pr.cells[:last+1]
+	pr.vals = make([]float64, slots)
 	return pr
 }
 
 // read reads a line into vals; false means that the line is not plain.
 func (pr *plainRow) read(text string, l line) bool {
 	i, end := int(l.start), int(l.end)
-	for c := 0; ; c++ {
-		k := pr.slot[c]
-		if k < 0 {
+	for c := range pr.cells {
+		cell := &pr.cells[c]
+		if cell.slot < 0 {
 			if i < end && text[i] == '"' {
 				return false // a delimiter may hide between quotes
 			}
@@ -77,12 +86,12 @@ func (pr *plainRow) read(text string, l line) bool {
 				next = end - i
 			}
 			next += i
-			cell := strings.TrimRight(text[i:next], " ")
-			if cell == "" || cell[0] > '9' || isHex(cell) {
+			number := strings.TrimRight(text[i:next], " ")
+			if number == "" || number[0] > '9' || isHex(number) {
 				return false
 			}
 			var err error
-			if v, err = strconv.ParseFloat(cell, 64); err != nil || !(math.Abs(v) < overload) {
+			if v, err = strconv.ParseFloat(number, 64); err != nil || !(math.Abs(v) < overload) {
 				return false
 			}
 		}
@@ -90,21 +99,22 @@ func (pr *plainRow) read(text string, l line) bool {
 		for i < end && text[i] == ' ' {
 			i++
 		}
-		if v < 0 && pr.never[k] {
+		if v < 0 && cell.neverNegative {
 			return false
 		}
-		if e := pr.exp[k]; e != 0 {
-			v = scale(v, e)
+		if cell.exp != 0 {
+			v = scale(v, cell.exp)
 		}
-		pr.vals[k] = v
-		if c == pr.last {
-			return i >= end || text[i] == pr.delim && c+1+strings.Count(text[i:end], string(rune(pr.delim))) <= pr.cols
+		pr.vals[cell.slot] = v
+		if c < len(pr.cells)-1 {
+			if i >= end || text[i] != pr.delim {
+				return false
+			}
+			i++
 		}
-		if i >= end || text[i] != pr.delim {
-			return false
-		}
-		i++
 	}
+	// What stands behind is not looked at, but must not be too much.
+	return i >= end || text[i] == pr.delim && len(pr.cells)+strings.Count(text[i:end], string(rune(pr.delim))) <= pr.cols
 }
 
 // powers are exact in float64.

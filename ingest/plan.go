@@ -66,9 +66,7 @@ func (s *source) plan(t table, o Options, meta Metadata) (*plan, *Error) {
 	p.applyUnits(o.Units)
 	var first []string
 	if i, cells := s.nextRow(p.first); i >= 0 {
-		for _, c := range cells {
-			first = append(first, s.cell(c))
-		}
+		first = s.texts(cells)
 	}
 	if !p.loose && p.head >= 0 && s.delim == blanks && len(first) != len(p.cols) && len(first) > 0 && looksNumber(first[0], s.decimal) {
 		// Which heading belongs to which column is anybody's guess.
@@ -346,11 +344,13 @@ func (s *source) groupByFreq(p *plan, freqs []int, part int) *Error {
 // groupByLabel: columns that share a label belong together; without labels,
 // columns that repeat the same sequence of roles do.
 func (s *source) groupByLabel(p *plan, freq, part int) *Error {
-	s.labelColumns(p)
+	if countKnown(p.cols) < len(p.cols) {
+		s.labelColumns(p)
+	}
 	if !hasLabels(p.cols) && repeatsRole(p.cols) {
 		numberRepeats(p.cols)
 	}
-	order := []string{}
+	var order []string
 	byLabel := map[string][]int{}
 	for i, c := range p.cols {
 		if !c.role.quantity() || i == freq {
@@ -469,7 +469,7 @@ func splitLabel(text string, words map[string]heading) (heading, string, bool) {
 	if len(text) > maxHeading {
 		return heading{}, "", false
 	}
-	t := tidyHeader.Replace(strings.TrimSpace(text))
+	t := tidy(strings.TrimSpace(text))
 	try := func(word, label string) (heading, string, bool) {
 		label = strings.Trim(label, " _-:.,()[]#")
 		if label == "" || strings.TrimSpace(word) == "" {
@@ -578,7 +578,7 @@ func (s *source) group(p *plan, idx []int, freq, part int, label string) (group,
 	for i := range at {
 		at[i] = -1
 	}
-	ports := map[int]map[role]int{}
+	var ports map[int]map[role]int
 	var portOrder []int
 	others := 0
 	for _, i := range idx {
@@ -587,6 +587,9 @@ func (s *source) group(p *plan, idx []int, freq, part int, label string) (group,
 		case i == freq || !c.role.quantity():
 			continue
 		case c.port != 0:
+			if ports == nil {
+				ports = map[int]map[role]int{}
+			}
 			if ports[c.port] == nil {
 				ports[c.port] = map[role]int{}
 				portOrder = append(portOrder, c.port)

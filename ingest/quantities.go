@@ -1,10 +1,6 @@
 package ingest
 
-import (
-	"fmt"
-	"math"
-	"strings"
-)
+import "math"
 
 // role is what a column holds.
 type role uint8
@@ -193,52 +189,87 @@ func loss(d, c float64) float64 {
 // name of a pair, for messages.
 func (p pair) name() string { return roles[p.a].name + " and " + roles[p.b].name }
 
-// names maps header words to roles. They are written without blanks, dots,
-// underscores and hyphens, in small letters; Greek letters stay. Common
-// practice, no source.
-var names = buildNames(map[role]string{
-	roleFreq: `f freq freqs frequency frequencies frequenz fréquence frequence frecuencia frequencia frequenza
-		testfreq testfrequency sweepfreq sweepfrequency measurementfrequency measfreq hz fhz frq fre`,
-	roleOmega: `omega ω angularfrequency angfreq kreisfrequenz`,
-	rolePart: `part partid partname partlabel serial serialno serialnumber serialnr sn s/n dut dutid dutname sample samplename sampleid
-		specimen specimenid device deviceid component componentid bauteil prüfling`,
-	roleBias:        `bias dcbias biasvoltage dcbiasvoltage dcvoltage vbias ubias vdc biaslevel biascurrent dcbiascurrent ibias idc`,
-	roleTemperature: `temperature temp temperatur ambienttemperature t(°c)`,
-	roleAbsZ: `|z| z zmag magz absz abs(z) |z|mag mag|z| mag(z) magnitude(z) modz mod(z) zmod zabs zmagnitude impedance |impedance| impedancemagnitude
-		magnitudeofimpedance magnitudez impedancemag absimpedance impedanceabs impedanz impedanzbetrag scheinwiderstand impédance impedancia impedanza impedancemodulus`,
-	rolePhase: `theta θ thetaz θz ztheta zθ phasez zphase phase(z) phaseofz arg(z) argz angle(z) anglez zangle ang(z) angz zang ∠z ∠ impedancephase phaseofimpedance
-		impedanceangle θ(z) theta(z) φz zphi phi(z) zdeg zphasedeg impedancephaseangle phaz zpha`,
-	roleR:           `r re(z) rez zre zreal realz real(z) z' resistance zr zreal(z) impedancereal realimpedance zrealpart realpartofz realpartz widerstand wirkwiderstand résistance resistencia`,
-	roleX:           `x im(z) imz zim zimag imagz imag(z) z'' reactance xs zimaginary zimagpart imaginarypartofz imaginaryz impedanceimag imagimpedance reaktanz blindwiderstand réactance reactancia`,
-	roleAbsY:        `|y| y ymag magy absy abs(y) mag(y) ymod yabs admittance |admittance| admittancemagnitude magnitudey admittanz`,
-	rolePhaseY:      `thetay θy ytheta yθ phasey yphase phase(y) phaseofy arg(y) argy angle(y) angley yangle admittancephase φy ∠y`,
-	roleG:           `g conductance re(y) rey yre yreal realy real(y) gp leitwert`,
-	roleB:           `b susceptance im(y) imy yim yimag imagy imag(y) bp`,
-	roleCs:          `cs cser cseries seriesc seriescapacitance capacitanceseries capacitance(series) c(series) cs(c) csc serienkapazität`,
-	roleCp:          `cp cpar cparallel parallelc parallelcapacitance capacitanceparallel capacitance(parallel) c(parallel) parallelkapazität`,
-	roleLs:          `ls lser lseries seriesl seriesinductance inductanceseries inductance(series) l(series) serieninduktivität`,
-	roleLp:          `lp lpar lparallel parallell parallelinductance inductanceparallel inductance(parallel) l(parallel)`,
-	roleRs:          `rs rser rseries seriesr seriesresistance esr equivalentseriesresistance resistance(series) resistanceseries r(series)`,
-	roleRp:          `rp rpar rparallel parallelr parallelresistance epr equivalentparallelresistance resistance(parallel) resistanceparallel r(parallel)`,
-	roleD:           `d df dfactor tand tanδ tandelta tan(δ) tan(delta) tgδ tgd dissipation dissipationfactor dissfactor lossfactor losstangent losstan verlustfaktor`,
-	roleQ:           `q qf qfactor qualityfactor quality güte gütefaktor`,
-	roleMag:         `mag magnitude magn amplitude abs absolute betrag modulus linmag linearmagnitude logmag mg module`,
-	roleAngle:       `phase phaseangle angle ang arg φ phi ph pha phas phasenwinkel winkel argument phaseshift fase`,
-	roleRe:          `re real realpart realteil`,
-	roleIm:          `im imag imaginary imaginarypart imaginärteil imagpart`,
-	roleCapacitance: `c cap capacitance capacity kapazität capacité capacidad cx`,
-	roleInductance:  `l ind inductance induktivität lx`,
-})
-
-func buildNames(words map[role]string) map[string]role {
-	m := make(map[string]role)
-	for r, list := range words {
-		for _, w := range strings.Fields(list) {
-			if old, ok := m[w]; ok {
-				panic(fmt.Sprintf("ingest: header word %q has two roles, %d and %d", w, old, r))
-			}
-			m[w] = r
-		}
+// namedRole is the role that a header word names, false where it names none.
+// The words are written without blanks, dots, underscores and hyphens, in small
+// letters; Greek letters stay. Common practice, no source. (A switch and not a
+// map, which would have to be filled at each start of the program.)
+func namedRole(word string) (role, bool) {
+	switch word {
+	case "f", "freq", "freqs", "frequency", "frequencies", "frequenz", "fréquence", "frequence", "frecuencia", "frequencia", "frequenza",
+		"testfreq", "testfrequency", "sweepfreq", "sweepfrequency", "measurementfrequency", "measfreq", "hz", "fhz", "frq", "fre":
+		return roleFreq, true
+	case "omega", "ω", "angularfrequency", "angfreq", "kreisfrequenz":
+		return roleOmega, true
+	case "part", "partid", "partname", "partlabel", "serial", "serialno", "serialnumber", "serialnr", "sn", "s/n", "dut", "dutid",
+		"dutname", "sample", "samplename", "sampleid", "specimen", "specimenid", "device", "deviceid", "component", "componentid",
+		"bauteil", "prüfling":
+		return rolePart, true
+	case "bias", "dcbias", "biasvoltage", "dcbiasvoltage", "dcvoltage", "vbias", "ubias", "vdc", "biaslevel", "biascurrent",
+		"dcbiascurrent", "ibias", "idc":
+		return roleBias, true
+	case "temperature", "temp", "temperatur", "ambienttemperature", "t(°c)":
+		return roleTemperature, true
+	case "|z|", "z", "zmag", "magz", "absz", "abs(z)", "|z|mag", "mag|z|", "mag(z)", "magnitude(z)", "modz", "mod(z)", "zmod", "zabs",
+		"zmagnitude", "impedance", "|impedance|", "impedancemagnitude", "magnitudeofimpedance", "magnitudez", "impedancemag",
+		"absimpedance", "impedanceabs", "impedanz", "impedanzbetrag", "scheinwiderstand", "impédance", "impedancia", "impedanza",
+		"impedancemodulus":
+		return roleAbsZ, true
+	case "theta", "θ", "thetaz", "θz", "ztheta", "zθ", "phasez", "zphase", "phase(z)", "phaseofz", "arg(z)", "argz", "angle(z)", "anglez",
+		"zangle", "ang(z)", "angz", "zang", "∠z", "∠", "impedancephase", "phaseofimpedance", "impedanceangle", "θ(z)", "theta(z)", "φz",
+		"zphi", "phi(z)", "zdeg", "zphasedeg", "impedancephaseangle", "phaz", "zpha":
+		return rolePhase, true
+	case "r", "re(z)", "rez", "zre", "zreal", "realz", "real(z)", "z'", "resistance", "zr", "zreal(z)", "impedancereal", "realimpedance",
+		"zrealpart", "realpartofz", "realpartz", "widerstand", "wirkwiderstand", "résistance", "resistencia":
+		return roleR, true
+	case "x", "im(z)", "imz", "zim", "zimag", "imagz", "imag(z)", "z''", "reactance", "xs", "zimaginary", "zimagpart", "imaginarypartofz",
+		"imaginaryz", "impedanceimag", "imagimpedance", "reaktanz", "blindwiderstand", "réactance", "reactancia":
+		return roleX, true
+	case "|y|", "y", "ymag", "magy", "absy", "abs(y)", "mag(y)", "ymod", "yabs", "admittance", "|admittance|", "admittancemagnitude",
+		"magnitudey", "admittanz":
+		return roleAbsY, true
+	case "thetay", "θy", "ytheta", "yθ", "phasey", "yphase", "phase(y)", "phaseofy", "arg(y)", "argy", "angle(y)", "angley", "yangle",
+		"admittancephase", "φy", "∠y":
+		return rolePhaseY, true
+	case "g", "conductance", "re(y)", "rey", "yre", "yreal", "realy", "real(y)", "gp", "leitwert":
+		return roleG, true
+	case "b", "susceptance", "im(y)", "imy", "yim", "yimag", "imagy", "imag(y)", "bp":
+		return roleB, true
+	case "cs", "cser", "cseries", "seriesc", "seriescapacitance", "capacitanceseries", "capacitance(series)", "c(series)", "cs(c)", "csc",
+		"serienkapazität":
+		return roleCs, true
+	case "cp", "cpar", "cparallel", "parallelc", "parallelcapacitance", "capacitanceparallel", "capacitance(parallel)", "c(parallel)",
+		"parallelkapazität":
+		return roleCp, true
+	case "ls", "lser", "lseries", "seriesl", "seriesinductance", "inductanceseries", "inductance(series)", "l(series)",
+		"serieninduktivität":
+		return roleLs, true
+	case "lp", "lpar", "lparallel", "parallell", "parallelinductance", "inductanceparallel", "inductance(parallel)", "l(parallel)":
+		return roleLp, true
+	case "rs", "rser", "rseries", "seriesr", "seriesresistance", "esr", "equivalentseriesresistance", "resistance(series)",
+		"resistanceseries", "r(series)":
+		return roleRs, true
+	case "rp", "rpar", "rparallel", "parallelr", "parallelresistance", "epr", "equivalentparallelresistance", "resistance(parallel)",
+		"resistanceparallel", "r(parallel)":
+		return roleRp, true
+	case "d", "df", "dfactor", "tand", "tanδ", "tandelta", "tan(δ)", "tan(delta)", "tgδ", "tgd", "dissipation", "dissipationfactor",
+		"dissfactor", "lossfactor", "losstangent", "losstan", "verlustfaktor":
+		return roleD, true
+	case "q", "qf", "qfactor", "qualityfactor", "quality", "güte", "gütefaktor":
+		return roleQ, true
+	case "mag", "magnitude", "magn", "amplitude", "abs", "absolute", "betrag", "modulus", "linmag", "linearmagnitude", "logmag", "mg",
+		"module":
+		return roleMag, true
+	case "phase", "phaseangle", "angle", "ang", "arg", "φ", "phi", "ph", "pha", "phas", "phasenwinkel", "winkel", "argument", "phaseshift",
+		"fase":
+		return roleAngle, true
+	case "re", "real", "realpart", "realteil":
+		return roleRe, true
+	case "im", "imag", "imaginary", "imaginarypart", "imaginärteil", "imagpart":
+		return roleIm, true
+	case "c", "cap", "capacitance", "capacity", "kapazität", "capacité", "capacidad", "cx":
+		return roleCapacitance, true
+	case "l", "ind", "inductance", "induktivität", "lx":
+		return roleInductance, true
 	}
-	return m
+	return roleNone, false
 }

@@ -70,19 +70,11 @@ func (r *Reading) setPlan(s *source, pl *plan) {
 	if pl.unit >= 0 {
 		r.UnitLine = int(s.lines[pl.unit].num)
 	}
-	used := map[int]bool{}
-	for _, i := range append(freqsOf(pl), pl.need...) {
-		used[i] = true
-	}
 	r.plan = pl
-	compare := map[int]bool{}
-	for _, i := range pl.also {
-		compare[i] = true
-	}
-	r.Columns = nil
+	r.Columns = make([]ColumnReading, 0, len(pl.cols))
 	for i, c := range pl.cols {
 		cr := ColumnReading{Number: i + 1, Header: c.text, Role: roles[c.role].name, Unit: c.unit.text, Part: strings.TrimPrefix(c.label, "\x00"),
-			Used: used[i] || c.role == rolePart, Compare: compare[i]}
+			Used: c.role == rolePart}
 		if c.port != 0 {
 			cr.Role = strings.Replace(cr.Role, "S", fmt.Sprintf("S%d", c.port), 1)
 		}
@@ -90,6 +82,15 @@ func (r *Reading) setPlan(s *source, pl *plan) {
 			cr.Unit = "(" + roles[c.role].dim + ")"
 		}
 		r.Columns = append(r.Columns, cr)
+	}
+	for _, g := range pl.groups {
+		r.Columns[g.freq].Used = true
+	}
+	for _, i := range pl.need {
+		r.Columns[i].Used = true
+	}
+	for _, i := range pl.also {
+		r.Columns[i].Compare = true
 	}
 }
 

@@ -126,6 +126,9 @@ func (s *source) column(l line, cells []span, i int) int {
 
 // split cuts a line into cells, in the given slice's memory.
 func (s *source) split(l line, cells []span) []span {
+	if cells == nil {
+		cells = make([]span, 0, 8)
+	}
 	return s.splitRange(l.start, l.end, cells[:0])
 }
 

@@ -25,22 +25,63 @@ var dims = []string{"Hz", "Ω", "F", "H", "S", "°", "rad", "dB", "%", "V", "A",
 // whose m could be milli or mega.
 func readUnit(text string) (u unit, ok, ambiguous bool) {
 	t := strings.TrimSpace(text)
-	if u, ok := commonUnits[t]; ok {
+	if u, ok := commonUnit(t); ok {
 		return u, true, false
 	}
 	return searchUnit(t)
 }
 
-// commonUnits saves the search for what most headers have.
-var commonUnits = func() map[string]unit {
-	m := map[string]unit{}
-	for _, t := range strings.Fields("Hz kHz MHz GHz Ohm Ω mOhm mΩ kOhm kΩ ohm deg ° rad F µF uF nF pF H mH µH uH nH S mS dB %") {
-		if u, ok, ambiguous := searchUnit(t); ok && !ambiguous {
-			m[t] = u
-		}
+// commonUnit saves the search for what most headers have.
+func commonUnit(t string) (u unit, ok bool) {
+	dim, exp := "", 0
+	switch t {
+	case "Hz", "hz":
+		dim = "Hz"
+	case "kHz", "khz":
+		dim, exp = "Hz", 3
+	case "MHz", "mhz":
+		dim, exp = "Hz", 6
+	case "GHz", "ghz":
+		dim, exp = "Hz", 9
+	case "Ω", "Ohm", "ohm":
+		dim = "Ω"
+	case "mΩ", "mOhm":
+		dim, exp = "Ω", -3
+	case "kΩ", "kOhm":
+		dim, exp = "Ω", 3
+	case "°", "deg":
+		dim = "°"
+	case "rad":
+		dim = "rad"
+	case "F":
+		dim = "F"
+	case "µF", "uF":
+		dim, exp = "F", -6
+	case "nF":
+		dim, exp = "F", -9
+	case "pF":
+		dim, exp = "F", -12
+	case "H":
+		dim = "H"
+	case "mH":
+		dim, exp = "H", -3
+	case "µH", "uH":
+		dim, exp = "H", -6
+	case "nH":
+		dim, exp = "H", -9
+	case "S":
+		dim = "S"
+	case "mS":
+		dim, exp = "S", -3
+	case "dB":
+		dim = "dB"
+	case "%":
+		dim, exp = "1", -2
+	default:
+		return unit{}, false
 	}
-	return m
-}()
+	return unit{t, dim, exp}, true
+}
 
 // searchUnit goes through all units and prefixes.
 func searchUnit(t string) (u unit, ok, ambiguous bool) {

@@ -8,6 +8,7 @@ import (
 	"os"
 	"os/signal"
 	"path/filepath"
+	"slices"
 	"strings"
 	"syscall"
 
@@ -121,59 +122,93 @@ func cause(err error) error {
 // or another output; and, before any work is done, one whose folder does not
 // exist.
 func distinct(outputs map[string]string, inputs []string) error {
-	type known struct{ id, what string }
-	var taken []known
-	if len(outputs) > 0 {
-		for _, in := range filesOf(inputs) {
-			taken = append(taken, known{in, "an input"})
-		}
+	type known struct {
+		place
+		flag string
 	}
+	var taken []known
 	for _, flag := range sortedKeys(outputs) {
 		path := outputs[flag]
 		if path == "-" || path == "" {
 			continue // standard output
 		}
-		info, _ := os.Stat(path)
-		id := identity(path)
-		for _, t := range taken {
-			same := t.id == id
-			if !same && info != nil && info.Mode().IsRegular() {
-				other, err := os.Stat(t.id) // hard links, and systems that don't tell letters' case
-				same = err == nil && os.SameFile(info, other)
-			}
-			if same {
-				return usagef("%s: expected a file of its own, found %q, which is also %s", flag, path, t.what)
-			}
+		at := placeOf(path)
+		other := ""
+		if at.isAmong(inputs) {
+			other = "an input"
+		} else if i := slices.IndexFunc(taken, func(k known) bool { return k.is(at) }); i >= 0 {
+			other = "the file of " + taken[i].flag
 		}
-		taken = append(taken, known{id, "the file of " + flag})
+		if other != "" {
+			return usagef("%s: expected a file of its own, found %q, which is also %s", flag, path, other)
+		}
+		taken = append(taken, known{at, flag})
 		folder := filepath.Dir(followed(path))
-		if at, err := os.Stat(folder); err != nil {
+		if info, err := os.Stat(folder); err != nil {
 			return usagef("%s: cannot write %s: %w", flag, path, cause(err))
-		} else if !at.IsDir() {
+		} else if !info.IsDir() {
 			return usagef("%s: cannot write %s: %s is not a folder", flag, path, folder)
 		}
-		if info != nil && info.IsDir() {
+		if at.info != nil && at.info.IsDir() {
 			return usagef("%s: expected the name of a file, found the folder %q", flag, path)
 		}
 	}
 	return nil
 }
 
-// filesOf returns the identities of the files that inputs stand for.
+// place is where a path leads.
+type place struct {
+	id   string      // see identity
+	info os.FileInfo // nil if there is nothing yet
+}
+
+func placeOf(path string) place {
+	id := identity(path)
+	info, _ := os.Stat(id)
+	return place{id, info}
+}
+
+func (p place) isFile() bool { return p.info != nil && p.info.Mode().IsRegular() }
+
+// is tells whether two places are one, by whatever names: there are hard links,
+// and systems that don't tell letters' case.
+func (p place) is(other place) bool {
+	return p.id == other.id || p.isFile() && other.isFile() && os.SameFile(p.info, other.info)
+}
+
+// isAmong tells whether a place is one of the inputs. Of thousands of them no
+// more is asked than it takes: a place where nothing is yet can be no file that
+// exists, as those in a folder do.
+func (p place) isAmong(inputs []string) bool {
+	if !p.isFile() {
+		return slices.ContainsFunc(inputs, func(in string) bool {
+			if _, err := os.Stat(in); err == nil && p.info == nil {
+				return false
+			}
+			return identity(in) == p.id
+		})
+	}
+	return slices.ContainsFunc(filesOf(inputs), func(in string) bool {
+		info, err := os.Stat(in)
+		return err == nil && os.SameFile(info, p.info)
+	})
+}
+
+// filesOf returns the files that inputs stand for.
 func filesOf(inputs []string) []string {
 	found, err := ingest.Find(inputs)
 	if err != nil {
 		return nil // it is told when the inputs are read
 	}
-	var ids []string
+	var files []string
 	for _, in := range found {
-		ids = append(ids, identity(in.Path))
+		files = append(files, in.Path)
 		// The magnitude and the phase of one sweep are two files.
 		if one, other, ok := strings.Cut(in.Path, "+"); ok {
-			ids = append(ids, identity(one), identity(other))
+			files = append(files, one, other)
 		}
 	}
-	return ids
+	return files
 }
 
 // identity returns a name that is the same for all ways to write a path.

@@ -25,6 +25,21 @@ type fitted struct {
 	err      error         // nil unless it failed
 	input    int           // the index of its input
 	held     *held         // where --json-out holds it from an earlier run
+
+	line    []byte // the record in JSON, where an output wants it
+	lineErr error
+}
+
+// usualLine is the room for a line of JSON; most take some 13 kB.
+const usualLine = 16 << 10
+
+// encoded adds the line of JSON that the outputs want. It is called where the
+// fits are made, in parallel: what is done in order is writing alone.
+func (b *batch) encoded(r fitted) fitted {
+	if b.streaming || b.store != nil && r.held == nil {
+		r.line, r.lineErr = report.AppendJSON(make([]byte, 0, usualLine), r.record)
+	}
+	return r
 }
 
 // batch fits all sweeps of the inputs and emits them in the order of the
@@ -54,7 +69,7 @@ func (f *fitFlags) batchLots(lots []lot, s streams, emit func(fitted) error) err
 		defer b.store.Close()
 		b.complete = b.resume && b.holds(lots)
 	}
-	for _, l := range joinSingles(lots) {
+	for _, l := range lots {
 		if err := b.lot(l, total); err != nil {
 			return err
 		}
@@ -80,21 +95,6 @@ func (f *fitFlags) batchLots(lots []lot, s streams, emit func(fitted) error) err
 		fmt.Fprintf(s.err, "realpart: %d of %d sweeps failed\n", failed, b.sweeps)
 	}
 	return &exitError{code: b.code}
-}
-
-// joinSingles puts neighbouring inputs that are no lots together, so that they
-// are fitted in parallel.
-func joinSingles(lots []lot) []lot {
-	var out []lot
-	for _, l := range lots {
-		if n := len(out); n > 0 && !l.one && !out[n-1].one {
-			joined := append(out[n-1].inputs[:len(out[n-1].inputs):len(out[n-1].inputs)], l.inputs...)
-			out[n-1] = lot{inputs: joined}
-		} else {
-			out = append(out, l)
-		}
-	}
-	return out
 }
 
 // batch is the state of a run.
@@ -132,13 +132,13 @@ func (b *batch) lot(l lot, total int) error {
 			bar.grow(len(sweeps) - 1)
 			if err != nil {
 				bar.add()
-				return []fitted{failed(report.Sweep{File: in.Display, Part: partOf(in.Display), Lot: in.Lot}, err)}
+				return []fitted{b.encoded(failed(report.Sweep{File: in.Display, Part: partOf(in.Display), Lot: in.Lot}, err))}
 			}
 			var trials []*fit.Trial
 			var choice *fit.LotChoice
 			if found != nil {
 				if trials, err = found.at(i, sweeps); err != nil {
-					return []fitted{failed(describe(sweeps[0]), fmt.Errorf("%s: %w", in.Display, err))}
+					return []fitted{b.encoded(failed(describe(sweeps[0]), fmt.Errorf("%s: %w", in.Display, err)))}
 				}
 				choice = found.choice
 			}
@@ -166,6 +166,9 @@ func (b *batch) lot(l lot, total int) error {
 
 // take hands a result on, and notes its failure.
 func (b *batch) take(r fitted) error {
+	if r.lineErr != nil {
+		return r.lineErr
+	}
 	switch {
 	case r.err != nil:
 		b.code = max(b.code, exitCode(r.err))
@@ -208,7 +211,7 @@ func (b *batch) fitSweeps(sweeps []*ingest.Sweep, trials []*fit.Trial, choice *f
 			if i < len(trials) {
 				trial = trials[i]
 			}
-			return b.fitSweep(sweeps[i], trial, choice, len(sweeps) > 1)
+			return b.encoded(b.fitSweep(sweeps[i], trial, choice, len(sweeps) > 1))
 		},
 		func(_ int, r fitted) error {
 			out = append(out, r)
@@ -277,18 +280,20 @@ func describe(sweep *ingest.Sweep) report.Sweep {
 	return who
 }
 
-// metadata names what a file says of the measurement.
+// metadata names what a file says of the measurement; nil where it says
+// nothing.
 func metadata(m ingest.Metadata) map[string]string {
-	out := map[string]string{}
-	for name, text := range map[string]string{
-		"serial": m.Serial, "date": m.Date, "test level": m.TestLevel, "bias": m.Bias, "temperature": m.Temperature,
+	var out map[string]string
+	for _, entry := range [...]struct{ name, text string }{
+		{"serial", m.Serial}, {"date", m.Date}, {"test level", m.TestLevel}, {"bias", m.Bias}, {"temperature", m.Temperature},
 	} {
-		if text != "" {
-			out[name] = text
+		if entry.text == "" {
+			continue
 		}
-	}
-	if len(out) == 0 {
-		return nil
+		if out == nil {
+			out = map[string]string{}
+		}
+		out[entry.name] = entry.text
 	}
 	return out
 }

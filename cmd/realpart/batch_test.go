@@ -196,7 +196,7 @@ func TestBatchLots(t *testing.T) {
 	inputs := []ingest.Input{in("a", ""), in("b", ""), in("h/1", "h"), in("h/2", "h"), in("o/1", "o"), in("c", ""), in("x", ""), in("y", "z")}
 	f.listed = 2
 	var got []string
-	for _, l := range joinSingles(f.lots(inputs)) {
+	for _, l := range f.lots(inputs) {
 		var names []string
 		for _, in := range l.inputs {
 			names = append(names, in.Path)

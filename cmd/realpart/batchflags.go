@@ -120,28 +120,34 @@ func readList(name string, stdin io.Reader) ([]string, error) {
 }
 
 // lot is a run of inputs that get one circuit: a folder, or what --files-from
-// lists. Other inputs stand for themselves; a file with several parts is a lot
-// too, which is known only when it is read.
+// lists; or one of inputs that stand for themselves. A file with several parts
+// is a lot too, which is known only when it is read.
 type lot struct {
 	inputs []ingest.Input
 	one    bool // one circuit for all
 }
 
-// lots groups inputs.
+// lots groups inputs. The lots share their memory.
 func (f *fitFlags) lots(inputs []ingest.Input) []lot {
-	var out []lot
+	type group struct {
+		listed bool
+		folder string
+	}
 	list := len(inputs) - f.listed
-	for i, in := range inputs {
-		one := i >= list || in.Lot != ""
-		if i > 0 {
-			last := &out[len(out)-1]
-			same := i > list || i < list && inputs[i-1].Lot == in.Lot
-			if last.one == one && same {
-				last.inputs = append(last.inputs, in)
-				continue
-			}
+	of := func(i int) group {
+		if i >= list {
+			return group{listed: true}
 		}
-		out = append(out, lot{[]ingest.Input{in}, one})
+		return group{folder: inputs[i].Lot}
+	}
+	var out []lot
+	for from := 0; from < len(inputs); {
+		to := from + 1
+		for to < len(inputs) && of(to) == of(from) {
+			to++
+		}
+		out = append(out, lot{inputs[from:to:to], of(from) != group{}})
+		from = to
 	}
 	return out
 }

@@ -197,7 +197,8 @@ func (o *fitOutputs) run(f *fitFlags, inputs []ingest.Input, s streams) error {
 			shown = append(shown, k)
 		}
 		if o.json {
-			return report.WriteJSON(s.out, r.record)
+			_, err := s.out.Write(r.line)
+			return err
 		}
 		return nil
 	})

@@ -25,19 +25,13 @@ type store struct {
 	held     map[string]held // from an earlier run
 	order    []span          // of the lines of this run, in the order of the inputs
 	plain    bool            // a pipe or device: lines only go there
+	line     []byte          // of add
 }
 
 // held is a record that the file has from an earlier run.
 type held struct {
 	span
 	circuit string // expression
-}
-
-// storedLine is a line of the file: the record and the digest of the settings
-// that it was made with.
-type storedLine struct {
-	*report.Fit
-	Settings string `json:"settings"`
 }
 
 func openStore(path, settings string, resume bool) (*store, error) {
@@ -100,25 +94,25 @@ func (s *store) load() error {
 
 func key(sha256, part string) string { return sha256 + " " + part }
 
-// add writes the line of a result, unless the file holds it.
+// add writes the line of a result and the digest of the settings that it was
+// made with, unless the file holds it.
 func (s *store) add(r fitted) error {
 	if r.held != nil {
 		s.order = append(s.order, r.held.span)
 		return nil
 	}
-	var line bytes.Buffer
-	e := json.NewEncoder(&line)
-	e.SetEscapeHTML(false)
-	if err := e.Encode(storedLine{r.record, s.settings}); err != nil {
-		return fmt.Errorf("the record of %s: %w", r.record.Sweep.File, err)
-	}
+	// The line is the record with one member more.
+	s.line = append(s.line[:0], bytes.TrimSuffix(r.line, []byte("}\n"))...)
+	s.line = append(s.line, `,"settings":"`...)
+	s.line = append(s.line, s.settings...) // hexadecimal digits
+	s.line = append(s.line, "\"}\n"...)
 	var err error
 	if s.plain {
-		_, err = s.file.Write(line.Bytes())
+		_, err = s.file.Write(s.line)
 	} else {
-		_, err = s.file.WriteAt(line.Bytes(), s.size)
-		s.order = append(s.order, span{s.size, int64(line.Len())})
-		s.size += int64(line.Len())
+		_, err = s.file.WriteAt(s.line, s.size)
+		s.order = append(s.order, span{s.size, int64(len(s.line))})
+		s.size += int64(len(s.line))
 	}
 	if err != nil {
 		return fmt.Errorf("cannot write %s: %w", s.path, cause(err))

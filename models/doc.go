@@ -11,11 +11,14 @@
 // insulation resistance across the capacitance. [Parse] reads an expression,
 // [Lookup] finds a circuit of the library by name.
 //
-// [Circuit.NewEvaluator] compiles a circuit for a set of frequencies. Its
-// [Evaluator.Jacobian] gives the impedance Z(jω) in ohms and all derivatives
-// ∂Z/∂x in one pass up the tree and one pass down, where x is the unknown a
-// fit works with: ln p for every parameter but an exponent, for which it is
-// logit n = ln(n/(1−n)) (see [Scale]).
+// A circuit is compiled once, when it is parsed. [Circuit.NewEvaluator]
+// evaluates it at a set of frequencies: [Evaluator.Jacobian] gives the
+// impedance Z(jω) in ohms and all derivatives ∂Z/∂x in one pass up the tree and
+// one pass down, where x is the unknown a fit works with: ln p for every
+// parameter but an exponent, for which it is logit n = ln(n/(1−n)) (see
+// [Scale]). Who evaluates many circuits at the frequencies of one sweep makes a
+// [Grid] once, moves an evaluator from circuit to circuit with [Evaluator.Use],
+// and takes [BlockSize] frequencies at a time with [Evaluator.Block].
 //
 // [Figures] and [Circuit.Resonances] turn the impedance into what data
 // sheets state: ESR, C_s, L_s, D, Q, self-resonant frequencies.

@@ -12,9 +12,9 @@ import (
 type Evaluator struct {
 	circuit *Circuit
 	grid    *Grid
-	own     Grid           // of SetFrequencies
-	scratch []complex128   // columns of BlockSize
-	window  [][]complex128 // derivatives of a block, for Jacobian
+	own     Grid                    // of SetFrequencies
+	scratch [][BlockSize]complex128 // the program's columns
+	window  [][]complex128          // derivatives of a block, for Jacobian
 }
 
 // NewEvaluator returns an evaluator of the circuit at the given frequencies in
@@ -30,10 +30,9 @@ func (c *Circuit) NewEvaluator(freq []float64) *Evaluator {
 // allocates only if the circuit needs more memory than any before.
 func (e *Evaluator) Use(c *Circuit, g *Grid) {
 	e.circuit, e.grid = c, g
-	if n := c.program.columns * BlockSize; cap(e.scratch) < n {
-		e.scratch = make([]complex128, n)
+	if n := c.program.columns; len(e.scratch) < n {
+		e.scratch = make([][BlockSize]complex128, n)
 	}
-	e.scratch = e.scratch[:cap(e.scratch)]
 	if n := len(c.parameters); cap(e.window) < n {
 		e.window = make([][]complex128, n)
 	}
@@ -126,7 +125,7 @@ func (e *Evaluator) Block(from, to int, values []float64, z []complex128, deriva
 
 // column returns a column of scratch memory, for n frequencies.
 func (e *Evaluator) column(i, n int) []complex128 {
-	return e.scratch[i*BlockSize:][:n]
+	return e.scratch[i][:n]
 }
 
 // columnIfAny is column, and nil for none.

@@ -264,9 +264,9 @@ func TestIdealResonanceStaysFinite(t *testing.T) {
 		omega := 2 * math.Pi * f
 		rest := func(l, c float64) float64 {
 			if parallel {
-				return c*omega - 1/l*(1/omega)
+				return float64(c*omega) - float64(1/l*(1/omega))
 			}
-			return l*omega - 1/c*(1/omega)
+			return float64(l*omega) - float64(1/c*(1/omega))
 		}
 		l = reactance / omega
 		c = 1 / (omega * (omega * l))

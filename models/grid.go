@@ -5,8 +5,9 @@ import (
 	"math"
 )
 
-// BlockSize is the number of frequencies evaluated together. A group of a
-// circuit needs two complex numbers a frequency, so that ten groups stay
+// BlockSize is the largest number of frequencies evaluated together. A series
+// or parallel group of a circuit needs two complex numbers a frequency, and
+// each derivative one, so that all of five groups and ten parameters stays
 // within 20 KB, which fits the first-level cache of any current processor.
 const BlockSize = 64
 

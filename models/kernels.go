@@ -6,6 +6,9 @@ import "math"
 // first, which frees the loops of bounds checks. They are kept out of their
 // callers because a loop of its own has all registers to itself, which is
 // worth a factor of two. In each, dst may be one of the operands.
+//
+// The conversions to float64 keep processors that can from fusing a product
+// with the sum: the reactances of an ideal resonance then cancel everywhere.
 
 // setImmittance sets dst = constant + j(rising·ω + falling/ω) + parts. Nil parts
 // are 0.
@@ -16,13 +19,13 @@ func setImmittance(dst, parts []complex128, constant, rising float64, omega []fl
 	dst, inverse = dst[:n], inverse[:n]
 	if parts == nil {
 		for k := range dst {
-			dst[k] = complex(constant, rising*omega[k]+falling*inverse[k])
+			dst[k] = complex(constant, float64(rising*omega[k])+float64(falling*inverse[k]))
 		}
 		return
 	}
 	parts = parts[:n]
 	for k := range dst {
-		dst[k] = complex(constant+real(parts[k]), rising*omega[k]+falling*inverse[k]+imag(parts[k]))
+		dst[k] = complex(constant+real(parts[k]), float64(rising*omega[k])+float64(falling*inverse[k])+imag(parts[k]))
 	}
 }
 
@@ -42,6 +45,10 @@ func setReciprocal(dst, parts []complex128, constant, rising float64, omega []fl
 	}
 }
 
+// minSquare and maxSquare bound the squares of magnitudes from which a
+// reciprocal can be formed without care for the range of a float64.
+const minSquare, maxSquare = 1e-290, 1e290
+
 // setOrdinary is setReciprocal up to the first number whose square may leave
 // the range of a float64. It returns the place of that number, which it leaves
 // in dst, or the length.
@@ -53,7 +60,7 @@ func setOrdinary(dst, parts []complex128, constant, rising float64, omega []floa
 	if parts == nil {
 		square := constant * constant
 		for k := range dst {
-			im := rising*omega[k] + falling*inverse[k]
+			im := float64(rising*omega[k]) + float64(falling*inverse[k])
 			d := square + im*im
 			if !(d > minSquare && d < maxSquare) {
 				dst[k] = complex(constant, im)
@@ -67,7 +74,7 @@ func setOrdinary(dst, parts []complex128, constant, rising float64, omega []floa
 	parts = parts[:n]
 	for k := range dst {
 		re := constant + real(parts[k])
-		im := rising*omega[k] + falling*inverse[k] + imag(parts[k])
+		im := float64(rising*omega[k]) + float64(falling*inverse[k]) + imag(parts[k])
 		d := re*re + im*im
 		if !(d > minSquare && d < maxSquare) {
 			dst[k] = complex(re, im)
@@ -185,5 +192,3 @@ func reciprocal(z complex128) complex128 {
 	d := 1 / (re*re + im*im) / s
 	return complex(re*d, -im*d)
 }
-
-const minSquare, maxSquare = 1e-290, 1e290

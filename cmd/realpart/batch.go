@@ -10,6 +10,7 @@ import (
 	"path"
 	"path/filepath"
 	"strings"
+	"sync"
 
 	"realpart/fit"
 	"realpart/ingest"
@@ -61,6 +62,7 @@ func (f *fitFlags) batchLots(lots []lot, s streams, emit func(fitted) error) err
 		total += len(l.inputs)
 	}
 	b := &batch{fitFlags: f, s: s, emit: emit}
+	b.expect(total)
 	if f.jsonOut != "" {
 		var err error
 		if b.store, err = openStore(f.jsonOut, f.settings(), f.resume); err != nil {
@@ -110,6 +112,29 @@ type batch struct {
 	code     int
 
 	sweeps, failedInputs int
+
+	slackOnce sync.Once
+	slack     []byte // see expect
+}
+
+// A batch of manySweeps or more gets slackBytes of slack.
+const (
+	manySweeps = 32
+	slackBytes = 16 << 20
+)
+
+// expect prepares for a number of sweeps. The garbage collector runs when the
+// heap has grown by as much as is in use; that is 3 MB here for any number of
+// sweeps, each of which leaves a tenth of it, so that every seventh part of the
+// time went into collections. A block that counts as in use lets it run every
+// 16 MB more. Nothing is ever written to the block, so that it takes addresses
+// and no memory. (A higher percentage of growth would do the same for a small
+// heap but let the large one of a big file grow by several times its size; and
+// for a few sweeps the block costs more than it saves.)
+func (b *batch) expect(sweeps int) {
+	if sweeps >= manySweeps {
+		b.slackOnce.Do(func() { b.slack = make([]byte, slackBytes) })
+	}
 }
 
 // lot fits the inputs of a lot, or inputs that are none.
@@ -188,6 +213,7 @@ func (b *batch) take(r fitted) error {
 // fitSweeps fits the sweeps of one input. Several without a lot's choice are
 // a lot of their own.
 func (b *batch) fitSweeps(sweeps []*ingest.Sweep, trials []*fit.Trial, choice *fit.LotChoice, jobs int, bar *bar) []fitted {
+	b.expect(len(sweeps))
 	if choice == nil && b.chooses() && len(sweeps) > 1 && !b.complete {
 		tally := new(fit.Tally)
 		trials = make([]*fit.Trial, len(sweeps))

@@ -4,6 +4,7 @@ import (
 	"cmp"
 	"math"
 	"slices"
+	"sync"
 
 	"gonum.org/v1/gonum/stat/distuv"
 
@@ -256,8 +257,10 @@ func New(s Sweep, a *fit.Analysis, o Options) *Fit {
 	if len(at) == 0 {
 		at = DefaultAt(s.FMin, s.FMax)
 	}
+	names := models.Figures()
+	f.Figures = make([]Figure, 0, len(at)*len(names))
 	for _, freq := range at {
-		for _, name := range models.Figures() {
+		for _, name := range names {
 			v := r.Figure(name, freq)
 			if finite(v.Value) == nil {
 				continue
@@ -371,5 +374,24 @@ func halfWidth95(scatter, meter float64, nu int) float64 {
 	if effective > 1e6 { // Student's t is normal to 1e-6
 		return distuv.UnitNormal.Quantile(0.975) * u
 	}
-	return distuv.StudentsT{Sigma: 1, Nu: effective}.Quantile(0.975) * u
+	return studentQuantile(effective) * u
 }
+
+// studentQuantile is the 97.5 % quantile of Student's t. Those of whole degrees
+// of freedom are kept: without a stated accuracy every sweep of a lot asks for
+// the same one, and it takes some tens of microseconds.
+func studentQuantile(nu float64) float64 {
+	whole := nu == math.Trunc(nu)
+	if whole {
+		if t, ok := quantiles.Load(nu); ok {
+			return t.(float64)
+		}
+	}
+	t := distuv.StudentsT{Sigma: 1, Nu: nu}.Quantile(0.975)
+	if whole {
+		quantiles.Store(nu, t)
+	}
+	return t
+}
+
+var quantiles sync.Map // of studentQuantile, by the degrees of freedom

@@ -1,7 +1,6 @@
 package fit
 
 import (
-	"errors"
 	"fmt"
 	"math"
 	"slices"
@@ -105,6 +104,7 @@ func Analyse(freq []float64, z []complex128, request Request) (*Analysis, error)
 // finish adds to an analysis whose result is chosen what the sweep cannot
 // tell, what was asked for, and the warnings.
 func (a *Analysis) finish(freq []float64, z []complex128, request Request, settings *Settings) (*Analysis, error) {
+	a.Result.testElements()
 	if err := a.Result.bound(); err != nil {
 		return nil, err
 	}
@@ -153,25 +153,40 @@ func (a *Analysis) advise(parameter string) error {
 
 // fitAll fits the circuits. It fails only if none could be fitted.
 func (a *Analysis) fitAll(freq []float64, z []complex128, tried []models.Model, settings *Settings) error {
+	s := settings.resolve()
+	var pts *points
 	var first error
-	for _, m := range tried {
+	problems := make([]*problem, len(tried))
+	for i, m := range tried {
 		c := Candidate{Name: m.Name, Circuit: m.Circuit, AICc: math.NaN()}
-		r, err := Fit(freq, z, m.Circuit, settings)
+		err := s.check(freq, m.Circuit)
+		if err == nil && pts == nil {
+			pts, err = s.points(freq, z)
+		}
 		switch {
-		case err != nil:
-			var input *InputError
-			if !errors.As(err, &input) {
-				return err
-			}
-			if first == nil {
-				first = err
-			}
-			c.Reason = "not fitted: " + err.Error()
+		case err == nil:
+			problems[i] = newProblem(m.Circuit, pts, s.Weight, s)
+		case first == nil:
+			first = err
+			fallthrough
 		default:
-			c.Result = r
-			c.Reason, c.sound = r.soundness()
+			c.Reason = "not fitted: " + err.Error()
 		}
 		a.Candidates = append(a.Candidates, c)
+	}
+	fit := each
+	if s.Weight == Relative && !s.Robust && len(s.Start) == 0 && len(tried) > 1 {
+		fit = race
+	}
+	outcomes, err := fit(problems)
+	if err != nil {
+		return err
+	}
+	for i, o := range outcomes {
+		if o != nil {
+			c := &a.Candidates[i]
+			c.Result, c.Reason, c.sound = o.result, o.reason, o.sound
+		}
 	}
 	a.compare()
 	if !slices.ContainsFunc(a.Candidates, func(c Candidate) bool { return c.Result != nil }) {
@@ -251,14 +266,18 @@ func (r *Result) soundness() (string, bool) {
 	if !r.Status.Converged() {
 		return fmt.Sprintf("did not converge (%s)", r.Reason), false
 	}
-	r.testElements()
-	for _, p := range r.Parameters {
-		if p.Determined {
-			continue
+	// The tests cost more fits, and one reason is enough.
+	for tested := false; ; tested = true {
+		for _, p := range r.Parameters {
+			if !p.Determined {
+				return p.Name + " is not determined: " + p.Why, false
+			}
 		}
-		return p.Name + " is not determined: " + p.Why, false
+		if tested {
+			return "", true
+		}
+		r.testElements()
 	}
-	return "", true
 }
 
 // similarAICc is the difference of the criterion below which two circuits

@@ -22,6 +22,10 @@ const clearlySeen = 0.1
 // is not clearly seen. An element without which the circuit is not worse by
 // an F test at 1 % is not determined.
 func (r *Result) testElements() {
+	if r.tested || !r.Status.Converged() {
+		return
+	}
+	r.tested = true
 	for c, i := range r.Free {
 		q := &r.Parameters[i]
 		if !q.Determined || q.Scale != models.LogScale || math.Sqrt(r.Covariance.At(c, c)) < clearlySeen {

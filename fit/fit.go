@@ -119,6 +119,7 @@ type Result struct {
 
 	problem *problem
 	x       []float64
+	tested  bool // by testElements
 	// extremes holds unknowns at the limits of profiled parameters: other
 	// circuits that the sweep allows, by which figures take their share of
 	// what is not determined.
@@ -167,13 +168,7 @@ func Fit(freq []float64, z []complex128, c *models.Circuit, settings *Settings) 
 	if len(freq) != len(z) {
 		panic(fmt.Sprintf("fit: %d frequencies for %d impedances", len(freq), len(z)))
 	}
-	var s Settings
-	if settings != nil {
-		s = *settings
-	}
-	if s.Weight == "" {
-		s.Weight = Relative
-	}
+	s := settings.resolve()
 	if err := s.check(freq, c); err != nil {
 		return nil, err
 	}
@@ -181,25 +176,44 @@ func Fit(freq []float64, z []complex128, c *models.Circuit, settings *Settings) 
 	if err != nil {
 		return nil, err
 	}
-	p := newProblem(c, pts, s.Weight, &s)
-	if len(p.free) == 0 {
-		return evaluate(p, &s, nil, &lm.Result{Status: lm.GradientConvergence, Reason: "all parameters are fixed"}), nil
-	}
-	solution, err := p.solve(&s)
+	p := newProblem(c, pts, s.Weight, s)
+	solution, err := p.solve()
 	if err != nil {
 		return nil, err
 	}
+	return p.complete(solution)
+}
+
+// resolve returns the settings with the defaults filled in.
+func (s *Settings) resolve() *Settings {
+	var resolved Settings
+	if s != nil {
+		resolved = *s
+	}
+	if resolved.Weight == "" {
+		resolved.Weight = Relative
+	}
+	return &resolved
+}
+
+// complete makes a result of a solution.
+func (p *problem) complete(solution *lm.Result) (*Result, error) {
+	c, s := p.circuit, p.settings
+	if len(p.free) == 0 {
+		return evaluate(p, s, nil, solution), nil
+	}
 	p.set(solution.X)
-	if order(c, p.values, &s) {
+	if order(c, p.values, s) {
 		// Once more from the reordered values, which is a solution: the
 		// Jacobian's columns change places with it.
-		lower, upper := p.bounds(&s)
+		lower, upper := p.bounds(s)
+		var err error
 		if solution, err = p.polish(p.unknowns(), lower, upper, s.Robust); err != nil {
 			return nil, err
 		}
 	}
 	p.settle(solution)
-	return evaluate(p, &s, solution.X, solution), nil
+	return evaluate(p, s, solution.X, solution), nil
 }
 
 // check finds faults of the settings before anything is computed.
@@ -291,14 +305,14 @@ func sortedKeys[V any](m map[string]V) []string {
 const safe = 1e-290
 
 // points prepares a sweep for the problem.
-func (s *Settings) points(freq []float64, z []complex128) (points, error) {
-	pts := points{freq: freq, measured: z, inverse: make([]complex128, len(z)), grid: models.NewGrid(freq)}
+func (s *Settings) points(freq []float64, z []complex128) (*points, error) {
+	pts := &points{freq: freq, measured: z, inverse: make([]complex128, len(z)), grid: models.NewGrid(freq)}
 	low, high := math.Inf(1), 0.0 // |Z|²
 	for i, v := range z {
 		squares := real(v)*real(v) + imag(v)*imag(v)
 		if !(squares > safe && squares < 1/safe) {
 			if a := abs(v); !(a > 0) || math.IsInf(a, 1) {
-				return pts, &InputError{Found: fmt.Sprintf("Z = %v at %v Hz", v, freq[i]), Expected: "a finite impedance that is not zero"}
+				return nil, &InputError{Found: fmt.Sprintf("Z = %v at %v Hz", v, freq[i]), Expected: "a finite impedance that is not zero"}
 			}
 			pts.inverse[i] = 1 / v
 			squares = min(max(squares, safe), 1/safe)
@@ -327,7 +341,7 @@ func (s *Settings) points(freq []float64, z []complex128) (points, error) {
 		for i, v := range z {
 			m, ph, ok := s.Accuracy(freq[i], abs(v))
 			if !ok || !(m > 0) || !(ph > 0) {
-				return pts, &InputError{Flag: "--accuracy", Found: fmt.Sprintf("none for %v Hz and %.4g Ω", freq[i], abs(v)),
+				return nil, &InputError{Flag: "--accuracy", Found: fmt.Sprintf("none for %v Hz and %.4g Ω", freq[i], abs(v)),
 					Expected: "a positive accuracy at every point of the sweep", Hint: "extend the table, or cut the sweep with --from and --to"}
 			}
 			pts.magnitude[i], pts.phase[i] = m, ph
@@ -367,36 +381,40 @@ const (
 // the circuit is not the part's or a minimum is not the lowest, the search
 // goes through all its draws, and its best minima are compared on the whole
 // sweep.
-func (p *problem) solve(s *Settings) (*lm.Result, error) {
-	for name, v := range s.Fixed {
-		i, _ := p.circuit.Index(name)
-		p.values[i] = v
+func (p *problem) solve() (*lm.Result, error) {
+	if len(p.free) == 0 {
+		return &lm.Result{Status: lm.GradientConvergence, Reason: "all parameters are fixed"}, nil
 	}
-	lower, upper := p.bounds(s)
-	if x := p.given(s); x != nil {
-		r, err := p.fromStart(x, lower, upper, s)
+	if x := p.given(); x != nil {
+		r, err := p.fromStart(x)
 		if err == nil && p.weight == Relative && p.noise.explains(r.Cost, len(p.freq)) {
 			return r, nil
 		}
 	}
-	search := p.newSearch(s, lower, upper)
-	search.run(true)
+	return p.solveFrom(p.newSearch())
+}
+
+// solveFrom goes on with a search: it takes the first minimum that describes
+// the sweep to its noise, else the best of all.
+func (p *problem) solveFrom(search *search) (*lm.Result, error) {
+	lower, upper, robust := search.solver.Lower, search.solver.Upper, search.settings.Robust
+	search.all(true)
 	if len(search.best) == 0 {
 		return nil, fmt.Errorf("no starting values found: %w", search.failure)
 	}
-	best, err := p.polish(search.best[0].x, lower, upper, s.Robust)
+	best, err := p.polish(search.best[0].x, lower, upper, robust)
 	if err != nil {
 		return nil, err
 	}
-	if p.weight == Relative && p.noise.explains(best.Cost, len(p.freq)) && best.Status.Converged() {
+	if p.atNoise(best) {
 		return best, nil
 	}
-	search.run(false)
+	search.all(false)
 	for _, c := range search.best {
 		if c.cost > 2*search.best[0].cost {
 			break // on the thinned sweep already much worse
 		}
-		r, err := p.polish(c.x, lower, upper, s.Robust)
+		r, err := p.polish(c.x, lower, upper, robust)
 		if err == nil && better(r, best, len(p.freq)) {
 			best = r
 		}
@@ -404,10 +422,17 @@ func (p *problem) solve(s *Settings) (*lm.Result, error) {
 	return best, nil
 }
 
+// atNoise reports whether a solution describes the sweep to its noise.
+func (p *problem) atNoise(r *lm.Result) bool {
+	return p.weight == Relative && r.Status.Converged() && p.noise.explains(r.Cost, len(p.freq))
+}
+
 // fromStart goes from starting values to a minimum: most of the way on a few
 // points of the sweep, whose minimum is within a few standard uncertainties of
 // that of the whole.
-func (p *problem) fromStart(x, lower, upper []float64, s *Settings) (*lm.Result, error) {
+func (p *problem) fromStart(x []float64) (*lm.Result, error) {
+	s := p.settings
+	lower, upper := p.bounds(s)
 	few := max(16, 4*len(x))
 	if len(p.freq) > 2*few && !s.Robust {
 		thinned := newProblem(p.circuit, p.pick(thin(p.freq, p.measured, few)), Relative, s)
@@ -423,7 +448,7 @@ func (p *problem) fromStart(x, lower, upper []float64, s *Settings) (*lm.Result,
 // searcher returns the settings of a fit on a thinned sweep.
 func (p *problem) searcher(lower, upper []float64) lm.Settings {
 	return lm.Settings{UnitScaling: true, MaxStep: maxStep, MaxIterations: searchSteps,
-		GradientTolerance: searchTolerance, StepTolerance: searchTolerance, CostTolerance: searchTolerance,
+		GradientTolerance: searchTolerance, StepTolerance: searchTolerance, CostTolerance: searchTolerance, SlowTolerance: 1e-4,
 		Lower: lower, Upper: upper}
 }
 
@@ -453,149 +478,16 @@ func better(a, b *lm.Result, points int) bool {
 
 // given returns the unknowns if the user gave a start for every free
 // parameter, else nil.
-func (p *problem) given(s *Settings) []float64 {
+func (p *problem) given() []float64 {
 	x := make([]float64, len(p.free))
 	for k, i := range p.free {
-		v, ok := s.Start[p.parameters[i].Name]
+		v, ok := p.settings.Start[p.parameters[i].Name]
 		if !ok {
 			return nil
 		}
 		x[k] = p.parameters[i].Scale.Unknown(v)
 	}
 	return x
-}
-
-// search is a search for starting values on a thinned sweep with the relative
-// residual, whose basin is the widest. In each round many sets of values are
-// drawn, the user's own kept, and the few that come nearest to the sweep are
-// improved by the solver: few good starts beat many blind ones.
-type search struct {
-	whole, thinned *problem
-	settings       *Settings
-	sampler        *sampler
-	solver         lm.Settings
-	round          int
-	repeats        int
-	best           []candidate
-	failure        error
-}
-
-const (
-	kept           = 4 // minima that are remembered
-	drawsPerRound  = 24
-	solvesPerRound = 3
-)
-
-func (p *problem) newSearch(s *Settings, lower, upper []float64) *search {
-	pts := p.points
-	if s.Robust {
-		pts = pts.pick(tame(p.freq, p.measured))
-	}
-	f := newFeatures(pts, searchPoints)
-	q := &search{
-		whole: p, thinned: newProblem(p.circuit, f.points, Relative, s), settings: s, sampler: newSampler(f, s.Seed),
-		solver: p.searcher(lower, upper),
-	}
-	copy(q.thinned.values, p.values)
-	if s.Robust {
-		q.thinned.scale = searchScale
-	}
-	return q
-}
-
-// rounds returns how many rounds a search of so many unknowns goes through at
-// most.
-func rounds(unknowns int) int { return 2 + unknowns*unknowns/2 }
-
-// run goes on until the rounds are used up, or the same minimum has come back
-// so often that there is hardly a lower one, or, if that is enough, the sweep
-// is described to its noise.
-func (q *search) run(noiseIsEnough bool) {
-	done := func() bool { return noiseIsEnough && q.whole.noise.explains(q.best[0].cost, len(q.thinned.freq)) }
-	for ; q.round < rounds(len(q.whole.free)); q.round++ {
-		if len(q.best) > 0 && (done() || q.repeats >= 2*solvesPerRound) {
-			return
-		}
-		starts := q.draw()
-		if 2*len(q.thinned.freq) < len(starts[0].x) {
-			q.best = starts[:1] // too few points for the solver
-			return
-		}
-		for _, start := range starts {
-			r, err := lm.Solve(q.thinned.lm(), start.x, &q.solver)
-			if err != nil {
-				q.failure = err
-				continue
-			}
-			if len(q.best) > 0 && math.Abs(r.Cost-q.best[0].cost) <= 1e-3*q.best[0].cost {
-				q.repeats++
-			} else if len(q.best) == 0 || r.Cost < q.best[0].cost {
-				q.repeats = 0
-			}
-			q.best = keep(q.best, candidate{x: r.X, cost: r.Cost}, kept)
-			if done() {
-				break
-			}
-		}
-	}
-}
-
-// draw returns random sets of unknowns: the best of a round by its cost on
-// the thinned sweep, and the first ones.
-func (q *search) draw() []candidate {
-	p := q.whole
-	values := make([]float64, len(p.values))
-	residuals := make([]float64, 2*len(q.thinned.freq))
-	var starts []candidate
-	draws := drawsPerRound
-	if len(q.settings.Start) > 0 {
-		given := 0
-		for _, i := range p.free {
-			if _, ok := q.settings.Start[p.parameters[i].Name]; ok {
-				given++
-			}
-		}
-		if given == len(p.free) {
-			draws = 1
-		}
-	}
-	for range draws {
-		q.sampler.draw(p.circuit, values)
-		x := make([]float64, len(p.free))
-		for k, i := range p.free {
-			v := values[i]
-			if given, ok := q.settings.Start[p.parameters[i].Name]; ok {
-				v = given
-			}
-			x[k] = p.parameters[i].Scale.Unknown(v)
-			if math.IsNaN(x[k]) {
-				x[k] = (q.solver.Lower[k] + q.solver.Upper[k]) / 2
-			}
-		}
-		clamp(x, q.solver.Lower, q.solver.Upper)
-		q.thinned.residual(residuals, x)
-		cost := 0.0
-		for _, v := range residuals {
-			cost += v * v / 2
-		}
-		if !(cost < math.Inf(1)) {
-			continue
-		}
-		switch {
-		case len(starts) < solvesPerRound:
-			starts = append(starts, candidate{x, cost})
-		case cost < starts[0].cost:
-			starts[0] = candidate{x, cost}
-		}
-	}
-	if len(starts) == 0 {
-		x := make([]float64, len(p.free))
-		for k := range x {
-			x[k] = (q.solver.Lower[k] + q.solver.Upper[k]) / 2
-		}
-		starts = []candidate{{x: x, cost: math.Inf(1)}}
-	}
-	return starts
 }
 
 // solver returns the settings of a fit on the whole sweep. The gradient
@@ -605,7 +497,7 @@ func (q *search) draw() []candidate {
 // not determined, where a step changes χ² by less than 1e-6.
 func (p *problem) solver(lower, upper []float64) lm.Settings {
 	return lm.Settings{UnitScaling: true, MaxStep: maxStep, MaxIterations: polishSteps,
-		GradientTolerance: 1e-6, StepTolerance: 1e-9, CostTolerance: 1e-7,
+		GradientTolerance: 1e-6, StepTolerance: 1e-9, CostTolerance: 1e-7, SlowTolerance: 1e-6,
 		Lower: lower, Upper: upper}
 }
 

@@ -17,7 +17,7 @@ type problem struct {
 	circuit    *models.Circuit
 	parameters []models.Parameter
 	settings   *Settings
-	points
+	*points
 	weight     Weight
 	reference  float64
 	connection Connection
@@ -38,12 +38,14 @@ type points struct {
 	phase []float64 // stated accuracy of each point, for Accuracy and the meter's part of the uncertainty; nil: none
 	low, high float64 // the least and the largest |Z|
 	noise     *noise
+	shape     *features // see features; nil before
 }
 
-func (p *points) pick(index []int) points {
+// pick returns the points of rising indices.
+func (p *points) pick(index []int) *points {
 	n := len(index)
 	memory := make([]complex128, 2*n)
-	q := points{freq: make([]float64, 0, n), measured: memory[:0:n], inverse: memory[n:n], low: p.low, high: p.high, noise: p.noise}
+	q := &points{freq: make([]float64, 0, n), measured: memory[:0:n], inverse: memory[n:n], low: p.low, high: p.high, noise: p.noise}
 	for _, i := range index {
 		q.freq = append(q.freq, p.freq[i])
 		q.measured = append(q.measured, p.measured[i])
@@ -60,7 +62,7 @@ func (p *points) pick(index []int) points {
 	return q
 }
 
-func newProblem(c *models.Circuit, pts points, weight Weight, s *Settings) *problem {
+func newProblem(c *models.Circuit, pts *points, weight Weight, s *Settings) *problem {
 	p := &problem{
 		circuit: c, parameters: c.Parameters(), settings: s, points: pts, weight: weight,
 		reference: s.Reference, connection: s.Connection,

@@ -48,7 +48,7 @@ func Restore(c *models.Circuit, parameters []Parameter, correlation [][]float64,
 		Circuit: c, Parameters: make([]Parameter, 0, len(known)), Free: []int{},
 		Freq: []float64{fMin, fMax}, Measured: []complex128{missing, missing},
 		RMSRelative: math.NaN(), MaxRelative: math.NaN(), MaxAtHz: math.NaN(), Lag1: math.NaN(), Sigma: math.NaN(), Cost: math.NaN(),
-		problem: new(problem), // of a meter whose accuracy is not known point by point
+		problem: withoutPoints(),
 	}
 	for i, p := range parameters {
 		if p.Name != known[i].Name {
@@ -71,6 +71,10 @@ func Restore(c *models.Circuit, parameters []Parameter, correlation [][]float64,
 	r.DegreesOfFreedom = 2*points - len(r.Free)
 	return r, r.restoreCovariance(correlation)
 }
+
+// withoutPoints returns a problem for a result whose points were not kept, with
+// a meter whose accuracy is not known point by point.
+func withoutPoints() *problem { return &problem{points: new(points)} }
 
 // missing is an impedance that was not kept.
 var missing = complex(math.NaN(), math.NaN())

@@ -11,12 +11,24 @@ import (
 // features are what starting values are made from: a thinned sweep and the
 // frequencies at which it resonates.
 type features struct {
-	points
+	*points
 	resonances []float64 // zeros of X, and extremes of |Z| inside the sweep, Hz
 }
 
-func newFeatures(pts points, n int) features {
-	f := features{points: pts.pick(thin(pts.freq, pts.measured, n))}
+// features returns those of the sweep, of its tame points if it has wild ones.
+// They are worked out once.
+func (p *points) features(wild bool) *features {
+	if wild {
+		return newFeatures(p.pick(tame(p.freq, p.measured)), searchPoints)
+	}
+	if p.shape == nil {
+		p.shape = newFeatures(p, searchPoints)
+	}
+	return p.shape
+}
+
+func newFeatures(pts *points, n int) *features {
+	f := &features{points: pts.pick(thin(pts.freq, pts.measured, n))}
 	z := pts.measured
 	for i := 1; i < len(z); i++ {
 		if (imag(z[i-1]) < 0) != (imag(z[i]) < 0) {
@@ -27,15 +39,7 @@ func newFeatures(pts points, n int) features {
 			}
 		}
 	}
-	low, high := 0, 0
-	for i := range z {
-		if abs(z[i]) < abs(z[low]) {
-			low = i
-		}
-		if abs(z[i]) > abs(z[high]) {
-			high = i
-		}
-	}
+	low, high := extremes(z)
 	for _, i := range []int{low, high} {
 		if i > 0 && i < len(z)-1 {
 			f.resonances = append(f.resonances, pts.freq[i])
@@ -59,11 +63,11 @@ func abs(z complex128) float64 { return math.Hypot(real(z), imag(z)) }
 // matters somewhere in the sweep, which blind draws over decades don't
 // achieve.
 type sampler struct {
-	features
+	*features
 	random *rand.Rand
 }
 
-func newSampler(f features, seed uint64) *sampler {
+func newSampler(f *features, seed uint64) *sampler {
 	return &sampler{features: f, random: rand.New(rand.NewPCG(seed, 0x5eed))}
 }
 

@@ -15,10 +15,15 @@ func twins(c *models.Circuit) [][][]int {
 	var groups [][][]int
 	var walk func(n *models.Node)
 	walk = func(n *models.Node) {
+		for _, child := range n.Children {
+			walk(child)
+		}
+		if !anyAlike(n.Children) {
+			return
+		}
 		var shapes []string
 		branches := map[string][][]int{}
 		for _, child := range n.Children {
-			walk(child)
 			shape, parameters := shapeOf(child)
 			if _, ok := branches[shape]; !ok {
 				shapes = append(shapes, shape)
@@ -33,6 +38,18 @@ func twins(c *models.Circuit) [][][]int {
 	}
 	walk(c.Root())
 	return groups
+}
+
+// anyAlike reports whether two siblings could be of one shape.
+func anyAlike(siblings []*models.Node) bool {
+	for i, a := range siblings {
+		for _, b := range siblings[:i] {
+			if a.Kind == b.Kind && (a.Kind != models.Leaf || a.Element == b.Element) {
+				return true
+			}
+		}
+	}
+	return false
 }
 
 // shapeOf returns a text that is the same for branches which differ in the

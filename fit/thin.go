@@ -18,36 +18,57 @@ func thin(freq []float64, z []complex128, n int) []int {
 		}
 		return all
 	}
-	step := make([]float64, len(freq))
-	wayF, wayZ := math.Log(freq[len(freq)-1]/freq[0]), 0.0
-	for i := 1; i < len(freq); i++ {
-		step[i] = cmplx.Abs(cmplx.Log(z[i] / z[i-1]))
-		wayZ += step[i]
+	// The way from point to point in ln f and in ln Z, about: for steps far
+	// below 1 these are the differences of the logarithms, and no step counts
+	// for more than 2.
+	wayF, wayZ := 0.0, 0.0
+	stepF, stepZ := make([]float64, len(freq)), make([]float64, len(freq))
+	for i, v := range z {
+		if i == 0 {
+			continue
+		}
+		d, sum := v-z[i-1], v+z[i-1]
+		if s := real(sum)*real(sum) + imag(sum)*imag(sum); s > 0 {
+			stepZ[i] = 2 * min(1, math.Sqrt((real(d)*real(d)+imag(d)*imag(d))/s))
+		}
+		stepF[i] = 2 * (freq[i] - freq[i-1]) / (freq[i] + freq[i-1])
+		wayF += stepF[i]
+		wayZ += stepZ[i]
+	}
+	shareF, shareZ := 1/wayF, 0.0
+	if wayZ > 0 {
+		shareZ = 1 / wayZ
 	}
 	reach := 0.0
-	for i := 1; i < len(freq); i++ {
-		reach += math.Log(freq[i]/freq[i-1]) / wayF
-		if wayZ > 0 {
-			reach += step[i] / wayZ
-		}
+	step := stepF
+	for i := range step {
+		reach += stepF[i]*shareF + stepZ[i]*shareZ
 		step[i] = reach
 	}
-	low, high := 0, 0
-	for i := range z {
-		if cmplx.Abs(z[i]) < cmplx.Abs(z[low]) {
-			low = i
-		}
-		if cmplx.Abs(z[i]) > cmplx.Abs(z[high]) {
-			high = i
-		}
-	}
-	chosen := []int{0, len(freq) - 1, low, high}
+	low, high := extremes(z)
+	chosen := make([]int, 0, n+4)
+	chosen = append(chosen, 0, len(freq)-1, low, high)
 	for k := 1; k < n-3; k++ {
 		i, _ := slices.BinarySearch(step, reach*float64(k)/float64(n-3))
 		chosen = append(chosen, min(i, len(freq)-1))
 	}
 	slices.Sort(chosen)
 	return slices.Compact(chosen)
+}
+
+// extremes returns the indices of the least and the largest |Z|.
+func extremes(z []complex128) (low, high int) {
+	least, most := math.Inf(1), 0.0
+	for i, v := range z {
+		squares := real(v)*real(v) + imag(v)*imag(v)
+		if squares < least {
+			low, least = i, squares
+		}
+		if squares > most {
+			high, most = i, squares
+		}
+	}
+	return low, high
 }
 
 // tame returns the indices of the points that lie near the middle of their

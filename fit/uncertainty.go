@@ -140,12 +140,30 @@ func (r *Result) uncertainty(s *Settings, solution *lm.Result) {
 		}
 		determined = append(determined, c)
 	}
-	covariance, vague := normalCovariance(normal, k, determined), []int(nil)
+	covariance := normalCovariance(normal, k, determined)
+	var vague []int
+	if covariance != nil {
+		covariance, determined, vague = tellApart(covariance, determined, r.Sigma, func(columns []int) *mat.SymDense {
+			return normalCovariance(normal, k, columns)
+		})
+	}
 	if jacobian == nil && (covariance == nil || p.magnitude != nil) {
 		jacobian = p.jacobianAt(r.x)
 	}
-	if covariance == nil {
-		covariance, determined, vague = regularCovariance(jacobian, determined, 1)
+	if covariance == nil && len(determined) > 0 {
+		var alike []int
+		covariance, determined, alike = regularCovariance(jacobian, determined, 1)
+		vague = append(vague, alike...)
+		if covariance != nil {
+			covariance, determined, alike = tellApart(covariance, determined, r.Sigma, func(columns []int) *mat.SymDense {
+				c, rest, _ := regularCovariance(jacobian, columns, 1)
+				if len(rest) < len(columns) {
+					return nil
+				}
+				return c
+			})
+			vague = append(vague, alike...)
+		}
 	}
 	for _, c := range vague {
 		q := &r.Parameters[p.free[c]]
@@ -252,6 +270,40 @@ func studentQuantile(p, nu float64) float64 {
 }
 
 var quantiles sync.Map // of studentQuantile
+
+// lost is the standard uncertainty of ln p, or of a logit, above which nothing
+// of the linear response is left: what it says of several such unknowns
+// together is the difference of huge numbers.
+const lost = 10
+
+// tellApart takes unknowns away until none is lost, the worst first. It returns
+// what regularCovariance does; of must give the covariance of fewer columns, nil
+// if it cannot.
+func tellApart(covariance *mat.SymDense, columns []int, sigma float64, of func(columns []int) *mat.SymDense) (rest *mat.SymDense, remaining, vague []int) {
+	for {
+		worst, most := -1, lost/sigma*(lost/sigma)
+		for k, c := range columns {
+			if v := covariance.At(k, k); v > lost/sigma*(lost/sigma) {
+				if !slices.Contains(vague, c) {
+					vague = append(vague, c)
+				}
+				if v > most {
+					worst, most = k, v
+				}
+			}
+		}
+		if worst < 0 {
+			return covariance, columns, vague
+		}
+		columns = slices.Delete(slices.Clone(columns), worst, worst+1)
+		if len(columns) == 0 {
+			return nil, nil, vague
+		}
+		if covariance = of(columns); covariance == nil {
+			return nil, columns, vague
+		}
+	}
+}
 
 // normalCovariance returns the covariance (JᵀJ)⁻¹ of the given columns of a
 // Jacobian of n columns from its JᵀJ; nil where that is not clearly regular, or

@@ -295,8 +295,8 @@ func (r *Result) second() []float64 {
 	p := r.problem
 	s := p.settings
 	lower, upper := p.bounds(s)
-	search := p.newSearch(s, lower, upper)
-	search.run(false)
+	search := p.newSearch()
+	search.all(false)
 	t := studentQuantile(0.975, float64(r.DegreesOfFreedom))
 	defer p.set(r.x)
 	for _, c := range search.best {

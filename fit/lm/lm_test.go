@@ -736,6 +736,7 @@ func TestStatuses(t *testing.T) {
 		{GradientConvergence, p, Settings{StepTolerance: 1e-99, CostTolerance: 1e-99}, "cosine between residuals and Jacobian "},
 		{StepConvergence, p, Settings{GradientTolerance: 1e-99, StepTolerance: 1e-3, CostTolerance: 1e-99}, " <= 0.001 (StepTolerance)"},
 		{CostConvergence, p, Settings{GradientTolerance: 1e-99, StepTolerance: 1e-99, CostTolerance: 1e-4}, " <= 0.0001 (CostTolerance)"},
+		{SlowConvergence, p, Settings{GradientTolerance: 1e-99, StepTolerance: 1e-99, CostTolerance: 1e-99, InitialRadius: 1e-3, SlowTolerance: 0.2}, " <= 0.2 (SlowTolerance)"},
 		{RoundingConvergence, decay(50, []float64{3, 2, 1}, 0), Settings{}, "reachable change of the residuals "},
 		{Stalled, wrong, Settings{}, "no decrease of the cost down to a step of length "},
 		{IterationLimit, p, Settings{MaxIterations: 3}, "steps tried 3 >= 3 (MaxIterations)"},

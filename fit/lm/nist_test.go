@@ -99,10 +99,10 @@ func TestNIST(t *testing.T) {
 		// default tolerances, while the steps converge slowly). What misses 8 digits of the standard deviations: Bennett5,
 		// Eckerle4, Lanczos3 from both starts, Lanczos2 from start 2 (7.0 to 7.8).
 		parameters, deviations, rss float64
-		steps                       int // most in all; measured 2892 and 2976 on amd64
+		steps                       int // most in all; measured 2892, 3188 and 2976 on amd64
 	}{
 		{"analytic", true, false, 8, 8.5, 9.5, 3200},
-		{"normal", true, true, 8, 8.5, 9.5, 3200},
+		{"normal", true, true, 8, 8.5, 9.5, 3500},
 		{"differences", false, false, 6.5, 6, 9.5, 3600},
 	} {
 		t.Run(c.name, func(t *testing.T) {

@@ -33,6 +33,10 @@ type Settings struct {
 	// to give, the measured one being as small or lost in rounding. Zero: DefaultCostTolerance, which is below the
 	// resolution of the cost itself but not of the prediction.
 	CostTolerance float64
+	// SlowTolerance leads to SlowConvergence: the relative decrease of the cost that five steps in a row must exceed
+	// together. It ends the way along the flat valley of variables that the data hardly determine, where the region stays
+	// small and no step is a full one. Zero: not tested.
+	SlowTolerance float64
 	// MaxIterations bounds the steps tried, refused ones too, and leads to IterationLimit. Zero: DefaultMaxIterations.
 	MaxIterations int
 	// InitialRadius is the radius of the first trust region, the greatest length ‖D·p‖ of the first step. D is the
@@ -86,6 +90,8 @@ func (s *Settings) resolve(start []float64, differences bool) (o Settings, err e
 	switch {
 	case err != nil:
 		return o, err
+	case !(o.SlowTolerance >= 0 && o.SlowTolerance < 1):
+		return o, fmt.Errorf("lm: SlowTolerance is %v, must be at least 0 and below 1", o.SlowTolerance)
 	case o.MaxIterations < 0:
 		return o, fmt.Errorf("lm: MaxIterations is %d, must not be negative", o.MaxIterations)
 	case !(o.InitialRadius >= 0) || math.IsInf(o.InitialRadius, 1):

@@ -20,6 +20,8 @@ const (
 	growth, leastShrink, mostShrink = 2, 0.4, 0.1
 	// Residuals are computed with a few roundings more than that of x.
 	evaluation = 10
+	// See Settings.SlowTolerance.
+	slowSteps = 5
 	// A step that the bounds reduce to nothing is tried with this many ever smaller radii.
 	maxBarren = 100
 )
@@ -255,6 +257,14 @@ func (s *state) inspect() {
 		s.stop(StepConvergence, s.lastStep, o.StepTolerance)
 	case s.lastDecrease <= o.CostTolerance:
 		s.stop(CostConvergence, s.lastDecrease, o.CostTolerance)
+	case s.taken >= slowSteps && o.SlowTolerance > 0:
+		var sum float64
+		for _, d := range s.recent {
+			sum += d
+		}
+		if sum <= o.SlowTolerance {
+			s.stop(SlowConvergence, sum, o.SlowTolerance)
+		}
 	}
 }
 
@@ -365,6 +375,8 @@ func (s *state) advance() {
 		if full {
 			s.lastStep = change
 		}
+		s.recent[s.taken%slowSteps] = actual / former
+		s.taken++
 		if full || change >= o.MaxStep/2 {
 			if math.Abs(actual) <= o.CostTolerance*former+noise {
 				s.lastDecrease = predicted / former

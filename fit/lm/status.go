@@ -18,6 +18,9 @@ const (
 	// CostConvergence: the full step lowered the cost, as predicted and as far as rounding shows, by no more than
 	// CostTolerance·cost. X is the point after that step.
 	CostConvergence
+	// SlowConvergence: five steps in a row, of whatever length, lowered the cost together by no more than
+	// SlowTolerance·cost. X is the point after them.
+	SlowConvergence
 	// RoundingConvergence: ‖P·r‖ ≤ ε·Σ‖J_j‖·|x_j|, so that no step changes the residuals by more than the rounding of x
 	// does; or all residuals are zero. Problems with an exact solution end like this.
 	RoundingConvergence
@@ -41,6 +44,7 @@ var statuses = [...]struct {
 	GradientConvergence: {"gradient convergence", "cosine between residuals and Jacobian ", " <= ", " (GradientTolerance)", true, true},
 	StepConvergence:     {"step convergence", "largest change of a variable in a full step ", " <= ", " (StepTolerance)", true, true},
 	CostConvergence:     {"cost convergence", "relative decrease of the cost ", " <= ", " (CostTolerance)", true, true},
+	SlowConvergence:     {"slow convergence", "relative decrease of the cost by five steps ", " <= ", " (SlowTolerance)", true, true},
 	RoundingConvergence: {"rounding convergence", "reachable change of the residuals ", " <= ", " (rounding of the variables)", true, true},
 	Stalled:             {"stalled", "no decrease of the cost down to a step of length ", " in the radius ", "", false, true},
 	IterationLimit:      {"iteration limit", "steps tried ", " >= ", " (MaxIterations)", false, true},

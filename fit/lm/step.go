@@ -49,6 +49,9 @@ type state struct {
 
 	probe, near, far []float64 // a point beside x for differences, and r at two of them
 
+	recent [slowSteps]float64 // relative decreases by the last steps taken
+	taken  int                // steps taken
+
 	iterations, residuals, jacobians int
 	lastStep, lastDecrease           float64 // relative, of the last step taken if it was a full one, else +Inf
 	status                           Status
@@ -152,7 +155,7 @@ func (s *state) expand() {
 func (s *state) step(radius, maxStep float64) {
 	clear(s.p)
 	clear(s.onto)
-	if s.regular && len(s.free) == s.n && s.newton(radius, maxStep) {
+	if s.regular && len(s.free) == s.n && s.regularStep(radius, maxStep) {
 		return
 	}
 	if !s.split {
@@ -191,34 +194,128 @@ func (s *state) step(radius, maxStep float64) {
 	}
 }
 
-// newton computes the full step, R·p = −Qᵀr, and reports whether it may be taken: it is not longer than the radius, in
-// no variable above maxStep, and stays inside the bounds.
-func (s *state) newton(radius, maxStep float64) bool {
+// regularStep computes p from JᵀJ, which is clearly regular, with all variables free, and reports whether it stays inside
+// the bounds: the same step as from the singular values, without their price.
+func (s *state) regularStep(radius, maxStep float64) bool {
+	s.lambda, s.cut = 0, false
+	s.newton()
+	if s.length > radius {
+		s.dampNormal(radius)
+	}
+	if big := largest(s.p); big > maxStep {
+		s.cut = true
+		if short := s.length * maxStep / big; s.length > short {
+			s.dampNormal(short)
+		}
+		if big = largest(s.p); big > maxStep {
+			for i := range s.p {
+				s.p[i] *= maxStep / big
+			}
+			s.length *= maxStep / big
+		}
+	}
+	for k, p := range s.p {
+		if to := s.x[k] + p; !(to > s.low[k] && to < s.high[k]) {
+			clear(s.p)
+			return false
+		}
+	}
+	clear(s.image)
+	for k, v := range s.p {
+		for l, u := range s.tri.column(k) {
+			s.image[l] += u * v
+		}
+	}
+	return true
+}
+
+// newton computes the full step, R·p = −Qᵀr.
+func (s *state) newton() {
 	projected := s.tri.projected()
+	var squares float64
 	for k := s.n - 1; k >= 0; k-- {
 		sum := -projected[k]
 		for l := k + 1; l < s.n; l++ {
 			sum -= s.tri.column(l)[k] * s.p[l]
 		}
 		s.p[k] = sum / s.tri.column(k)[k]
+		squares += s.scale[k] * s.p[k] * s.scale[k] * s.p[k]
 	}
-	var squares float64
-	for k, p := range s.p {
-		squares += s.scale[k] * p * s.scale[k] * p
-		to := s.x[k] + p
-		if !(math.Abs(p) <= maxStep && to > s.low[k] && to < s.high[k]) {
-			squares = math.Inf(1)
+	s.length = math.Sqrt(squares)
+}
+
+// dampNormal shortens the full step to the one, (JᵀJ + λD²)·p = −Jᵀr, that is as long as the radius, as damp does:
+//
+//	JᵀJ + λD² = Lᵀ·L,  Lᵀ·q = D²·p,  λ ← λ + (‖D·p‖/‖q‖)²·(‖D·p‖ − radius)/radius
+func (s *state) dampNormal(radius float64) {
+	const (
+		tolerance = 1e-2
+		limit     = 50
+	)
+	s.split = false // b and a serve as memory
+	q := s.a
+	s.factoriseDamped()
+	for range limit {
+		if !(s.length > radius*(1+tolerance)) {
+			return
 		}
+		for k := range q {
+			q[k] = s.scale[k] * s.scale[k] * s.p[k]
+		}
+		s.forward(q)
+		s.lambda += s.length * s.length / dot(q, q) * (s.length - radius) / radius
+		s.factoriseDamped()
+		for k := range q {
+			q[k] = -s.gradient[k]
+		}
+		s.forward(q)
+		s.backward(q)
 	}
-	if !(squares <= radius*radius) {
-		clear(s.p)
-		return false
+}
+
+// factoriseDamped writes the Cholesky factor Lᵀ of JᵀJ + λD² into b, by rows.
+func (s *state) factoriseDamped() {
+	n := s.n
+	for k := range n {
+		row := s.b[k*n : k*n+k+1]
+		pivot := s.jtj[k*n+k] + s.lambda*s.scale[k]*s.scale[k]
+		for i := range k {
+			other := s.b[i*n : i*n+i+1]
+			sum := s.jtj[k*n+i]
+			for j := range i {
+				sum -= row[j] * other[j]
+			}
+			row[i] = sum / other[i]
+			pivot -= row[i] * row[i]
+		}
+		row[k] = math.Sqrt(pivot)
 	}
-	s.lambda, s.cut, s.length = 0, false, math.Sqrt(squares)
-	for k, v := range projected {
-		s.image[k] = -v
+}
+
+// forward replaces q by the solution y of Lᵀ·y = q.
+func (s *state) forward(q []float64) {
+	for k := range q {
+		row := s.b[k*s.n : k*s.n+k+1]
+		for i := range k {
+			q[k] -= row[i] * q[i]
+		}
+		q[k] /= row[k]
 	}
-	return true
+}
+
+// backward solves L·p = y and sets the length of the step.
+func (s *state) backward(y []float64) {
+	n := s.n
+	var squares float64
+	for k := n - 1; k >= 0; k-- {
+		sum := y[k]
+		for i := k + 1; i < n; i++ {
+			sum -= s.b[i*n+k] * s.p[i]
+		}
+		s.p[k] = sum / s.b[k*n+k]
+		squares += s.scale[k] * s.p[k] * s.scale[k] * s.p[k]
+	}
+	s.length = math.Sqrt(squares)
 }
 
 // confine keeps the step inside the bounds: a variable that would leave is set to its bound, and the others are

@@ -237,8 +237,8 @@ func (e *Evaluator) power(w *power, from, to int, values []float64, derivatives 
 	switch w.element {
 	case Skin:
 		h := p / math.Sqrt2
-		for k, root := range e.grid.root[from:to] {
-			x := h * root
+		for k, omega := range e.grid.omega[from:to] {
+			x := h * math.Sqrt(omega)
 			z[k] = complex(x, x)
 		}
 	case LossCapacitor:
@@ -249,7 +249,7 @@ func (e *Evaluator) power(w *power, from, to int, values []float64, derivatives 
 		perC := 1 / p
 		inverse := e.grid.inverse[from:to]
 		second := e.column(w.second, n)
-		for k, log := range e.grid.log[from:to] {
+		for k, log := range e.grid.logs()[from:to] {
 			log -= logLossReference
 			x := math.Exp(rise*log) * inverse[k] * perC
 			r := x * tand
@@ -265,7 +265,7 @@ func (e *Evaluator) power(w *power, from, to int, values []float64, derivatives 
 		sin, cos := math.Sincos(exponent * math.Pi / 2)
 		re, im := cos/p, -sin/p
 		second := e.column(w.second, n)
-		for k, log := range e.grid.log[from:to] {
+		for k, log := range e.grid.logs()[from:to] {
 			scale := math.Exp(-exponent * log)
 			z[k] = complex(scale*re, scale*im)
 			if derivatives {

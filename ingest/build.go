@@ -444,21 +444,25 @@ func (b *builder) compute(seg *segment, g *group, w measured, f []float64, quiet
 		return nil, z, true
 	}
 	va, vb := seg.column(w.a), seg.column(w.b)
-	if hb := &p.cols[w.b]; hb.role.isAngle() {
-		vb, ok = b.radians(seg, w.b, f, va, quiet)
-		if !ok || p.cols[w.a].presumed && !b.bearsOut(seg, w.a, f, va, vb, quiet) {
+	ka, kb := sign(p.cols[w.a].negate), sign(p.cols[w.b].negate)
+	if p.cols[w.b].role.isAngle() {
+		kb, ok = b.radians(seg, w.b, f, va, quiet)
+		if !ok || p.cols[w.a].presumed && !b.bearsOut(seg, w.a, f, va, vb, kb, quiet) {
 			return nil, nil, false
 		}
-	} else if hb.negate {
-		vb = negated(vb)
-	}
-	if p.cols[w.a].negate {
-		va = negated(va)
 	}
 	for i := range f {
-		z[i] = w.pair.z(2*math.Pi*f[i], va[i], vb[i])
+		z[i] = w.pair.z(2*math.Pi*f[i], va[i]*ka, vb[i]*kb)
 	}
 	return nil, z, true
+}
+
+// sign is the factor of a column, of which the header may name the negative.
+func sign(negate bool) float64 {
+	if negate {
+		return -1
+	}
+	return 1
 }
 
 // bearsOut tells whether a magnitude and a phase of nothing named can be those of
@@ -466,10 +470,10 @@ func (b *builder) compute(seg *segment, g *group, w measured, f []float64, quiet
 // magnitude is flat and above 1, which no reflection is. S-parameters do not pass.
 // An admittance follows the relation as well: that |Z| in Ω was assumed is
 // therefore said in a warning.
-func (b *builder) bearsOut(seg *segment, col int, f, mag, radians []float64, quiet bool) bool {
-	degrees := make([]float64, len(radians))
-	for i, v := range radians {
-		degrees[i] = v * 180 / math.Pi
+func (b *builder) bearsOut(seg *segment, col int, f, mag, phase []float64, radians float64, quiet bool) bool {
+	degrees := make([]float64, len(phase))
+	for i, v := range phase {
+		degrees[i] = v * radians * 180 / math.Pi
 	}
 	line := slopeFactor(f, mag, degrees)
 	flat := line.predicted < 3 && slices.Min(mag) > 1.1
@@ -492,9 +496,9 @@ func negated(v []float64) []float64 {
 	return out
 }
 
-// radians converts a column of angles, telling the unit from the values where
-// the header does not state it.
-func (b *builder) radians(seg *segment, col int, f, mag []float64, quiet bool) ([]float64, bool) {
+// radians is the factor that makes radians of a column of angles, whose unit is
+// told from the values where the header does not state it.
+func (b *builder) radians(seg *segment, col int, f, mag []float64, quiet bool) (float64, bool) {
 	h := &seg.plan.cols[col]
 	raw := seg.column(col)
 	dim := h.unit.dim
@@ -513,7 +517,7 @@ func (b *builder) radians(seg *segment, col int, f, mag []float64, quiet bool) (
 				}
 				b.refuse(e)
 			}
-			return nil, false
+			return 0, false
 		}
 		dim = unit.dim()
 		if quiet {
@@ -552,24 +556,16 @@ func (b *builder) radians(seg *segment, col int, f, mag []float64, quiet bool) (
 			_, why := phaseUnit(f, mag, signed)
 			e.Found, e.bare, e.Err = "values that look like "+other[unit]+": "+why, true, ErrAmbiguous
 			b.refuse(e)
-			return nil, false
+			return 0, false
 		}
 		if k := line.factor; line.gainsays() && stated == angleDegrees && -mostFactor <= k && k <= -leastFactor {
 			b.warn(WarnUnchecked, "the phase has the opposite sign of what the slope of the magnitude asks for (factor %.2f): a capacitor's phase is negative in Z and positive in Y", k)
 		}
 	}
-	out := make([]float64, len(raw))
-	k := 1.0
 	if dim == "°" {
-		k = math.Pi / 180
+		return sign(h.negate) * (math.Pi / 180), true
 	}
-	if h.negate {
-		k = -k
-	}
-	for i, v := range raw {
-		out[i] = v * k
-	}
-	return out, true
+	return sign(h.negate), true
 }
 
 func (b *builder) tellAngle(f, mag, raw []float64, h *heading) (angleUnit, string) {
@@ -614,7 +610,8 @@ func (b *builder) computeS(seg *segment, g *group, w measured, quiet bool) (s, z
 				s[i] = complex(va[i], vb[i])
 			}
 		default:
-			phi, ok := b.radians(seg, w.b, seg.freqs(g), va, quiet)
+			phi := seg.column(w.b)
+			radians, ok := b.radians(seg, w.b, seg.freqs(g), va, quiet)
 			if !ok {
 				return nil, nil, false
 			}
@@ -641,7 +638,7 @@ func (b *builder) computeS(seg *segment, g *group, w measured, quiet bool) (s, z
 				}
 			}
 			for i := range s {
-				s[i] = polar(mag[i], phi[i])
+				s[i] = polar(mag[i], phi[i]*radians)
 			}
 		}
 	}

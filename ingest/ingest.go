@@ -33,6 +33,7 @@ import (
 	"io"
 	"path"
 	"path/filepath"
+	"slices"
 	"strings"
 )
 
@@ -151,13 +152,21 @@ func readAll(name string, r io.Reader, limit int64) ([]byte, error) {
 // there should be, 0 if that is not known; where it is right, the buffer does
 // not grow.
 func slurp(r io.Reader, size, limit int64) ([]byte, error) {
-	var buffer bytes.Buffer
-	buffer.Grow(int(min(size, limit)) + bytes.MinRead)
-	n, err := buffer.ReadFrom(io.LimitReader(r, limit+1))
-	if err == nil && n > limit {
-		err = ErrTooLarge
+	data := make([]byte, 0, min(size, limit)+bytes.MinRead)
+	for {
+		n, err := r.Read(data[len(data):cap(data)])
+		data = data[:len(data)+n]
+		switch {
+		case int64(len(data)) > limit:
+			return nil, ErrTooLarge
+		case err == io.EOF:
+			return data, nil
+		case err != nil:
+			return nil, err
+		case len(data) == cap(data):
+			data = slices.Grow(data, len(data))
+		}
 	}
-	return buffer.Bytes(), err
 }
 
 func tooLarge(name string, limit int64) *Error {

@@ -88,9 +88,10 @@ const (
 // slopePoints are enough to tell a factor of 57.
 const slopePoints = 64
 
-// thinned returns the indices of about so many of the values in ascending order,
-// evenly spread, the first and the last among them.
-func thinned(v []float64, most int) []int {
+// thinned returns the indices of about slopePoints of the values in ascending
+// order, evenly spread, the first and the last among them. They are appended to
+// out.
+func thinned(v []float64, out []int) []int {
 	var order []int // nil while the values stand in order
 	if !slices.IsSorted(v) {
 		order = sortedOrder(v)
@@ -101,8 +102,7 @@ func thinned(v []float64, most int) []int {
 		}
 		return i
 	}
-	step := max(1, (len(v)+most-1)/most)
-	out := make([]int, 0, min(len(v), most+1))
+	step := max(1, (len(v)+slopePoints-1)/slopePoints)
 	for i := 0; i < len(v)-1; i += step {
 		out = append(out, at(i))
 	}
@@ -150,7 +150,8 @@ func slopeFactor(freq, mag, phase []float64) slope {
 	var sxy, sxx, syy float64
 	n := 0
 	j := 0
-	order := thinned(freq, slopePoints)
+	var few [slopePoints + 1]int
+	order := thinned(freq, few[:0])
 	for _, i := range order {
 		a := order[j]
 		if !(freq[i] > 1.05*freq[a]) {

@@ -2,7 +2,6 @@ package ingest
 
 import (
 	"math"
-	"math/bits"
 	"strconv"
 	"strings"
 )
@@ -58,6 +57,22 @@ func newPlainRow(s *source, p *plan) *plainRow {
 	pr.cells = pr.cells[:last+1]
 	pr.vals = make([]float64, slots)
 	return pr
+}
+
+// store appends the row in vals, which is line i, and the plain rows that follow
+// without a gap. It returns how many that makes.
+func (pr *plainRow) store(seg *segment, s *source, i int) int {
+	from := i
+	for {
+		l := s.lines[i]
+		seg.line = append(seg.line, l.num)
+		for k, v := range pr.vals {
+			seg.vals[k] = append(seg.vals[k], v)
+		}
+		if i++; i >= len(s.lines) || s.lines[i].num != l.num+1 || !pr.read(s.text, s.lines[i]) {
+			return i - from
+		}
+	}
 }
 
 // read reads a line into vals; false means that the line is not plain.
@@ -120,9 +135,6 @@ func (pr *plainRow) read(text string, l line) bool {
 // powers are exact in float64.
 var powers = [...]float64{1e0, 1e1, 1e2, 1e3, 1e4, 1e5, 1e6, 1e7, 1e8, 1e9, 1e10, 1e11, 1e12, 1e13, 1e14, 1e15, 1e16, 1e17, 1e18, 1e19, 1e20, 1e21, 1e22}
 
-// powersUint are for digits8.
-var powersUint = [...]uint64{1e0, 1e1, 1e2, 1e3, 1e4, 1e5, 1e6, 1e7, 1e8}
-
 // Limits of the short way: the digits that a uint64 holds, and the mantissa up
 // to which every integer is a float64.
 const (
@@ -130,69 +142,52 @@ const (
 	maxMantissa = 1 << 53
 )
 
-// decimalWindow is how many bytes decimal looks at: a sign, the digits, a point,
-// an exponent, and up to eight bytes behind them.
-const decimalWindow = 32
-
 // decimal reads a decimal number at text[i] while it looks for its end: a
 // mantissa up to 2⁵³ and a power of ten up to 10^22, both exact in float64, so
 // that one multiplication or division gives the correctly rounded number
 // (Clinger 1990, "How to read floating point numbers accurately", the fast case;
 // strconv does the same, but needs to know the end first). Anything else is not
 // ok and goes to strconv.ParseFloat.
+//
+// Note: taking eight digits at once was slower: where a number ends is then
+// known only after a chain of operations, while a loop goes on with the end that
+// the processor predicts.
 func decimal(text string, i int) (v float64, end int, ok bool) {
-	if len(text)-i < decimalWindow {
-		var tail [decimalWindow]byte
-		copy(tail[:], text[i:])
-		v, end, ok = decimal(string(tail[:]), 0)
-		return v, i + end, ok
+	negative := false
+	if i < len(text) && (text[i] == '-' || text[i] == '+') {
+		negative = text[i] == '-'
+		i++
 	}
-	t := text[i : i+decimalWindow]
-	k := 0
-	negative := t[0] == '-'
-	if negative || t[0] == '+' {
-		k = 1
+	mantissa, start := uint64(0), i
+	for i < len(text) && text[i]-'0' < 10 {
+		mantissa = mantissa*10 + uint64(text[i]-'0')
+		i++
 	}
-	mantissa, n := digits8(t, k)
-	digits := n
-	k += n
-	for n == 8 {
-		if digits > maxDigits-8 {
-			return 0, i, false
-		}
-		var more uint64
-		more, n = digits8(t, k)
-		mantissa = mantissa*powersUint[n] + more
-		digits += n
-		k += n
-	}
+	digits := i - start
 	exp := 0
-	if t[k] == '.' {
-		k++
-		point := k
-		for n = 8; n == 8; {
-			var more uint64
-			more, n = digits8(t, k)
-			if digits += n; digits > maxDigits {
-				return 0, i, false
-			}
-			mantissa = mantissa*powersUint[n] + more
-			k += n
+	if i < len(text) && text[i] == '.' {
+		i++
+		point := i
+		for i < len(text) && text[i]-'0' < 10 {
+			mantissa = mantissa*10 + uint64(text[i]-'0')
+			i++
 		}
-		exp = point - k
+		exp = point - i
+		digits -= exp
 	}
-	if digits == 0 || mantissa > maxMantissa {
+	if digits == 0 || digits > maxDigits || mantissa > maxMantissa {
 		return 0, i, false
 	}
-	if t[k]|0x20 == 'e' {
-		j := k + 1
-		minus := t[j] == '-'
-		if minus || t[j] == '+' {
+	if i < len(text) && text[i]|0x20 == 'e' {
+		j := i + 1
+		minus := false
+		if j < len(text) && (text[j] == '-' || text[j] == '+') {
+			minus = text[j] == '-'
 			j++
 		}
 		e, first := 0, j
-		for t[j]-'0' < 10 && j < first+4 {
-			e = e*10 + int(t[j]-'0')
+		for j < len(text) && text[j]-'0' < 10 && j < first+4 {
+			e = e*10 + int(text[j]-'0')
 			j++
 		}
 		if j == first {
@@ -202,41 +197,21 @@ func decimal(text string, i int) (v float64, end int, ok bool) {
 			e = -e
 		}
 		exp += e
-		k = j
+		i = j
 	}
 	v = float64(mantissa)
 	switch {
-	case exp == 0:
-	case 0 < exp && exp < len(powers):
-		v *= powers[exp]
-	case exp < 0 && -exp < len(powers):
+	case exp <= 0 && -exp < len(powers):
 		v /= powers[-exp]
+	case 0 < exp && exp < len(powers):
+		if v *= powers[exp]; v >= overload {
+			return 0, i, false
+		}
 	default:
-		return 0, i, false
-	}
-	if v >= overload {
 		return 0, i, false
 	}
 	if negative {
 		v = -v
 	}
-	return v, i + k, true
-}
-
-// digits8 reads the decimal digits at text[i], up to eight of them: their value
-// and their number. It takes eight bytes at once, because a loop over digits,
-// whose number differs from cell to cell, is mostly waiting for branches that
-// were predicted wrongly.
-func digits8(text string, i int) (value uint64, n int) {
-	text = text[i : i+8]
-	w := uint64(text[0]) | uint64(text[1])<<8 | uint64(text[2])<<16 | uint64(text[3])<<24 |
-		uint64(text[4])<<32 | uint64(text[5])<<40 | uint64(text[6])<<48 | uint64(text[7])<<56
-	w ^= 0x3030303030303030 // digits are now 0 to 9, all else is more
-	// The top bit of each byte says that it is no digit; a carry spoils only
-	// bytes behind the first that is none.
-	other := (w + 0x7676767676767676 | w) & 0x8080808080808080
-	n = bits.TrailingZeros64(other) / 8
-	w <<= 64 - 8*uint(n) // zeros in front of the digits
-	w = w*10 + w>>8      // in every second byte: pairs
-	return ((w&0x000000ff000000ff)*(100+1000000<<32) + (w>>16&0x000000ff000000ff)*(1+10000<<32)) >> 32, n
+	return v, i, true
 }

@@ -167,10 +167,9 @@ func (r *reader) readRows(p *plan, seg *segment) (table, *segment, bool) {
 			if broken {
 				seg, broken = r.segmentFor(p, seg, plain.vals[0], len(r.lines)-i), false
 			}
-			seg.line = append(seg.line, l.num)
-			for k, v := range plain.vals {
-				seg.vals[k] = append(seg.vals[k], v)
-			}
+			n := plain.store(seg, r.source, i)
+			i += n - 1
+			lastNum += int32(n - 1)
 			continue
 		}
 		if r.isComment(l) {

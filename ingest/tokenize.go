@@ -275,17 +275,17 @@ func (s *source) detectDelimiter() {
 	var score [len(choices)]float64
 	var cells []span
 	n := len(s.lines)
-	looked := 0
 	look := func(l line) {
 		if s.isComment(l) {
 			return
 		}
-		text := s.lineText(l)
-		looked++
+		var has [256]bool
+		for _, c := range []byte(s.text[l.start:l.end]) {
+			has[c] = true
+		}
+		has[blanks] = has[blanks] || has['\t']
 		for i, c := range choices {
-			if c.delim == blanks && strings.IndexByte(text, ' ') < 0 && strings.IndexByte(text, '\t') < 0 ||
-				c.delim != blanks && strings.IndexByte(text, c.delim) < 0 ||
-				c.decimal == ',' && strings.IndexByte(text, ',') < 0 {
+			if !has[c.delim] || c.decimal == ',' && !has[','] {
 				continue
 			}
 			s.delim = c.delim

@@ -7,6 +7,7 @@ import (
 	"math"
 	"regexp"
 	"strings"
+	"sync"
 
 	"gonum.org/v1/plot"
 	"gonum.org/v1/plot/font"
@@ -229,8 +230,8 @@ func (a *Assessment) temperatureChart() (chart, bool) {
 }
 
 var (
-	svgHead   = regexp.MustCompile(`(?s)^.*?<svg[^>]*>`)
-	textStyle = regexp.MustCompile(`style="font-family:[^"]*fill:([^;"]+)"`)
+	svgHead   = sync.OnceValue(func() *regexp.Regexp { return regexp.MustCompile(`(?s)^.*?<svg[^>]*>`) })
+	textStyle = sync.OnceValue(func() *regexp.Regexp { return regexp.MustCompile(`style="font-family:[^"]*fill:([^;"]+)"`) })
 )
 
 // svg returns a plot as an svg element without a size of its own; the page's
@@ -241,5 +242,5 @@ func svg(p *plot.Plot) string {
 	var b bytes.Buffer
 	c.WriteTo(&b) // a bytes.Buffer takes everything
 	head := fmt.Sprintf(`<svg viewBox="0 0 %d %d" xmlns="http://www.w3.org/2000/svg" aria-hidden="true">`, chartWidth, chartHeight)
-	return textStyle.ReplaceAllString(head+svgHead.ReplaceAllString(b.String(), ""), `fill="$1"`)
+	return textStyle().ReplaceAllString(head+svgHead().ReplaceAllString(b.String(), ""), `fill="$1"`)
 }

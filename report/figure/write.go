@@ -9,6 +9,7 @@ import (
 	"regexp"
 	"strconv"
 	"strings"
+	"sync"
 
 	"gonum.org/v1/plot"
 	"gonum.org/v1/plot/font"
@@ -89,13 +90,13 @@ func Write(w io.Writer, parts []Part, format string) error {
 	content := b.Bytes()
 	if format == "pdf" {
 		// Same input, same bytes: the time of writing is left out.
-		content = pdfDate.ReplaceAll(content, []byte("${1}20000101000000"))
+		content = pdfDate().ReplaceAll(content, []byte("${1}20000101000000"))
 	}
 	_, err := w.Write(content)
 	return err
 }
 
-var pdfDate = regexp.MustCompile(`(/(?:Creation|Mod)Date \(D:)\d{14}`)
+var pdfDate = sync.OnceValue(func() *regexp.Regexp { return regexp.MustCompile(`(/(?:Creation|Mod)Date \(D:)\d{14}`) })
 
 // sheet draws one part: title, then all panels with equal data areas.
 func sheet(c draw.Canvas, part Part) {
@@ -175,7 +176,9 @@ var properties = strings.NewReplacer("#000001", "var(--ink)", "#000002", "var(--
 
 // textStyle is how the canvas sets the font of a text, which the style sheet
 // of the page does instead.
-var textStyle = regexp.MustCompile(`transform="scale\(1, -1\)"\s+style="font-family:[^"]*fill:([^;"]+)"`)
+var textStyle = sync.OnceValue(func() *regexp.Regexp {
+	return regexp.MustCompile(`transform="scale\(1, -1\)"\s+style="font-family:[^"]*fill:([^;"]+)"`)
+})
 
 // SVG returns the figure as an svg element without a size of its own, and
 // where the data lie in it. It is for a page whose style sheet sets the font
@@ -193,7 +196,7 @@ func (p Panel) SVG(width, height float64) (string, Area) {
 	svg := b.String()
 	svg = fmt.Sprintf(`<svg viewBox="0 0 %g %g" xmlns="http://www.w3.org/2000/svg">`, width, height) + svg[strings.Index(svg, "<g transform"):]
 	svg = properties.Replace(compactPaths(svg))
-	svg = textStyle.ReplaceAllString(svg, `transform="scale(1,-1)" fill="$1"`)
+	svg = textStyle().ReplaceAllString(svg, `transform="scale(1,-1)" fill="$1"`)
 	return svg, Area{
 		Left: float64(data.Min.X) / width, Right: float64(data.Max.X) / width,
 		Top: 1 - float64(data.Max.Y)/height, Bottom: 1 - float64(data.Min.Y)/height,

@@ -2,11 +2,10 @@ package ingest
 
 import (
 	"bytes"
+	"errors"
 	"fmt"
 	"slices"
 	"strings"
-
-	"github.com/xuri/excelize/v2"
 )
 
 // splitSheet cuts "file.xlsx#sheet" in two.
@@ -35,50 +34,39 @@ func readSpreadsheet(name string, data []byte, sheet string, o Options) (*parsed
 }
 
 // openSheet turns a sheet into a source whose lines are its rows.
-func openSheet(name string, data []byte, sheet string, o Options) (src *source, err error) {
+func openSheet(name string, data []byte, sheet string, o Options) (*source, error) {
 	bad := func(found, expected, hint string) *Error {
 		return &Error{File: name, Found: found, Expected: expected, Hint: hint, bare: true}
 	}
-	// Note: the library may panic on a damaged archive; for the user that is a
-	// damaged file like any other.
-	defer func() {
-		if r := recover(); r != nil {
-			src, err = nil, bad("a damaged one", "a spreadsheet", "save it again, or export CSV")
-		}
-	}()
-	f, oerr := excelize.OpenReader(bytes.NewReader(data), excelize.Options{RawCellValue: true, UnzipSizeLimit: o.MaxBytes, UnzipXMLSizeLimit: o.MaxBytes})
-	if oerr != nil {
+	book, oerr := openXLSX(data, o.MaxBytes)
+	switch {
+	case errors.Is(oerr, ErrTooLarge):
+		return nil, tooLarge(name, o.MaxBytes)
+	case oerr != nil:
 		return nil, bad(shorten(oneLine(oerr.Error())), "a spreadsheet (.xlsx)", "save it again, or export CSV")
 	}
-	defer f.Close()
-	sheets := f.GetSheetList()
+	var names []string
+	for _, s := range book.sheets {
+		names = append(names, s.name)
+	}
+	at := 0
 	switch {
-	case len(sheets) == 0:
+	case len(names) == 0:
 		return nil, bad("none", "a spreadsheet with sheets", "")
-	case sheet == "":
-		sheet = sheets[0]
-	case !slices.Contains(sheets, sheet):
-		i := slices.IndexFunc(sheets, func(s string) bool { return strings.EqualFold(s, sheet) })
-		if i < 0 {
-			e := bad(fmt.Sprintf("no %q", sheet), "a sheet of "+strings.Join(sheets, ", "), "")
+	case sheet != "":
+		if at = slices.Index(names, sheet); at < 0 {
+			at = slices.IndexFunc(names, func(s string) bool { return strings.EqualFold(s, sheet) })
+		}
+		if at < 0 {
+			e := bad(fmt.Sprintf("no %q", sheet), "a sheet of "+strings.Join(names, ", "), "")
 			e.Err = ErrUsage
 			return nil, e
 		}
-		sheet = sheets[i]
 	}
-	rows, rerr := f.Rows(sheet)
-	if rerr != nil {
-		return nil, bad(shorten(oneLine(rerr.Error())), "a sheet of cells", "export CSV")
-	}
-	defer rows.Close()
-	src = &source{name: name, delim: cellMark, decimal: '.', sheet: sheet}
+	src := &source{name: name, delim: cellMark, decimal: '.', sheet: names[at]}
 	var b strings.Builder
 	clean := strings.NewReplacer("\n", " ", "\r", " ", string(rune(cellMark)), " ")
-	for num := int32(1); rows.Next(); num++ {
-		cells, cerr := rows.Columns()
-		if cerr != nil {
-			return nil, &Error{File: name, Line: int(num), Found: shorten(oneLine(cerr.Error())), Expected: "a row of cells", Hint: "save it again, or export CSV", bare: true}
-		}
+	rerr := book.rows(book.sheets[at], func(num int, cells []string) error {
 		start := b.Len()
 		empty := true
 		for i, c := range cells {
@@ -90,14 +78,18 @@ func openSheet(name string, data []byte, sheet string, o Options) (src *source, 
 			b.WriteString(c)
 		}
 		if !empty {
-			src.lines = append(src.lines, line{int32(start), int32(b.Len()), num})
+			src.lines = append(src.lines, line{int32(start), int32(b.Len()), int32(num)})
 		}
 		if int64(b.Len()) > o.MaxBytes {
-			return nil, tooLarge(name, o.MaxBytes)
+			return ErrTooLarge
 		}
-	}
-	if rerr := rows.Error(); rerr != nil {
-		return nil, bad(shorten(oneLine(rerr.Error())), "a sheet of cells", "export CSV")
+		return nil
+	})
+	switch {
+	case errors.Is(rerr, ErrTooLarge):
+		return nil, tooLarge(name, o.MaxBytes)
+	case rerr != nil:
+		return nil, bad(shorten(oneLine(rerr.Error())), "a sheet of cells", "save it again, or export CSV")
 	}
 	src.text = b.String()
 	src.detectDecimal()

@@ -11,14 +11,55 @@ import (
 )
 
 // sortedOrder returns the indices of v in ascending order, equal values in the
-// order they stand.
+// order they stand. It merges neighbouring runs that are in order, so that
+// several passes through the frequencies cost little.
 func sortedOrder(v []float64) []int {
-	order := make([]int, len(v))
-	for i := range order {
-		order[i] = i
+	type point struct {
+		v float64
+		i int
 	}
-	if !slices.IsSorted(v) {
-		slices.SortStableFunc(order, func(a, b int) int { return cmp.Compare(v[a], v[b]) })
+	points := make([]point, len(v))
+	starts := []int{0} // of the runs
+	if descending(v) { // one run from the end
+		for i := range points {
+			k := len(v) - 1 - i
+			points[i] = point{v[k], k}
+		}
+	} else {
+		for i, x := range v {
+			points[i] = point{x, i}
+			if i > 0 && cmp.Less(x, v[i-1]) {
+				starts = append(starts, i)
+			}
+		}
+	}
+	for spare := make([]point, len(v)*min(1, len(starts)-1)); len(starts) > 1; points, spare = spare, points {
+		merged := starts[:0]
+		for r := 0; r < len(starts); r += 2 {
+			from, mid, end := starts[r], len(v), len(v)
+			if r+1 < len(starts) {
+				mid = starts[r+1]
+			}
+			if r+2 < len(starts) {
+				end = starts[r+2]
+			}
+			merged = append(merged, from)
+			i, j := from, mid
+			for k := from; k < end; k++ {
+				if i < mid && (j >= end || !cmp.Less(points[j].v, points[i].v)) {
+					spare[k] = points[i]
+					i++
+				} else {
+					spare[k] = points[j]
+					j++
+				}
+			}
+		}
+		starts = merged
+	}
+	order := make([]int, len(v))
+	for i, p := range points {
+		order[i] = p.i
 	}
 	return order
 }
@@ -154,6 +195,15 @@ func (p *parsed) fault(e *Error) {
 
 func (p *parsed) drop(line int32, reason string) {
 	p.dropped = append(p.dropped, Dropped{int(line), reason})
+}
+
+func descending(f []float64) bool {
+	for i := 1; i < len(f); i++ {
+		if !(f[i] < f[i-1]) {
+			return false
+		}
+	}
+	return true
 }
 
 func ascending(f []float64) bool {

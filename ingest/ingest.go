@@ -106,6 +106,8 @@ type Options struct {
 	Reference float64
 	// MaxBytes is the largest input read; 0 means DefaultMaxBytes.
 	MaxBytes int64
+
+	general bool // all rows go the general way; for tests of the plain one
 }
 
 func (o *Options) orDefault() Options {

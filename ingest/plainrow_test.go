@@ -1,8 +1,10 @@
 package ingest
 
 import (
+	"bytes"
 	"fmt"
 	"math"
+	"math/rand/v2"
 	"strconv"
 	"strings"
 	"testing"
@@ -28,18 +30,120 @@ func FuzzDecimal(f *testing.F) {
 }
 
 func TestDecimalMatchesParseFloat(t *testing.T) {
+	answered := 0
 	rapid.Check(t, func(t *rapid.T) {
-		v := rapid.Float64().Draw(t, "v")
+		v := rapid.OneOf(rapid.Float64(), rapid.Float64Range(-1e6, 1e6), rapid.Float64Range(9e15, 9.1e15)).Draw(t, "v")
 		format := rapid.SampledFrom([]byte{'e', 'f', 'g'}).Draw(t, "format")
-		s := strconv.FormatFloat(v, format, rapid.IntRange(-1, 14).Draw(t, "digits"), 64)
-		got, end, ok := decimal(s, 0)
+		s := strconv.FormatFloat(v, format, rapid.IntRange(-1, 18).Draw(t, "digits"), 64)
+		got, end, ok := decimal(s+",1", 0)
 		if !ok {
 			return
 		}
-		if want, err := strconv.ParseFloat(s[:end], 64); err != nil || math.Float64bits(got) != math.Float64bits(want) {
+		answered++
+		if want, err := strconv.ParseFloat(s, 64); err != nil || end != len(s) || math.Float64bits(got) != math.Float64bits(want) {
 			t.Fatalf("%q: %v, want %v", s, got, want)
 		}
 	})
+	if answered < 20 {
+		t.Errorf("only %d numbers were read the short way", answered)
+	}
+}
+
+// Up to 2⁵³ every integer is exact; beyond it the short way must not answer.
+func TestDecimalLimits(t *testing.T) {
+	for s, want := range map[string]bool{
+		"9007199254740992": true, "9007199254740993": false, "-9007199254740991e20": true, "1e22": true, "1e23": false, "1e-22": true, "1e-23": false,
+		"0.000000000000000001": true, "0.0000000000000000001": false, "0000000000000000001": true, "00000000000000000001": false,
+		"36893488147419103233": false, "1e37": false, "9.9e36": false, "": false, "-": false, ".": false, "1e": false,
+	} {
+		if _, _, ok := decimal(s, 0); ok != want {
+			t.Errorf("%q: %v", s, ok)
+		}
+	}
+}
+
+// sameReading compares what two readings gave, errors and reports included.
+func sameReading(t *testing.T, data string, o Options) {
+	t.Helper()
+	describe := func(general bool) string {
+		o := o
+		o.general = general
+		var b strings.Builder
+		sweeps, err := Read("a.csv", strings.NewReader(data), &o)
+		show := func(r *Reading) {
+			if r != nil {
+				if err := r.WriteText(&b); err != nil {
+					t.Fatal(err)
+				}
+			}
+		}
+		if e, ok := err.(*Error); ok {
+			fmt.Fprintf(&b, "%v %d %d %v\n", e, e.Line, e.Column, e.Err)
+			show(e.Reading)
+		}
+		for _, s := range sweeps {
+			fmt.Fprintf(&b, "%s %s %+v %v %q %v %v %s\n", s.Part, s.Lot, s.Metadata, s.Dropped, s.Warnings, s.Reference, s.Connection, s.SHA256)
+			show(&s.Reading)
+			for i, f := range s.Freq {
+				fmt.Fprintf(&b, "%x %x\n", math.Float64bits(f), []uint64{math.Float64bits(real(s.Z[i])), math.Float64bits(imag(s.Z[i]))})
+			}
+		}
+		return b.String()
+	}
+	if plain, general := describe(false), describe(true); plain != general {
+		t.Errorf("%q\nplain way:\n%s\ngeneral way:\n%s", data, plain, general)
+	}
+}
+
+const plainSweep = "frequency_hz,impedance_ohm,phase_deg\n100,161.7212,-89.94513\n105.925373,152.8329,-90.10162\n112.201845,144.2961,-89.87\n118.850223,1.36194e2,-89.91\n125.892541,128.5,-89.9\n"
+
+// FuzzPlainRow: all rows the general way give the same.
+func FuzzPlainRow(f *testing.F) {
+	f.Add(plainSweep, false)
+	f.Add(strings.ReplaceAll(plainSweep, "\n", "\r\n"), true)
+	f.Add("Range;f (kHz);|Z| (mOhm);Note\n3;1;2;x\n3;2;-1;\n", false)
+	f.Add("f (Hz),R (Ohm),X (Ohm)\n1,2,3\n2,9.9E37,4\n3,,4\n\n1,2,3,4\n2,0x1p3,1_0\n", true)
+	f.Fuzz(func(t *testing.T, data string, columns bool) {
+		o := Options{}
+		if columns {
+			o.Columns = Columns{"f": "1", "z": "2", "phase": "3"}
+		}
+		sameReading(t, data, o)
+	})
+}
+
+// Rows with something wrong in them have the same errors and the same place.
+func TestPlainRowAgreesOnDamage(t *testing.T) {
+	scraps := []string{",", "\n", "\n\n", " ", "\"", "-", "1", "999999999999999999", "e5", "E-300", ".", "OL", ",,", "\t", "#", "\r\n", "0x1p-3", "1_0", "9.9E37", ";", "+", "\u2212",
+		"\nfrequency_hz,impedance_ohm,phase_deg\n", "\n5,6\n", "\n5,6,7,8\n", "\n-1,2,3\n", "\n0,2,3\n", "\n7,0,3\n", "\n8,-1,3\n", "1.0000000000000000000001", "000000000000000000000000", "123456789.123456789"}
+	rng := rand.New(rand.NewPCG(1, 1))
+	for range 1500 {
+		text := plainSweep
+		for range 1 + rng.IntN(3) {
+			at := rng.IntN(len(text))
+			text = text[:at] + scraps[rng.IntN(len(scraps))] + text[min(len(text), at+rng.IntN(3)):]
+		}
+		o := Options{}
+		if rng.IntN(4) == 0 {
+			o.Columns = Columns{"f": "1", "z": "2", "phase": "3"}
+		}
+		sameReading(t, text, o)
+	}
+}
+
+// A row costs no allocation.
+func TestRowsDoNotAllocate(t *testing.T) {
+	count := func(points int) float64 {
+		data := benchText(points)
+		return testing.AllocsPerRun(5, func() {
+			if _, err := Read("a.csv", bytes.NewReader(data), nil); err != nil {
+				t.Fatal(err)
+			}
+		})
+	}
+	if few, many := count(201), count(20001); many > few+5 {
+		t.Errorf("%v allocations for 201 points, %v for 20,001", few, many)
+	}
 }
 
 // The plain way and the general way read the same: a quoted cell or another

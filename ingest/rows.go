@@ -152,7 +152,10 @@ func (r *reader) readRows(p *plan, seg *segment) (table, *segment, bool) {
 	var cells []span
 	broken := true // something stood between: the next row may start a new part
 	lastNum := int32(-1)
-	plain := newPlainRow(r.source, p)
+	var plain *plainRow
+	if !r.opt.general {
+		plain = newPlainRow(r.source, p)
+	}
 	// A row is read into these and stored when all its cells are good.
 	row := make([]float64, len(p.cols))
 	crow := make([]complex128, len(p.cols))

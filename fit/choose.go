@@ -179,6 +179,9 @@ func (a *Analysis) fitAll(freq []float64, z []complex128, tried []models.Model, 
 		fit = race
 	}
 	outcomes, err := fit(problems)
+	if pts != nil {
+		pts.release()
+	}
 	if err != nil {
 		return err
 	}

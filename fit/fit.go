@@ -176,6 +176,7 @@ func Fit(freq []float64, z []complex128, c *models.Circuit, settings *Settings) 
 	if err != nil {
 		return nil, err
 	}
+	defer pts.release()
 	p := newProblem(c, pts, s.Weight, s)
 	solution, err := p.solve()
 	if err != nil {
@@ -323,7 +324,6 @@ func (s *Settings) points(freq []float64, z []complex128) (*points, error) {
 		low, high = min(low, squares), max(high, squares)
 	}
 	pts.low, pts.high = math.Sqrt(low), math.Sqrt(high)
-	pts.noise = newNoise(z, pts.inverse)
 	if s.Weight == SParameter {
 		pts.s = s.S
 		if pts.s == nil {
@@ -387,7 +387,7 @@ func (p *problem) solve() (*lm.Result, error) {
 	}
 	if x := p.given(); x != nil {
 		r, err := p.fromStart(x)
-		if err == nil && p.weight == Relative && p.noise.explains(r.Cost, len(p.freq)) {
+		if err == nil && p.weight == Relative && p.describes(r.Cost, len(p.freq)) {
 			return r, nil
 		}
 	}
@@ -424,7 +424,7 @@ func (p *problem) solveFrom(search *search) (*lm.Result, error) {
 
 // atNoise reports whether a solution describes the sweep to its noise.
 func (p *problem) atNoise(r *lm.Result) bool {
-	return p.weight == Relative && r.Status.Converged() && p.noise.explains(r.Cost, len(p.freq))
+	return p.weight == Relative && r.Status.Converged() && p.describes(r.Cost, len(p.freq))
 }
 
 // fromStart goes from starting values to a minimum: most of the way on a few
@@ -456,7 +456,7 @@ func (p *problem) searcher(lower, upper []float64) lm.Settings {
 // solver stalled: in the flat valley of a parameter that is not determined,
 // the decrease that is left is lost in the rounding of the cost.
 func (p *problem) settle(solution *lm.Result) {
-	if solution.Status == lm.Stalled && p.weight == Relative && p.noise.explains(solution.Cost, len(p.freq)) {
+	if solution.Status == lm.Stalled && p.weight == Relative && p.describes(solution.Cost, len(p.freq)) {
 		solution.Status = lm.CostConvergence
 		solution.Reason += "; the residuals are at the noise of the points"
 	}

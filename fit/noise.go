@@ -1,12 +1,19 @@
 package fit
 
-import "math"
+import (
+	"math"
+	"slices"
+	"sync"
+)
 
 // noise tells how well a smooth sweep could be described at all: it holds the
 // sizes of the third differences of ln Z over neighbouring points, real and
 // imaginary parts, to which a smooth sweep does not contribute, in units of
 // the standard deviation of one part of ln Z.
-type noise struct{ sizes []float64 }
+type noise struct {
+	sizes  []float64
+	memory *[]float64
+}
 
 // newNoise takes impedances in Ω at rising frequencies and their reciprocals.
 func newNoise(z, inverse []complex128) *noise {
@@ -14,15 +21,20 @@ func newNoise(z, inverse []complex128) *noise {
 	if len(z) < least {
 		return &noise{}
 	}
-	n := &noise{sizes: make([]float64, 0, 2*len(z))}
+	n := &noise{}
+	n.memory = borrow(2 * len(z))
+	n.sizes = (*n.memory)[:0]
 	scale := 1 / math.Sqrt(20) // 1 + 9 + 9 + 1
-	_, before := second(z, inverse, 2)
+	// The exponentials of first and second differences, and their reciprocals.
+	rise, fall := z[2]*inverse[1], z[1]*inverse[2]
+	unbend := fall * (z[1] * inverse[0])
 	for i := 3; i < len(z); i++ {
-		bend, unbend := second(z, inverse, i)
+		nextRise, nextFall := z[i]*inverse[i-1], z[i-1]*inverse[i]
+		q := nextRise * fall * unbend
+		unbend = nextFall * rise
+		rise, fall = nextRise, nextFall
 		// Sizes far below 1 matter alone, so that q − 1 would do for ln q; but
 		// a sweep that bends much between its points must not look smooth.
-		q := bend * before
-		before = unbend
 		a, b := real(q)-1, imag(q)
 		if math.Abs(a)+math.Abs(b) > 0.01 {
 			a, b = logRatio(q)
@@ -32,11 +44,31 @@ func newNoise(z, inverse []complex128) *noise {
 	return n
 }
 
-// second returns the exponential of the second difference of ln Z that ends at
-// point i, and its reciprocal.
-func second(z, inverse []complex128, i int) (bend, unbend complex128) {
-	middle, un := z[i-1], inverse[i-1]
-	return (z[i] * un) * (z[i-2] * un), (inverse[i] * middle) * (inverse[i-2] * middle)
+// describes reports whether a cost over so many points of the sweep is
+// explained by its noise, see [noise.explains].
+func (p *points) describes(cost float64, points int) bool {
+	if p.noise == nil {
+		p.noise = newNoise(p.measured, p.inverse)
+	}
+	return p.noise.explains(cost, points)
+}
+
+// release gives memory back that is made again when it is needed.
+func (p *points) release() {
+	if p.noise != nil && p.noise.memory != nil {
+		floats.Put(p.noise.memory)
+	}
+	p.noise = nil
+}
+
+// floats is memory for numbers that nobody keeps.
+var floats = sync.Pool{New: func() any { return new([]float64) }}
+
+// borrow returns memory for n numbers, for floats.Put afterwards.
+func borrow(n int) *[]float64 {
+	memory := floats.Get().(*[]float64)
+	*memory = slices.Grow((*memory)[:0], n)[:n]
+	return memory
 }
 
 // explains reports whether a cost ½Σr² of the relative residual over so many

@@ -2,6 +2,7 @@ package fit
 
 import (
 	"math"
+	"slices"
 	"sync"
 
 	"gonum.org/v1/gonum/mat"
@@ -25,6 +26,11 @@ type problem struct {
 	values []float64 // of all parameters; the fixed ones stay
 	free   []int     // indices of the free parameters
 	scale  float64   // of the soft-L1 loss, in units of the residual; 0: none
+
+	// The last point of which only the cost was asked, which is where a
+	// solve ends, with the model and its relative residuals there.
+	at               []float64
+	model, residuals []complex128
 }
 
 // points is a sweep with what its weighting needs of it.
@@ -36,16 +42,16 @@ type points struct {
 	s        []complex128 // S-parameter of measured, for SParameter
 	magnitude,
 	phase []float64 // stated accuracy of each point, for Accuracy and the meter's part of the uncertainty; nil: none
-	low, high float64 // the least and the largest |Z|
-	noise     *noise
-	shape     *features // see features; nil before
+	low, high float64   // the least and the largest |Z|
+	noise     *noise    // see describes
+	shape     *features // see features
 }
 
 // pick returns the points of rising indices.
 func (p *points) pick(index []int) *points {
 	n := len(index)
 	memory := make([]complex128, 2*n)
-	q := &points{freq: make([]float64, 0, n), measured: memory[:0:n], inverse: memory[n:n], low: p.low, high: p.high, noise: p.noise}
+	q := &points{freq: make([]float64, 0, n), measured: memory[:0:n], inverse: memory[n:n], low: p.low, high: p.high}
 	for _, i := range index {
 		q.freq = append(q.freq, p.freq[i])
 		q.measured = append(q.measured, p.measured[i])
@@ -154,14 +160,30 @@ func (p *problem) robust(a, b float64) (float64, float64) {
 	return a, b
 }
 
-// model sets dst to the impedance in Ω at the points for the present values.
-func (p *problem) model(dst []complex128) {
-	b := p.block()
-	defer blocks.Put(b)
+// modelAt returns the impedance in Ω at the points, and the relative residuals.
+func (p *problem) modelAt(x []float64) (model, residuals []complex128) {
+	if p.model == nil || !slices.Equal(p.at, x) {
+		p.set(x)
+		b := p.block()
+		defer blocks.Put(b)
+		p.keep(b)
+	}
+	model, residuals = p.model, p.residuals
+	p.model, p.residuals = nil, nil
+	return model, residuals
+}
+
+// keep evaluates model and residuals for the present values.
+func (p *problem) keep(b *block) {
+	if p.model == nil {
+		memory := make([]complex128, 2*len(p.freq))
+		p.model, p.residuals = memory[:len(p.freq):len(p.freq)], memory[len(p.freq):]
+	}
 	for from := 0; from < len(p.freq); from += models.BlockSize {
 		to := min(from+models.BlockSize, len(p.freq))
-		b.evaluator.Block(from, to, p.values, dst[from:to], nil)
+		b.evaluator.Block(from, to, p.values, p.model[from:to], nil)
 	}
+	logRatios(p.residuals, p.model, p.inverse)
 }
 
 // pair returns the two parts of the weighted residual of point i.
@@ -238,37 +260,24 @@ func (p *problem) normal(jtj, jtr, x []float64) (squares float64) {
 	p.set(x)
 	b := p.block()
 	defer blocks.Put(b)
-	dz := b.dz
-	if jtj == nil {
-		dz = nil
+	relative := p.weight == Relative && p.scale == 0
+	if jtj == nil && relative {
+		p.keep(b)
+		p.at = append(p.at[:0], x...)
+		for _, r := range p.residuals {
+			squares += real(r)*real(r) + imag(r)*imag(r)
+		}
+		return squares
 	}
 	clear(jtj)
 	clear(jtr)
 	for from := 0; from < len(p.freq); from += models.BlockSize {
 		to := min(from+models.BlockSize, len(p.freq))
-		z, rho, weight := b.z[:to-from], b.rho[:to-from], b.weight[:to-from]
-		b.evaluator.Block(from, to, p.values, z, dz)
-		if p.weight == Relative && p.scale == 0 {
-			logRatios(rho, z, p.inverse[from:to])
-			for i, r := range rho {
-				squares += real(r)*real(r) + imag(r)*imag(r)
-				if jtj != nil {
-					re, im := real(z[i]), imag(z[i])
-					weight[i] = 1 / (re*re + im*im)
-					rho[i] = complex(re*real(r)-im*imag(r), re*imag(r)+im*real(r))
-				}
-			}
+		b.evaluator.Block(from, to, p.values, b.z[:], b.dz)
+		if relative {
+			squares += b.weigh(p.inverse[from:to])
 		} else {
-			for i := range rho {
-				a, c := p.pair(from+i, z[i])
-				if jtj != nil {
-					p.row(b.dz, i, from+i, z[i])
-					weight[i] = 1
-				}
-				a, c = p.robust(a, c)
-				rho[i] = complex(a, c)
-				squares += a*a + c*c
-			}
+			squares += p.weigh(b, from, to)
 		}
 		if jtj != nil {
 			p.accumulate(jtj, jtr, b, to-from)
@@ -279,6 +288,34 @@ func (p *problem) normal(jtj, jtr, x []float64) (squares float64) {
 		for l := range k {
 			jtj[l*n+k] = jtj[k*n+l]
 		}
+	}
+	return squares
+}
+
+// weigh sets w and ρ of a block of points of the relative residual from z, and
+// returns Σ|r|².
+func (b *block) weigh(inverse []complex128) (squares float64) {
+	z, rho, weight := b.z[:len(inverse)], b.rho[:len(inverse)], b.weight[:len(inverse)]
+	logRatios(rho, z, inverse)
+	for i, r := range rho {
+		re, im := real(z[i]), imag(z[i])
+		weight[i] = 1 / (re*re + im*im)
+		squares += real(r)*real(r) + imag(r)*imag(r)
+		rho[i] = complex(re*real(r)-im*imag(r), re*imag(r)+im*real(r))
+	}
+	return squares
+}
+
+// weigh is block.weigh for any residual; w is 1, and the columns ∂z/∂x become
+// those of the residual.
+func (p *problem) weigh(b *block, from, to int) (squares float64) {
+	for i := from; i < to; i++ {
+		k := i - from
+		first, second := p.robust(p.pair(i, b.z[k]))
+		p.row(b.dz, k, i, b.z[k])
+		b.weight[k] = 1
+		b.rho[k] = complex(first, second)
+		squares += first*first + second*second
 	}
 	return squares
 }

@@ -87,7 +87,7 @@ func race(problems []*problem) ([]*outcome, error) {
 		if err != nil {
 			return nil, err
 		}
-		if r.atNoise = p.noise.explains(solution.Cost, len(p.freq)); !r.atNoise {
+		if r.atNoise = p.describes(solution.Cost, len(p.freq)); !r.atNoise {
 			continue
 		}
 		if !described && !solution.Status.Converged() {

@@ -74,7 +74,7 @@ func (q *search) run(noiseIsEnough bool, rounds, repeats int) {
 // atNoise reports whether the best minimum describes the thinned sweep to its
 // noise.
 func (q *search) atNoise() bool {
-	return len(q.best) > 0 && q.whole.noise.explains(q.best[0].cost, len(q.thinned.freq))
+	return len(q.best) > 0 && q.whole.describes(q.best[0].cost, len(q.thinned.freq))
 }
 
 // solve goes to the minimum from a start.

@@ -22,7 +22,10 @@ func thin(freq []float64, z []complex128, n int) []int {
 	// below 1 these are the differences of the logarithms, and no step counts
 	// for more than 2.
 	wayF, wayZ := 0.0, 0.0
-	stepF, stepZ := make([]float64, len(freq)), make([]float64, len(freq))
+	steps := borrow(2 * len(freq))
+	defer floats.Put(steps)
+	clear(*steps)
+	stepF, stepZ := (*steps)[:len(freq)], (*steps)[len(freq):]
 	for i, v := range z {
 		if i == 0 {
 			continue

@@ -29,7 +29,6 @@ func evaluate(p *problem, s *Settings, x []float64, solution *lm.Result) *Result
 	r := &Result{
 		Circuit: p.circuit, Weight: p.weight, Robust: s.Robust, Free: p.free,
 		Freq: p.freq, Measured: p.measured,
-		Model: make([]complex128, n), Residuals: make([]complex128, n),
 		Status: solution.Status, Reason: solution.Reason, Iterations: solution.Iterations,
 		Evaluations:      solution.ResidualEvaluations + solution.JacobianEvaluations,
 		DegreesOfFreedom: 2*n - len(p.free),
@@ -39,12 +38,12 @@ func evaluate(p *problem, s *Settings, x []float64, solution *lm.Result) *Result
 		i, _ := p.circuit.Index(name)
 		p.values[i] = v
 	}
+	r.Model, r.Residuals = p.modelAt(x)
 	p.set(x)
-	p.model(r.Model)
-	logRatios(r.Residuals, r.Model, p.inverse)
 	sum, largest, at := 0.0, 0.0, 0
-	parts := make([]float64, 2*n)
-	re, im := parts[:n], parts[n:]
+	parts := borrow(2 * n)
+	defer floats.Put(parts)
+	re, im := (*parts)[:n], (*parts)[n:]
 	for i, rho := range r.Residuals {
 		a, b := real(rho), imag(rho)
 		re[i], im[i] = a, b

@@ -3,6 +3,7 @@ package models
 import (
 	"fmt"
 	"math"
+	"slices"
 	"sync"
 )
 
@@ -23,7 +24,7 @@ type Grid struct {
 	inverse []float64 // 1/ω
 	log     []float64 // ln ω, see logs
 	once    sync.Once // for log
-	buffer  []float64 // that the four are cut from
+	buffer  []float64 // that the first three are cut from
 }
 
 // NewGrid returns a grid of frequencies in Hz. It panics unless each is
@@ -47,14 +48,14 @@ func (g *Grid) Set(freq []float64) {
 		}
 	}
 	n := len(freq)
-	if cap(g.buffer) < 4*n {
-		g.buffer = make([]float64, 4*n)
+	if cap(g.buffer) < 3*n {
+		g.buffer = make([]float64, 3*n)
 	}
 	cut := func(i int) []float64 { return g.buffer[i*n : (i+1)*n : (i+1)*n] }
 	g.buffer = g.buffer[:cap(g.buffer)]
 	g.freq = cut(0)
 	copy(g.freq, freq) // first: it may overlap with what is replaced
-	g.omega, g.inverse, g.log = cut(1), cut(2), cut(3)
+	g.omega, g.inverse = cut(1), cut(2)
 	g.once = sync.Once{}
 	for i, f := range g.freq {
 		omega := 2 * math.Pi * f
@@ -66,8 +67,9 @@ func (g *Grid) Set(freq []float64) {
 // logs returns ln ω, which few elements need.
 func (g *Grid) logs() []float64 {
 	g.once.Do(func() {
-		for i, omega := range g.omega {
-			g.log[i] = math.Log(omega)
+		g.log = slices.Grow(g.log[:0], len(g.omega))
+		for _, omega := range g.omega {
+			g.log = append(g.log, math.Log(omega))
 		}
 	})
 	return g.log

@@ -3,6 +3,7 @@ package ingest
 import (
 	"slices"
 	"strings"
+	"sync"
 	"unicode"
 	"unicode/utf8"
 )
@@ -28,8 +29,39 @@ func (h heading) known() bool { return h.role != roleNone }
 // maxHeading is the longest header cell, in bytes, that is looked at.
 const maxHeading = 200
 
+// seenHeadings keeps what header cells say: the files of a folder mostly have the
+// same header, and to recognise it takes as long as to read dozens of rows.
+var seenHeadings = struct {
+	sync.RWMutex
+	of map[string]heading
+}{of: map[string]heading{}}
+
+// maxSeen bounds seenHeadings.
+const maxSeen = 1000
+
 // readHeading recognises one header cell.
 func readHeading(text string) heading {
+	seenHeadings.RLock()
+	h, ok := seenHeadings.of[text]
+	seenHeadings.RUnlock()
+	switch {
+	case ok:
+		return h
+	case len(text) > maxHeading:
+		return recogniseHeading(text)
+	}
+	text = strings.Clone(text) // not to keep the file
+	h = recogniseHeading(text)
+	seenHeadings.Lock()
+	if len(seenHeadings.of) < maxSeen {
+		seenHeadings.of[text] = h
+	}
+	seenHeadings.Unlock()
+	return h
+}
+
+// recogniseHeading does the work of readHeading.
+func recogniseHeading(text string) heading {
 	h := heading{text: strings.TrimSpace(text)}
 	t := strings.ReplaceAll(h.text, `""`, `"`)
 	t = strings.TrimSpace(tidy(strings.Trim(t, `"`)))

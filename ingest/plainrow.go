@@ -62,17 +62,22 @@ func newPlainRow(s *source, p *plan) *plainRow {
 // store appends the row in vals, which is line i, and the plain rows that follow
 // without a gap. It returns how many that makes.
 func (pr *plainRow) store(seg *segment, s *source, i int) int {
-	from := i
+	text, lines := s.text, s.lines[i:]
+	columns := seg.vals[:len(pr.vals)]
+	n := 0
 	for {
-		l := s.lines[i]
-		seg.line = append(seg.line, l.num)
 		for k, v := range pr.vals {
-			seg.vals[k] = append(seg.vals[k], v)
+			columns[k] = append(columns[k], v)
 		}
-		if i++; i >= len(s.lines) || s.lines[i].num != l.num+1 || !pr.read(s.text, s.lines[i]) {
-			return i - from
+		num := lines[n].num
+		if n++; n == len(lines) || lines[n].num != num+1 || !pr.read(text, lines[n]) {
+			break
 		}
 	}
+	for _, l := range lines[:n] {
+		seg.line = append(seg.line, l.num)
+	}
+	return n
 }
 
 // read reads a line into vals; false means that the line is not plain.

@@ -289,17 +289,22 @@ func (s *source) detectDelimiter() {
 				continue
 			}
 			s.delim = c.delim
-			cells = s.split(l, cells)
 			numbers := 0
-			total := 0
-			for _, cell := range cells {
-				t := s.cell(cell)
-				if t == "" {
-					continue
-				}
-				total++
-				if looksNumber(t, c.decimal) {
-					numbers++
+			if c.delim != blanks && c.decimal == '.' {
+				numbers = s.onlyNumbers(l)
+			}
+			total := numbers
+			if numbers == 0 {
+				cells = s.split(l, cells)
+				for _, cell := range cells {
+					t := s.cell(cell)
+					if t == "" {
+						continue
+					}
+					total++
+					if looksNumber(t, c.decimal) {
+						numbers++
+					}
 				}
 			}
 			if numbers >= 2 {
@@ -328,6 +333,24 @@ func (s *source) detectDelimiter() {
 				}
 			}
 		}
+	}
+}
+
+// onlyNumbers counts the cells of a line that has nothing but plain numbers with
+// decimal points, 0 for any other line. It is a quick look.
+func (s *source) onlyNumbers(l line) int {
+	i, end := int(l.start), int(l.end)
+	for n := 1; ; n++ {
+		_, next, ok := decimal(s.text, i)
+		switch {
+		case !ok:
+			return 0
+		case next >= end:
+			return n
+		case s.text[next] != s.delim:
+			return 0
+		}
+		i = next + 1
 	}
 }
 

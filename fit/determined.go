@@ -6,7 +6,6 @@ import (
 
 	"gonum.org/v1/gonum/stat/distuv"
 
-	"realpart/fit/lm"
 	"realpart/models"
 )
 
@@ -77,7 +76,7 @@ func (r *Result) withoutElement(i int) (probability, cost float64, ok bool) {
 		x := p.unknowns()
 		clamp(x, lower, upper)
 		settings := p.solver(lower, upper)
-		solution, err := lm.Solve(p.lm(), x, &settings)
+		solution, err := p.minimise(x, &settings)
 		if err != nil {
 			return 0, 0, false
 		}

@@ -302,12 +302,9 @@ func sortedKeys[V any](m map[string]V) []string {
 	return keys
 }
 
-// safe is a square of a magnitude that has a reciprocal.
-const safe = 1e-290
-
 // points prepares a sweep for the problem.
 func (s *Settings) points(freq []float64, z []complex128) (*points, error) {
-	pts := &points{freq: freq, measured: z, inverse: make([]complex128, len(z)), grid: models.NewGrid(freq)}
+	pts := &points{freq: freq, measured: z}
 	low, high := math.Inf(1), 0.0 // |Z|²
 	for i, v := range z {
 		squares := real(v)*real(v) + imag(v)*imag(v)
@@ -315,11 +312,7 @@ func (s *Settings) points(freq []float64, z []complex128) (*points, error) {
 			if a := abs(v); !(a > 0) || math.IsInf(a, 1) {
 				return nil, &InputError{Found: fmt.Sprintf("Z = %v at %v Hz", v, freq[i]), Expected: "a finite impedance that is not zero"}
 			}
-			pts.inverse[i] = 1 / v
 			squares = min(max(squares, safe), 1/safe)
-		} else {
-			d := 1 / squares
-			pts.inverse[i] = complex(real(v)*d, -imag(v)*d)
 		}
 		low, high = min(low, squares), max(high, squares)
 	}
@@ -433,12 +426,12 @@ func (p *problem) atNoise(r *lm.Result) bool {
 func (p *problem) fromStart(x []float64) (*lm.Result, error) {
 	s := p.settings
 	lower, upper := p.bounds(s)
-	few := max(16, 4*len(x))
-	if len(p.freq) > 2*few && !s.Robust {
-		thinned := newProblem(p.circuit, p.pick(thin(p.freq, p.measured, few)), Relative, s)
-		copy(thinned.values, p.values)
+	few := max(12, 3*len(x))
+	if len(p.freq) > 3*few && !s.Robust {
+		thinned := newProblem(p.circuit, p.pick(spread(p.measured, few)), Relative, s)
 		settings := p.searcher(lower, upper)
-		if r, err := lm.Solve(thinned.lm(), x, &settings); err == nil && r.Status.Converged() {
+		settings.CostTolerance = 1e-2 // the two minima are farther apart
+		if r, err := thinned.minimise(x, &settings); err == nil && r.Status.Converged() {
 			x = r.X
 		}
 	}
@@ -507,13 +500,13 @@ func (p *problem) polish(x, lower, upper []float64, robust bool) (*lm.Result, er
 	settings := p.solver(lower, upper)
 	wanted := p.weight
 	p.weight = Relative
-	r, err := lm.Solve(p.lm(), x, &settings)
+	r, err := p.minimise(x, &settings)
 	p.weight = wanted
 	if err != nil {
 		return nil, err
 	}
 	if wanted != Relative {
-		if r, err = lm.Solve(p.lm(), r.X, &settings); err != nil {
+		if r, err = p.minimise(r.X, &settings); err != nil {
 			return nil, err
 		}
 	}

@@ -10,65 +10,37 @@ import (
 // sizes of the third differences of ln Z over neighbouring points, real and
 // imaginary parts, to which a smooth sweep does not contribute, in units of
 // the standard deviation of one part of ln Z.
-type noise struct {
-	sizes  []float64
-	memory *[]float64
-}
+type noise struct{ sizes []float64 }
 
-// newNoise takes impedances in Ω at rising frequencies and their reciprocals.
-func newNoise(z, inverse []complex128) *noise {
+// measure takes impedances in Ω at rising frequencies and their reciprocals.
+func (n *noise) measure(z, inverse []complex128) {
 	const least = 8
+	n.sizes = n.sizes[:0]
 	if len(z) < least {
-		return &noise{}
+		return
 	}
-	n := &noise{}
-	n.memory = borrow(2 * len(z))
-	n.sizes = (*n.memory)[:0]
+	n.sizes = slices.Grow(n.sizes, 2*len(z)-6)[:2*len(z)-6]
 	scale := 1 / math.Sqrt(20) // 1 + 9 + 9 + 1
 	// The exponentials of first and second differences, and their reciprocals.
 	rise, fall := z[2]*inverse[1], z[1]*inverse[2]
 	unbend := fall * (z[1] * inverse[0])
-	for i := 3; i < len(z); i++ {
-		nextRise, nextFall := z[i]*inverse[i-1], z[i-1]*inverse[i]
+	before := z[2]
+	unbefore := inverse[2]
+	for i, v := range z[3:] {
+		inv := inverse[i+3]
+		nextRise, nextFall := v*unbefore, before*inv
 		q := nextRise * fall * unbend
 		unbend = nextFall * rise
-		rise, fall = nextRise, nextFall
+		rise, fall, before, unbefore = nextRise, nextFall, v, inv
 		// Sizes far below 1 matter alone, so that q − 1 would do for ln q; but
 		// a sweep that bends much between its points must not look smooth.
-		a, b := real(q)-1, imag(q)
-		if math.Abs(a)+math.Abs(b) > 0.01 {
+		a, b := math.Abs(real(q)-1), math.Abs(imag(q))
+		if !(a+b < 0.01) {
 			a, b = logRatio(q)
+			a, b = math.Abs(a), math.Abs(b)
 		}
-		n.sizes = append(n.sizes, math.Abs(a)*scale, math.Abs(b)*scale)
+		n.sizes[2*i], n.sizes[2*i+1] = a*scale, b*scale
 	}
-	return n
-}
-
-// describes reports whether a cost over so many points of the sweep is
-// explained by its noise, see [noise.explains].
-func (p *points) describes(cost float64, points int) bool {
-	if p.noise == nil {
-		p.noise = newNoise(p.measured, p.inverse)
-	}
-	return p.noise.explains(cost, points)
-}
-
-// release gives memory back that is made again when it is needed.
-func (p *points) release() {
-	if p.noise != nil && p.noise.memory != nil {
-		floats.Put(p.noise.memory)
-	}
-	p.noise = nil
-}
-
-// floats is memory for numbers that nobody keeps.
-var floats = sync.Pool{New: func() any { return new([]float64) }}
-
-// borrow returns memory for n numbers, for floats.Put afterwards.
-func borrow(n int) *[]float64 {
-	memory := floats.Get().(*[]float64)
-	*memory = slices.Grow((*memory)[:0], n)[:n]
-	return memory
 }
 
 // explains reports whether a cost ½Σr² of the relative residual over so many
@@ -85,4 +57,24 @@ func (n *noise) explains(cost float64, points int) bool {
 		}
 	}
 	return len(n.sizes) > 0 && 2*above >= len(n.sizes)
+}
+
+// describes reports whether a cost over so many points of the sweep is
+// explained by its noise.
+func (p *points) describes(cost float64, points int) bool {
+	w := p.prepare()
+	if len(w.noise.sizes) == 0 {
+		w.noise.measure(p.measured, w.inverse)
+	}
+	return w.noise.explains(cost, points)
+}
+
+// floats is memory for numbers that nobody keeps.
+var floats = sync.Pool{New: func() any { return new([]float64) }}
+
+// borrow returns memory for n numbers, for floats.Put afterwards.
+func borrow(n int) *[]float64 {
+	memory := floats.Get().(*[]float64)
+	*memory = slices.Grow((*memory)[:0], n)[:n]
+	return memory
 }

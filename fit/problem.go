@@ -4,7 +4,10 @@ import (
 	"math"
 	"slices"
 	"sync"
+	"unsafe"
 
+	"gonum.org/v1/gonum/blas"
+	"gonum.org/v1/gonum/blas/blas64"
 	"gonum.org/v1/gonum/mat"
 
 	"realpart/fit/lm"
@@ -27,6 +30,8 @@ type problem struct {
 	free   []int     // indices of the free parameters
 	scale  float64   // of the soft-L1 loss, in units of the residual; 0: none
 
+	held *block // for all evaluations of a solve
+
 	// The last point of which only the cost was asked, which is where a
 	// solve ends, with the model and its relative residuals there.
 	at               []float64
@@ -36,26 +41,68 @@ type problem struct {
 // points is a sweep with what its weighting needs of it.
 type points struct {
 	freq     []float64
-	grid     *models.Grid // of freq
 	measured []complex128
-	inverse  []complex128 // 1/measured
 	s        []complex128 // S-parameter of measured, for SParameter
 	magnitude,
 	phase []float64 // stated accuracy of each point, for Accuracy and the meter's part of the uncertainty; nil: none
 	low, high float64   // the least and the largest |Z|
-	noise     *noise    // see describes
+	work      *work     // see prepare
 	shape     *features // see features
 }
+
+// work is what is computed of a sweep for its fits, and again if it is needed
+// after they are over.
+type work struct {
+	grid    models.Grid
+	inverse []complex128 // 1/measured
+	noise   noise        // see describes
+}
+
+// works are those that no sweep needs.
+var works = sync.Pool{New: func() any { return new(work) }}
+
+// prepare computes what evaluations need.
+func (p *points) prepare() *work {
+	if p.work == nil {
+		p.work = works.Get().(*work)
+		p.compute()
+	}
+	return p.work
+}
+
+func (p *points) compute() {
+	w := p.work
+	w.grid.Set(p.freq)
+	w.noise.sizes = w.noise.sizes[:0]
+	w.inverse = slices.Grow(w.inverse[:0], len(p.measured))[:len(p.measured)]
+	for i, v := range p.measured {
+		if squares := real(v)*real(v) + imag(v)*imag(v); squares > safe && squares < 1/safe {
+			d := 1 / squares
+			w.inverse[i] = complex(real(v)*d, -imag(v)*d)
+		} else {
+			w.inverse[i] = 1 / v
+		}
+	}
+}
+
+// release gives back what prepare has computed.
+func (p *points) release() {
+	if p.work != nil {
+		works.Put(p.work)
+		p.work = nil
+	}
+}
+
+// safe is the square of a magnitude that has a reciprocal.
+const safe = 1e-290
 
 // pick returns the points of rising indices.
 func (p *points) pick(index []int) *points {
 	n := len(index)
-	memory := make([]complex128, 2*n)
-	q := &points{freq: make([]float64, 0, n), measured: memory[:0:n], inverse: memory[n:n], low: p.low, high: p.high}
+	q := &points{freq: make([]float64, 0, n), measured: make([]complex128, 0, n), low: p.low, high: p.high}
 	for _, i := range index {
 		q.freq = append(q.freq, p.freq[i])
 		q.measured = append(q.measured, p.measured[i])
-		q.inverse = append(q.inverse, p.inverse[i])
 		if p.s != nil {
 			q.s = append(q.s, p.s[i])
 		}
@@ -64,7 +111,8 @@ func (p *points) pick(index []int) *points {
 			q.phase = append(q.phase, p.phase[i])
 		}
 	}
-	q.grid = models.NewGrid(q.freq)
+	q.work = new(work) // too little to be worth giving back
+	q.compute()
 	return q
 }
 
@@ -93,30 +141,54 @@ func (p *problem) lm() lm.Problem {
 type block struct {
 	evaluator models.Evaluator
 	z         [models.BlockSize]complex128 // of the model
-	rho       [models.BlockSize]complex128 // weighted residual, its two parts
 	weight    [models.BlockSize]float64
 	weighted  [models.BlockSize]complex128
-	dz        [][]complex128 // ∂z/∂x, nil for fixed parameters
-	columns   []complex128
+	// rows holds, each of BlockSize points, the weighted residual, its two
+	// parts, and ∂z/∂x of the free parameters.
+	rows    []complex128
+	rho     []complex128   // the first row
+	dz      [][]complex128 // the others, by parameter; nil for fixed ones
+	product []float64
 }
 
 // blocks are those that no problem works with: one is enough for a worker.
 var blocks = sync.Pool{New: func() any { return new(block) }}
 
-// block returns memory for the evaluation of this problem, for blocks.Put
-// afterwards.
+// minimise is [lm.Solve] with one block for all evaluations.
+func (p *problem) minimise(x []float64, settings *lm.Settings) (*lm.Result, error) {
+	b := p.block()
+	p.held = b
+	defer func() {
+		p.held = nil
+		p.put(b)
+	}()
+	return lm.Solve(p.lm(), x, settings)
+}
+
+// put gives back what block has returned.
+func (p *problem) put(b *block) {
+	if b != p.held {
+		blocks.Put(b)
+	}
+}
+
+// block returns memory for the evaluation of this problem, for put afterwards.
 func (p *problem) block() *block {
+	if p.held != nil {
+		return p.held
+	}
 	b := blocks.Get().(*block)
-	b.evaluator.Use(p.circuit, p.grid)
+	b.evaluator.Use(p.circuit, &p.prepare().grid)
 	n := len(p.parameters)
-	if len(b.columns) < n*models.BlockSize {
-		b.columns = make([]complex128, n*models.BlockSize)
-		b.dz = make([][]complex128, n)
+	if len(b.product) < n+1 {
+		b.rows = make([]complex128, (n+1)*models.BlockSize)
+		b.rho = b.rows[:models.BlockSize]
+		b.dz, b.product = make([][]complex128, n), make([]float64, n+1)
 	}
 	b.dz = b.dz[:n]
 	clear(b.dz)
-	for _, i := range p.free {
-		b.dz[i] = b.columns[i*models.BlockSize : (i+1)*models.BlockSize]
+	for k, i := range p.free {
+		b.dz[i] = b.rows[(k+1)*models.BlockSize : (k+2)*models.BlockSize]
 	}
 	return b
 }
@@ -140,7 +212,7 @@ func (p *problem) unknowns() []float64 {
 func (p *problem) residual(dst, x []float64) {
 	p.set(x)
 	b := p.block()
-	defer blocks.Put(b)
+	defer p.put(b)
 	for from := 0; from < len(p.freq); from += models.BlockSize {
 		to := min(from+models.BlockSize, len(p.freq))
 		b.evaluator.Block(from, to, p.values, b.z[:], nil)
@@ -165,7 +237,7 @@ func (p *problem) modelAt(x []float64) (model, residuals []complex128) {
 	if p.model == nil || !slices.Equal(p.at, x) {
 		p.set(x)
 		b := p.block()
-		defer blocks.Put(b)
+		defer p.put(b)
 		p.keep(b)
 	}
 	model, residuals = p.model, p.residuals
@@ -183,7 +255,7 @@ func (p *problem) keep(b *block) {
 		to := min(from+models.BlockSize, len(p.freq))
 		b.evaluator.Block(from, to, p.values, p.model[from:to], nil)
 	}
-	logRatios(p.residuals, p.model, p.inverse)
+	logRatios(p.residuals, p.model, p.work.inverse)
 }
 
 // pair returns the two parts of the weighted residual of point i.
@@ -197,7 +269,7 @@ func (p *problem) pair(i int, z complex128) (a, b float64) {
 		d := s - p.s[i]
 		return real(d), imag(d)
 	}
-	a, b = logRatio(z * p.inverse[i])
+	a, b = logRatio(z * p.work.inverse[i])
 	if p.weight == Accuracy {
 		a /= p.magnitude[i]
 		b /= p.phase[i]
@@ -227,23 +299,33 @@ func logRatio(q complex128) (a, b float64) {
 	return 0.5 * math.Log(s), math.Atan2(im, re)
 }
 
-// logRatios sets dst to ln(z·inverse), as [logRatio] but faster still where
-// that is below 1/128 in both parts: four terms suffice there, and one
-// division.
+// closeToOne reports whether ln q is below 1/128 in both parts, with s = |q|²; then
+// the first terms of the series suffice, see nearLog.
+func closeToOne(re, im, s float64) bool {
+	return s > 1-1./65 && s < 1+1./65 && im < re*(1./128) && im > -re*(1./128)
+}
+
+// nearLog returns artanh u and arctan t as [logRatio] does, for |u|, |t| < 1/128,
+// to a relative 4e-14.
+func nearLog(u, t float64) (a, b float64) {
+	v, w := u*u, t*t
+	return u + u*v*(1./3+v*(1./5)), t - t*w*(1./3-w*(1./5))
+}
+
+// logRatios sets dst to ln(z·inverse), as [logRatio] but faster where that is
+// near zero.
 func logRatios(dst, z, inverse []complex128) {
 	inverse, dst = inverse[:len(z)], dst[:len(z)]
 	for i, v := range z {
 		q := v * inverse[i]
 		re, im := real(q), imag(q)
-		s := re*re + im*im
-		if s > 1-1./65 && s < 1+1./65 && im < re*(1./128) && im > -re*(1./128) {
+		var a, b float64
+		if s := re*re + im*im; closeToOne(re, im, s) {
 			d := 1 / ((s + 1) * re)
-			u, t := ((re-1)*(re+1)+im*im)*(re*d), im*((s+1)*d)
-			v, w := u*u, t*t
-			dst[i] = complex(u+u*v*(1./3+v*(1./5+v*(1./7))), t-t*w*(1./3-w*(1./5-w*(1./7))))
-			continue
+			a, b = nearLog(((re-1)*(re+1)+im*im)*(re*d), im*((s+1)*d))
+		} else {
+			a, b = logRatio(q)
 		}
-		a, b := logRatio(q)
 		dst[i] = complex(a, b)
 	}
 }
@@ -259,7 +341,7 @@ func logRatios(dst, z, inverse []complex128) {
 func (p *problem) normal(jtj, jtr, x []float64) (squares float64) {
 	p.set(x)
 	b := p.block()
-	defer blocks.Put(b)
+	defer p.put(b)
 	relative := p.weight == Relative && p.scale == 0
 	if jtj == nil && relative {
 		p.keep(b)
@@ -275,12 +357,12 @@ func (p *problem) normal(jtj, jtr, x []float64) (squares float64) {
 		to := min(from+models.BlockSize, len(p.freq))
 		b.evaluator.Block(from, to, p.values, b.z[:], b.dz)
 		if relative {
-			squares += b.weigh(p.inverse[from:to])
+			squares += b.weigh(p.work.inverse[from:to])
 		} else {
 			squares += p.weigh(b, from, to)
 		}
 		if jtj != nil {
-			p.accumulate(jtj, jtr, b, to-from)
+			b.accumulate(jtj, jtr, to-from)
 		}
 	}
 	n := len(p.free)
@@ -322,51 +404,34 @@ func (p *problem) weigh(b *block, from, to int) (squares float64) {
 
 // accumulate adds a block of points to JᵀJ, of which it fills the lower
 // triangle, and Jᵀr.
-func (p *problem) accumulate(jtj, jtr []float64, b *block, points int) {
-	n := len(p.free)
-	rho, weight, weighted := b.rho[:points], b.weight[:points], b.weighted[:points]
-	for k, i := range p.free {
-		column := b.dz[i][:points]
-		var re, im float64
-		for i, d := range column {
-			w := complex(weight[i]*real(d), weight[i]*imag(d))
-			weighted[i] = w
-			re += real(w) * real(rho[i])
-			im += imag(w) * imag(rho[i])
+func (b *block) accumulate(jtj, jtr []float64, points int) {
+	n := len(jtr)
+	weight, weighted := b.weight[:points], b.weighted[:points]
+	all := blas64.General{Rows: n + 1, Cols: 2 * points, Stride: 2 * models.BlockSize, Data: numbers(b.rows)}
+	product := blas64.Vector{N: n + 1, Inc: 1, Data: b.product}
+	for k := range n {
+		column := b.rows[(k+1)*models.BlockSize:][:points]
+		for i, w := range weight {
+			weighted[i] = complex(w*real(column[i]), w*imag(column[i]))
 		}
-		jtr[k] += re + im
-		row := jtj[k*n : k*n+k+1]
-		l := 0
-		for ; l+1 < len(row); l += 2 {
-			s, t := products(weighted, b.dz[p.free[l]][:points], b.dz[p.free[l+1]][:points])
-			row[l] += s
-			row[l+1] += t
-		}
-		if l < len(row) {
-			s, _ := products(weighted, column, column)
-			row[l] += s
+		all.Rows, product.N = k+2, k+2
+		blas64.Gemv(blas.NoTrans, 1, all, blas64.Vector{N: 2 * points, Inc: 1, Data: numbers(weighted)}, 0, product)
+		jtr[k] += b.product[0]
+		for l, v := range b.product[1 : k+2] {
+			jtj[k*n+l] += v
 		}
 	}
 }
 
-// products returns the scalar products of w with a and with b, all seen as
-// vectors of real numbers. Two at once share the reading of w.
-func products(w, a, b []complex128) (wa, wb float64) {
-	a, b = a[:len(w)], b[:len(w)]
-	var ar, ai, br, bi float64
-	for i, v := range w {
-		ar += real(v) * real(a[i])
-		ai += imag(v) * imag(a[i])
-		br += real(v) * real(b[i])
-		bi += imag(v) * imag(b[i])
-	}
-	return ar + ai, br + bi
+// numbers sees complex numbers as twice as many real ones.
+func numbers(z []complex128) []float64 {
+	return unsafe.Slice((*float64)(unsafe.Pointer(unsafe.SliceData(z))), 2*len(z))
 }
 
 func (p *problem) jacobian(dst *mat.Dense, x []float64) {
 	p.set(x)
 	b := p.block()
-	defer blocks.Put(b)
+	defer p.put(b)
 	raw := dst.RawMatrix()
 	for from := 0; from < len(p.freq); from += models.BlockSize {
 		to := min(from+models.BlockSize, len(p.freq))

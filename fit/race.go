@@ -218,5 +218,5 @@ func (r *runner) polish(brief bool) (*lm.Result, error) {
 			settings.GradientTolerance, settings.CostTolerance, settings.SlowTolerance = 1e-2, 1e-3, 1e-3
 		}
 	}
-	return lm.Solve(p.lm(), r.best[0].x, &settings)
+	return p.minimise(r.best[0].x, &settings)
 }

@@ -36,7 +36,7 @@ func (p *problem) polishRobust(plain *lm.Result, settings *lm.Settings) (*lm.Res
 		}
 		p.scale = scale
 		var err error
-		if r, err = lm.Solve(p.lm(), r.X, settings); err != nil {
+		if r, err = p.minimise(r.X, settings); err != nil {
 			return nil, err
 		}
 		next := max(residual.MAD(p.plainResiduals(r.X)), scale/fall)

@@ -79,7 +79,7 @@ func (q *search) atNoise() bool {
 
 // solve goes to the minimum from a start.
 func (q *search) solve(x []float64) {
-	r, err := lm.Solve(q.thinned.lm(), x, &q.solver)
+	r, err := q.thinned.minimise(x, &q.solver)
 	if err != nil {
 		q.failure = err
 		return
@@ -115,7 +115,7 @@ func (q *search) nearest(draws, n int, draw func(values []float64)) []candidate 
 	p := q.whole
 	values := make([]float64, len(p.values))
 	b := q.thinned.block()
-	defer blocks.Put(b)
+	defer q.thinned.put(b)
 	var starts []candidate
 	x := make([]float64, len(p.free))
 	for range draws {
@@ -162,7 +162,7 @@ func (p *problem) distance(b *block, x []float64) float64 {
 	sum := 0.0
 	for from := 0; from < len(p.freq); from += models.BlockSize {
 		to := min(from+models.BlockSize, len(p.freq))
-		z, inverse := b.z[:to-from], p.inverse[from:to]
+		z, inverse := b.z[:to-from], p.work.inverse[from:to]
 		b.evaluator.Block(from, to, p.values, z, nil)
 		for i, v := range z {
 			q := v * inverse[i]

@@ -77,7 +77,7 @@ func (s *sampler) spread(sigma float64) float64 { return math.Exp(sigma * s.rand
 // anchor returns a frequency of the thinned sweep as ω, with Z and Y there.
 func (s *sampler) anchor() (omega float64, z, y complex128) {
 	i := s.random.IntN(len(s.freq))
-	return 2 * math.Pi * s.freq[i], s.measured[i], s.inverse[i]
+	return 2 * math.Pi * s.freq[i], s.measured[i], s.prepare().inverse[i]
 }
 
 // draw fills values (in the order of the circuit's parameters) at random.

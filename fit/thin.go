@@ -59,6 +59,25 @@ func thin(freq []float64, z []complex128, n int) []int {
 	return slices.Compact(chosen)
 }
 
+// spread chooses n points of a sweep evenly by their number, which costs next
+// to nothing, and around the extremes of |Z| six more, so that a narrow
+// resonance keeps its points. The indices rise.
+func spread(z []complex128, n int) []int {
+	last := len(z) - 1
+	chosen := make([]int, 0, n+6)
+	low, high := extremes(z)
+	for _, at := range []int{low, high} {
+		for _, step := range []int{-2, 0, 2} {
+			chosen = append(chosen, min(max(at+step, 0), last))
+		}
+	}
+	for k := range n {
+		chosen = append(chosen, k*last/(n-1))
+	}
+	slices.Sort(chosen)
+	return slices.Compact(chosen)
+}
+
 // extremes returns the indices of the least and the largest |Z|.
 func extremes(z []complex128) (low, high int) {
 	least, most := math.Inf(1), 0.0

@@ -190,6 +190,9 @@ func (p *parsed) finished(data []byte, o Options) ([]*Sweep, error) {
 		p.fault(p.builder.halfError(p.halves[0]))
 	}
 	sweeps, err := p.sweeps(o)
+	if p.builder != nil {
+		p.builder.release()
+	}
 	if err != nil {
 		return nil, err
 	}

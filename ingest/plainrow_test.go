@@ -5,8 +5,10 @@ import (
 	"fmt"
 	"math"
 	"math/rand/v2"
+	"slices"
 	"strconv"
 	"strings"
+	"sync"
 	"testing"
 
 	"pgregory.net/rapid"
@@ -128,6 +130,34 @@ func TestPlainRowAgreesOnDamage(t *testing.T) {
 			o.Columns = Columns{"f": "1", "z": "2", "phase": "3"}
 		}
 		sameReading(t, text, o)
+	}
+}
+
+// The memory that readings share is no part of what they return.
+func TestSweepsKeepTheirValues(t *testing.T) {
+	first := one(t, "a.csv", plainSweep, nil)
+	freq, z := slices.Clone(first.Freq), slices.Clone(first.Z)
+	var group sync.WaitGroup
+	for range 4 {
+		group.Go(func() {
+			for _, text := range []string{string(benchText(300)), "Part,f (Hz),R (Ohm),X (Ohm)\na,1,2,3\nb,1,2,3\n", "f (Hz),R a,X a,R b,X b\n100,1,2,3,4\n200,1,2,3,4\n", "omega (rad/s),R (Ohm),X (Ohm)\n100,1,2\n200,3,4\n", "f (Hz),R (Ohm),X (Ohm)\n1,2,x\n"} {
+				for range 20 {
+					_, _ = Read("b.csv", strings.NewReader(text), nil)
+				}
+			}
+		})
+	}
+	group.Wait()
+	if !slices.Equal(freq, first.Freq) || !slices.Equal(z, first.Z) {
+		t.Error("another reading changed a sweep")
+	}
+	for _, text := range []string{"omega (rad/s),R (Ohm),X (Ohm)\n100,1,2\n200,3,4\n", "f (Hz),R (Ohm),X (Ohm)\n2,3,4\n1,2,3\n"} {
+		s := one(t, "c.csv", text, nil)
+		freq, z := slices.Clone(s.Freq), slices.Clone(s.Z)
+		one(t, "d.csv", plainSweep, nil)
+		if !slices.Equal(freq, s.Freq) || !slices.Equal(z, s.Z) {
+			t.Errorf("%q: another reading changed the sweep", text)
+		}
 	}
 }
 

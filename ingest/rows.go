@@ -326,8 +326,15 @@ func (r *reader) segmentFor(p *plan, seg *segment, f float64, rows int) *segment
 	// Where there is one table, this is its size; many blocks grow theirs.
 	if len(r.segments) == 1 {
 		seg.line = make([]int32, 0, rows)
-		for k := range seg.vals {
-			seg.vals[k] = make([]float64, 0, rows)
+		for _, g := range p.groups { // frequencies become those of the sweep
+			if k := seg.slot[g.freq]; seg.vals[k] == nil {
+				seg.vals[k] = make([]float64, 0, rows)
+			}
+		}
+		for k, v := range seg.vals {
+			if v == nil {
+				seg.vals[k] = r.scratch.column(rows, len(seg.vals)-1)
+			}
 		}
 	}
 	return seg

@@ -1,7 +1,9 @@
 package ingest
 
 import (
+	"slices"
 	"strings"
+	"sync"
 	"unicode/utf8"
 )
 
@@ -18,6 +20,41 @@ type source struct {
 	sheet   string
 
 	headerCells int // looked at so far
+
+	scratch *scratch // nil in a spreadsheet
+}
+
+// scratch is memory that is needed while a file is read and not by its sweeps. In
+// a batch the next file uses it again.
+type scratch struct {
+	lines  []line
+	values []float64 // columns
+}
+
+var scratches = sync.Pool{New: func() any { return new(scratch) }}
+
+// column takes memory for a column of so many values; the last argument is how
+// many columns will be asked for in all.
+func (s *scratch) column(rows, columns int) []float64 {
+	if s == nil {
+		return make([]float64, 0, rows)
+	}
+	if n := len(s.values) + rows; n > cap(s.values) {
+		s.values = make([]float64, 0, max(n, rows*columns))
+	}
+	from := len(s.values)
+	s.values = s.values[:from+rows]
+	return s.values[from:from:len(s.values)]
+}
+
+// release gives the scratch memory back. Nothing of the source is used after.
+func (s *source) release() {
+	if s.scratch == nil {
+		return
+	}
+	s.scratch.lines, s.scratch.values = s.lines[:0], s.scratch.values[:0]
+	scratches.Put(s.scratch)
+	s.lines, s.scratch = nil, nil
 }
 
 const (
@@ -37,13 +74,13 @@ type span struct{ start, end int32 }
 
 // newSource cuts text at LF, CR LF, or CR alone where the text has no LF.
 func newSource(name, text, enc string) *source {
-	s := &source{name: name, text: text, encoding: enc, decimal: '.'}
+	s := &source{name: name, text: text, encoding: enc, decimal: '.', scratch: scratches.Get().(*scratch)}
 	end := byte('\n')
 	if strings.IndexByte(text, '\n') < 0 {
 		end = '\r'
 	}
 	quotes := strings.IndexByte(text, '"') >= 0
-	s.lines = make([]line, 0, strings.Count(text, string(rune(end)))+1)
+	s.lines = slices.Grow(s.scratch.lines[:0], strings.Count(text, string(rune(end)))+1)
 	num := int32(0)
 	for start := 0; start < len(text); {
 		stop := strings.IndexByte(text[start:], end)

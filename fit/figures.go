@@ -33,28 +33,46 @@ type FigureValue struct {
 // the delta method sees nothing of what its element could do; the interval
 // then also holds the figure of every circuit at the limits of the profiles.
 func (r *Result) Figure(f models.Figure, freq float64) FigureValue {
-	z, dz := r.at(freq)
-	value, byR, byX := f.Of(freq, z)
-	scatter, meter := r.variance(func(k int) float64 {
-		return byR*real(dz[k]) + byX*imag(dz[k])
-	})
-	v := FigureValue{Figure: f, At: freq, Value: value, Measured: math.NaN(), Resolution: math.NaN()}
-	u := expand(scatter, meter, float64(r.DegreesOfFreedom))
-	switch f {
-	case models.ESR, models.D, models.Q, models.Zabs:
-		v.Low95, v.High95 = value*math.Exp(-u/value), value*math.Exp(u/value)
-	default:
-		v.Low95, v.High95 = value-u, value+u
-	}
-	r.widen(&v)
-	if measured, ok := r.measuredAt(freq); ok {
-		v.Measured, _, _ = f.Of(freq, measured)
-		if accuracy := r.phaseAccuracyAt(freq); accuracy > 0 {
-			v.Resolution = abs(measured) * accuracy
-			v.BelowResolution = real(z) < v.Resolution
+	return r.figures([]models.Figure{f}, []float64{freq})[0]
+}
+
+// Figures returns all figures at frequencies in Hz: those of [models.Figures],
+// in their order, at the first, and so on; see [Result.Figure]. The circuit is
+// evaluated once.
+func (r *Result) Figures(freq []float64) []FigureValue {
+	return r.figures(models.Figures(), freq)
+}
+
+func (r *Result) figures(names []models.Figure, freq []float64) []FigureValue {
+	out := make([]FigureValue, 0, len(freq)*len(names))
+	z, dz := r.jacobian(freq)
+	for i, f := range freq {
+		measured, inside := r.measuredAt(f)
+		for _, name := range names {
+			value, byR, byX := name.Of(f, z[i])
+			scatter, meter := r.variance(func(k int) float64 {
+				return byR*real(dz[k][i]) + byX*imag(dz[k][i])
+			})
+			v := FigureValue{Figure: name, At: f, Value: value, Measured: math.NaN(), Resolution: math.NaN()}
+			u := expand(scatter, meter, float64(r.DegreesOfFreedom))
+			switch name {
+			case models.ESR, models.D, models.Q, models.Zabs:
+				v.Low95, v.High95 = value*math.Exp(-u/value), value*math.Exp(u/value)
+			default:
+				v.Low95, v.High95 = value-u, value+u
+			}
+			r.widen(&v)
+			if inside {
+				v.Measured, _, _ = name.Of(f, measured)
+				if accuracy := r.phaseAccuracyAt(f); accuracy > 0 {
+					v.Resolution = abs(measured) * accuracy
+					v.BelowResolution = real(z[i]) < v.Resolution
+				}
+			}
+			out = append(out, v)
 		}
 	}
-	return v
+	return out
 }
 
 // widen takes the circuits at the limits of profiled parameters into the
@@ -79,16 +97,24 @@ func (r *Result) widen(v *FigureValue) {
 
 // at returns Z and ∂Z/∂x of all parameters at a frequency.
 func (r *Result) at(freq float64) (complex128, []complex128) {
-	e := r.Circuit.NewEvaluator([]float64{freq})
-	n := len(r.Parameters)
-	columns := make([][]complex128, n)
-	flat := make([]complex128, n)
-	for i := range columns {
-		columns[i] = flat[i : i+1]
+	z, columns := r.jacobian([]float64{freq})
+	dz := make([]complex128, len(columns))
+	for k, column := range columns {
+		dz[k] = column[0]
 	}
-	z := make([]complex128, 1)
-	e.Jacobian(z, columns, r.Values())
-	return z[0], flat
+	return z[0], dz
+}
+
+// jacobian returns Z and the columns of ∂Z/∂x of all parameters at frequencies.
+func (r *Result) jacobian(freq []float64) (z []complex128, columns [][]complex128) {
+	n := len(freq)
+	z, columns = make([]complex128, n), make([][]complex128, len(r.Parameters))
+	flat := make([]complex128, n*len(columns))
+	for k := range columns {
+		columns[k] = flat[k*n : (k+1)*n]
+	}
+	r.Circuit.NewEvaluator(freq).Jacobian(z, columns, r.Values())
+	return z, columns
 }
 
 // variance returns the variances from scatter and from the meter of a
@@ -97,7 +123,8 @@ func (r *Result) variance(derivative func(k int) float64) (scatter, meter float6
 	if len(r.Free) == 0 {
 		return 0, 0
 	}
-	g := mat.NewVecDense(len(r.Free), nil)
+	var memory [8]float64
+	g := mat.NewVecDense(len(r.Free), slices.Grow(memory[:0], len(r.Free))[:len(r.Free)])
 	for c, k := range r.Free {
 		g.SetVec(c, derivative(k))
 	}

@@ -321,7 +321,23 @@ func (p Parameter) CheckValue(v float64) error {
 // with w = 1 for L and C, also of the RC line, ½ for K, n for Q, n for the C
 // of a loss capacitor, and 0 for R.
 func (c *Circuit) FrequencyDerivative(derivatives []complex128, values []float64) complex128 {
-	var sum complex128
+	return weighted(derivatives, c.frequencyWeights(values))
+}
+
+func weighted(derivatives []complex128, weights []float64) complex128 {
+	var re, im float64
+	for k, w := range weights {
+		if w != 0 {
+			re += w * real(derivatives[k])
+			im += w * imag(derivatives[k])
+		}
+	}
+	return complex(re, im)
+}
+
+// frequencyWeights returns the w_k of [Circuit.FrequencyDerivative].
+func (c *Circuit) frequencyWeights(values []float64) []float64 {
+	weights := make([]float64, len(c.parameters))
 	var walk func(n *Node)
 	walk = func(n *Node) {
 		for _, child := range n.Children {
@@ -333,18 +349,17 @@ func (c *Circuit) FrequencyDerivative(derivatives []complex128, values []float64
 		p := n.Parameters[0]
 		switch n.Element {
 		case Inductor, Capacitor:
-			sum += derivatives[p]
+			weights[p] = 1
 		case Skin:
-			sum += derivatives[p] / 2
+			weights[p] = 0.5
 		case ConstantPhase:
-			sum += complex(values[n.Parameters[1]], 0) * derivatives[p]
+			weights[p] = values[n.Parameters[1]]
 		case LossCapacitor:
-			exponent := 1 - 2/math.Pi*math.Atan(values[n.Parameters[1]])
-			sum += complex(exponent, 0) * derivatives[p]
+			weights[p] = 1 - 2/math.Pi*math.Atan(values[n.Parameters[1]])
 		case RCLine:
-			sum += derivatives[n.Parameters[1]]
+			weights[n.Parameters[1]] = 1
 		}
 	}
 	walk(c.root)
-	return sum
+	return weights
 }

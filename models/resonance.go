@@ -62,7 +62,7 @@ func (c *Circuit) Resonances(values []float64, from, to float64) []Resonance {
 	var found []Resonance
 	var search func(a, b point, halvings int)
 	search = func(a, b point, halvings int) {
-		if halvings > 0 && (turn(a, b) > steepestTurn || mayTouch(a, b)) {
+		if halvings > 0 && (turns(a, b) || mayTouch(a, b)) {
 			if mid, ok := between(a.f, b.f); ok {
 				m := probe.at(mid)
 				search(a, m, halvings-1)
@@ -76,10 +76,13 @@ func (c *Circuit) Resonances(values []float64, from, to float64) []Resonance {
 	}
 	grid := c.resonanceGrid(values, from, to)
 	last := probe.at(grid[0])
-	for _, f := range grid[1:] {
-		next := probe.at(f)
-		search(last, next, maxHalvings)
-		last = next
+	block := make([]point, BlockSize)
+	for freq := range slices.Chunk(grid[1:], BlockSize) {
+		probe.evaluate(block, freq)
+		for _, next := range block[:len(freq)] {
+			search(last, next, maxHalvings)
+			last = next
+		}
 	}
 	return found
 }
@@ -90,13 +93,14 @@ type point struct {
 	z, dz complex128
 }
 
-// probe evaluates a circuit at one frequency after the other.
+// probe evaluates a circuit at a few frequencies after the other.
 type probe struct {
 	evaluator *Evaluator
 	values    []float64
-	z         []complex128
-	columns   [][]complex128
-	row       []complex128
+	weights   []float64      // of the derivatives in ∂Z/∂ln f
+	z         []complex128   // of a block
+	columns   [][]complex128 // of a block
+	window    [][]complex128 // of columns
 }
 
 func newProbe(c *Circuit, values []float64) *probe {
@@ -104,29 +108,52 @@ func newProbe(c *Circuit, values []float64) *probe {
 	p := &probe{
 		evaluator: c.NewEvaluator([]float64{1}),
 		values:    values,
-		z:         make([]complex128, 1),
+		weights:   c.frequencyWeights(values),
+		z:         make([]complex128, BlockSize),
 		columns:   make([][]complex128, n),
-		row:       make([]complex128, n),
+		window:    make([][]complex128, n),
 	}
-	for i := range p.columns {
-		p.columns[i] = make([]complex128, 1)
+	for k := range p.columns {
+		p.columns[k] = make([]complex128, BlockSize)
 	}
 	return p
 }
 
 func (p *probe) impedance(f float64) complex128 {
 	p.evaluator.SetFrequencies([]float64{f})
-	p.evaluator.Impedance(p.z, p.values)
+	p.evaluator.Impedance(p.z[:1], p.values)
 	return p.z[0]
 }
 
 func (p *probe) at(f float64) point {
-	p.evaluator.SetFrequencies([]float64{f})
-	p.evaluator.Jacobian(p.z, p.columns, p.values)
-	for i, column := range p.columns {
-		p.row[i] = column[0]
+	var one [1]point
+	p.evaluate(one[:], []float64{f})
+	return one[0]
+}
+
+// evaluate sets the first points to those at some frequencies, at most a block.
+func (p *probe) evaluate(points []point, freq []float64) {
+	n := len(freq)
+	z := p.z[:n]
+	for k, column := range p.columns {
+		p.window[k] = nil
+		if p.weights[k] != 0 {
+			p.window[k] = column[:n]
+		}
 	}
-	return point{f, p.z[0], p.evaluator.circuit.FrequencyDerivative(p.row, p.values)}
+	p.evaluator.SetFrequencies(freq)
+	p.evaluator.Jacobian(z, p.window, p.values)
+	for i, f := range freq {
+		var re, im float64
+		for k, w := range p.weights {
+			if w != 0 {
+				d := p.window[k][i]
+				re += w * real(d)
+				im += w * imag(d)
+			}
+		}
+		points[i] = point{f, z[i], complex(re, im)}
+	}
 }
 
 // refine narrows a sign change of Im Z to two neighbouring float64.
@@ -170,12 +197,21 @@ func between(a, b float64) (float64, bool) {
 	return mid, mid > a && mid < b
 }
 
-// turn returns by how much Z turns between two points, in radians, or would
-// turn or change by the slope at either of them.
-func turn(a, b point) float64 {
-	slope := max(cmplx.Abs(a.dz)/cmplx.Abs(a.z), cmplx.Abs(b.dz)/cmplx.Abs(b.z))
-	return max(math.Abs(phaseBetween(a.z, b.z)), slope*math.Log(b.f/a.f))
+// turns reports whether Z turns by more than steepestTurn between two points,
+// or would turn or change by as much by the slope at either of them.
+func turns(a, b point) bool {
+	re := real(a.z)*real(b.z) + imag(a.z)*imag(b.z)
+	im := imag(b.z)*real(a.z) - real(b.z)*imag(a.z)
+	if !(math.Abs(im) <= tanSteepestTurn*re) {
+		return true
+	}
+	most := steepestTurn / (b.f/a.f - 1) // which is no less than ln(b.f/a.f)
+	return !(square(a.dz) <= most*most*square(a.z) && square(b.dz) <= most*most*square(b.z))
 }
+
+var tanSteepestTurn = math.Tan(steepestTurn)
+
+func square(v complex128) float64 { return real(v)*real(v) + imag(v)*imag(v) }
 
 // mayTouch reports whether the reactance has the same sign at two points,
 // heads for zero from both, and its tangents there meet beyond zero.
@@ -193,20 +229,15 @@ func mayTouch(a, b point) bool {
 	return xa+sa*meet < 0
 }
 
-func phaseBetween(a, b complex128) float64 {
-	re := real(a)*real(b) + imag(a)*imag(b)
-	im := real(a)*imag(b) - imag(a)*real(b)
-	return math.Atan2(im, re)
-}
-
 // resonanceGrid returns rising frequencies from `from` to `to`.
 func (c *Circuit) resonanceGrid(values []float64, from, to float64) []float64 {
 	n := max(2, int(math.Ceil(pointsPerDecade*math.Log10(to/from)))+1)
 	grid := make([]float64, 0, n)
-	for i := range n {
-		grid = append(grid, from*math.Pow(to/from, float64(i)/float64(n-1)))
+	step := math.Pow(to/from, 1/float64(n-1))
+	for f := from; len(grid) < n-1; f *= step {
+		grid = append(grid, f)
 	}
-	grid[n-1] = to
+	grid = append(grid, to)
 	inductances := reactiveSums(c, values, "H")
 	capacitances := reactiveSums(c, values, "F")
 	for _, l := range inductances {

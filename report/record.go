@@ -257,23 +257,21 @@ func New(s Sweep, a *fit.Analysis, o Options) *Fit {
 	if len(at) == 0 {
 		at = DefaultAt(s.FMin, s.FMax)
 	}
-	names := models.Figures()
-	f.Figures = make([]Figure, 0, len(at)*len(names))
-	for _, freq := range at {
-		for _, name := range names {
-			v := r.Figure(name, freq)
-			if finite(v.Value) == nil {
-				continue
-			}
-			figure := Figure{
-				Name: name, AtHz: freq, Value: v.Value, Unit: name.Unit(),
-				Low95: finite(v.Low95), High95: finite(v.High95), Measured: finite(v.Measured),
-			}
-			if o.AccuracyStated && !math.IsNaN(v.Resolution) && restsOnESR(name) {
-				figure.BelowResolution = &v.BelowResolution
-			}
-			f.Figures = append(f.Figures, figure)
+	values := r.Figures(at)
+	f.Figures = make([]Figure, 0, len(values))
+	for _, v := range values {
+		if finite(v.Value) == nil {
+			continue
 		}
+		figure := Figure{
+			Name: v.Figure, AtHz: v.At, Value: v.Value, Unit: v.Figure.Unit(),
+			Low95: finite(v.Low95), High95: finite(v.High95), Measured: finite(v.Measured),
+		}
+		if o.AccuracyStated && !math.IsNaN(v.Resolution) && restsOnESR(v.Figure) {
+			below := v.BelowResolution
+			figure.BelowResolution = &below
+		}
+		f.Figures = append(f.Figures, figure)
 	}
 	for _, c := range a.Candidates {
 		candidate := Candidate{Name: c.Name, Chosen: c.Chosen, Reason: c.Reason}

@@ -79,7 +79,9 @@ func race(problems []*problem) ([]*outcome, error) {
 		}
 		r.from(leader(runners[:i]))
 		runners[i] = r
-		r.run(true, 1, 1)
+		if len(r.best) == 0 {
+			r.first()
+		}
 		if !r.search.atNoise() {
 			continue
 		}
@@ -119,7 +121,7 @@ func race(problems []*problem) ([]*outcome, error) {
 }
 
 // briefSteps bounds the steps of a solve in a race that has a winner.
-const briefSteps = 12
+const briefSteps = 10
 
 // runner is a search that takes part in a race.
 type runner struct {
@@ -165,8 +167,8 @@ func (r *runner) from(simpler *runner) {
 		at[i], added[k] = k, false
 	}
 	simpler.whole.set(simpler.best[0].x)
-	const draws, solves = 12, 2
-	for _, start := range r.nearest(draws, solves, func(values []float64) {
+	const draws = 8
+	r.solve(r.nearest(draws, 1, func(values []float64) {
 		r.sampler.draw(r.whole.circuit, values)
 		for i, k := range at {
 			values[k] = simpler.whole.values[i]
@@ -174,7 +176,13 @@ func (r *runner) from(simpler *runner) {
 		if simpler.atNoise {
 			weaken(r.whole.circuit.Root(), added, values)
 		}
-	}) {
+	})[0].x)
+}
+
+// first makes a first attempt from the nearest of a few draws.
+func (r *runner) first() {
+	draws := min(8*len(r.whole.free), drawsPerRound)
+	for _, start := range r.nearest(draws, 1, r.draw) {
 		r.solve(start.x)
 	}
 }
@@ -212,11 +220,15 @@ func (r *runner) polish(brief bool) (*lm.Result, error) {
 	}
 	p := r.whole
 	settings := p.solver(r.search.solver.Lower, r.search.solver.Upper)
-	if brief {
+	switch {
+	case !brief:
+	case !r.best[0].converged:
+		settings.MaxIterations = 2 // it will not converge here either
+	case !r.search.atNoise():
 		settings.MaxIterations = briefSteps
-		if !r.search.atNoise() {
-			settings.GradientTolerance, settings.CostTolerance, settings.SlowTolerance = 1e-2, 1e-3, 1e-3
-		}
+		settings.GradientTolerance, settings.CostTolerance, settings.SlowTolerance = 3e-2, 1e-3, 1e-3
+	default:
+		settings.MaxIterations = briefSteps
 	}
 	return p.minimise(r.best[0].x, &settings)
 }

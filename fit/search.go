@@ -57,7 +57,7 @@ func (q *search) run(noiseIsEnough bool, rounds, repeats int) {
 		if len(q.best) > 0 && (noiseIsEnough && q.atNoise() || q.repeats >= repeats) {
 			return
 		}
-		starts := q.draw()
+		starts := q.starts()
 		if 2*len(q.thinned.freq) < len(starts[0].x) {
 			q.best = starts[:1] // too few points for the solver
 			return
@@ -89,24 +89,26 @@ func (q *search) solve(x []float64) {
 	} else if len(q.best) == 0 || r.Cost < q.best[0].cost {
 		q.repeats = 0
 	}
-	q.best = keep(q.best, candidate{x: r.X, cost: r.Cost}, kept)
+	q.best = keep(q.best, candidate{x: r.X, cost: r.Cost, converged: r.Status.Converged()}, kept)
 }
 
-// draw returns random sets of unknowns: the one of a round that comes nearest
-// to the sweep, and the first ones.
-func (q *search) draw() []candidate {
+// starts returns the starts of a round.
+func (q *search) starts() []candidate {
 	draws := drawsPerRound
 	if q.whole.given() != nil {
 		draws = 1
 	}
-	return q.nearest(draws, solvesPerRound, func(values []float64) {
-		q.sampler.draw(q.whole.circuit, values)
-		for _, i := range q.whole.free {
-			if given, ok := q.settings.Start[q.whole.parameters[i].Name]; ok {
-				values[i] = given
-			}
+	return q.nearest(draws, solvesPerRound, q.draw)
+}
+
+// draw fills values at random, the user's own kept.
+func (q *search) draw(values []float64) {
+	q.sampler.draw(q.whole.circuit, values)
+	for _, i := range q.whole.free {
+		if given, ok := q.settings.Start[q.whole.parameters[i].Name]; ok {
+			values[i] = given
 		}
-	})
+	}
 }
 
 // nearest returns up to n of the sets of unknowns that draw fills in, with
@@ -133,7 +135,7 @@ func (q *search) nearest(draws, n int, draw func(values []float64)) []candidate 
 		}
 		switch {
 		case len(starts) < n:
-			starts = append(starts, candidate{append([]float64(nil), x...), cost})
+			starts = append(starts, candidate{x: append([]float64(nil), x...), cost: cost})
 			if last := len(starts) - 1; cost < starts[0].cost {
 				starts[0], starts[last] = starts[last], starts[0]
 			}

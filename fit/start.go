@@ -197,8 +197,9 @@ func clamp(x, lower, upper []float64) {
 
 // candidate is a minimum that the search has found on the thinned sweep.
 type candidate struct {
-	x    []float64
-	cost float64
+	x         []float64
+	cost      float64
+	converged bool
 }
 
 // keep adds a minimum unless it is there already, best first, at most n.

@@ -40,6 +40,30 @@ func twins(c *models.Circuit) [][][]int {
 	return groups
 }
 
+// ladder reports whether each group of a circuit has elements of different laws
+// alone and at most one other group, as in ESR + ESL + C + (R1 || C1). Where
+// each is seen in a sweep, such a circuit has one set of values for an
+// impedance: from group to group, the limits at low and high frequency tell
+// what stands in it. Two sections of one shape can be paired in several ways.
+func ladder(n *models.Node) bool {
+	groups := 0
+	for i, child := range n.Children {
+		if child.Kind != models.Leaf {
+			groups++
+			if !ladder(child) {
+				return false
+			}
+			continue
+		}
+		for _, other := range n.Children[:i] {
+			if other.Kind == models.Leaf && other.Element == child.Element {
+				return false
+			}
+		}
+	}
+	return groups <= 1
+}
+
 // anyAlike reports whether two siblings could be of one shape.
 func anyAlike(siblings []*models.Node) bool {
 	for i, a := range siblings {

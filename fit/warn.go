@@ -287,9 +287,10 @@ func (r *Result) resolvedFrom() (from float64, below bool) {
 // second looks for another solution with other values that describes the
 // sweep as well, within what the 95 % interval of one parameter allows, and
 // returns the values of all parameters; nil if there is none. It looks where
-// such solutions exist: circuits with at least four unknowns.
+// such solutions exist: circuits with at least four unknowns, but ladders only
+// if an element is not clearly seen.
 func (r *Result) second() []float64 {
-	if len(r.Free) < 4 || r.Sigma == 0 {
+	if len(r.Free) < 4 || r.Sigma == 0 || ladder(r.Circuit.Root()) && r.clearlySeen() {
 		return nil
 	}
 	p := r.problem
@@ -317,6 +318,17 @@ func (r *Result) second() []float64 {
 		}
 	}
 	return nil
+}
+
+// clearlySeen reports whether every free parameter is, see the constant of this
+// name.
+func (r *Result) clearlySeen() bool {
+	for c, i := range r.Free {
+		if v := r.Covariance.At(c, c); !r.Parameters[i].Determined || !(v < clearlySeen*clearlySeen) {
+			return false
+		}
+	}
+	return true
 }
 
 // sortedWarnings puts warnings that question the whole result first.

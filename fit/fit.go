@@ -380,7 +380,7 @@ func (p *problem) solve() (*lm.Result, error) {
 	}
 	if x := p.given(); x != nil {
 		r, err := p.fromStart(x)
-		if err == nil && p.weight == Relative && p.describes(r.Cost, len(p.freq)) {
+		if err == nil && p.weight == Relative && p.leavesNoise(r) {
 			return r, nil
 		}
 	}
@@ -426,8 +426,8 @@ func (p *problem) atNoise(r *lm.Result) bool {
 func (p *problem) fromStart(x []float64) (*lm.Result, error) {
 	s := p.settings
 	lower, upper := p.bounds(s)
-	few := max(12, 3*len(x))
-	if len(p.freq) > 3*few && !s.Robust {
+	few := 2*len(x) + 3
+	if len(p.freq) > 4*few && !s.Robust {
 		thinned := newProblem(p.circuit, p.pick(spread(p.measured, few)), Relative, s)
 		settings := p.searcher(lower, upper)
 		settings.CostTolerance = 1e-2 // the two minima are farther apart
@@ -443,6 +443,18 @@ func (p *problem) searcher(lower, upper []float64) lm.Settings {
 	return lm.Settings{UnitScaling: true, MaxStep: maxStep, MaxIterations: searchSteps,
 		GradientTolerance: searchTolerance, StepTolerance: searchTolerance, CostTolerance: searchTolerance, SlowTolerance: 1e-4,
 		Lower: lower, Upper: upper}
+}
+
+// leavesNoise reports whether the residuals of a solution are noise.
+func (p *problem) leavesNoise(r *lm.Result) bool {
+	if p.model == nil || !slices.Equal(p.at, r.X) || len(p.freq) < leastForNoise {
+		return p.describes(r.Cost, len(p.freq))
+	}
+	memory := borrow(2 * len(p.freq))
+	defer floats.Put(memory)
+	n := noise{sizes: *memory}
+	n.ofResiduals(p.residuals)
+	return n.explains(r.Cost, len(p.freq))
 }
 
 // settle counts a solution at the noise of the points as converged when the

@@ -12,11 +12,13 @@ import (
 // the standard deviation of one part of ln Z.
 type noise struct{ sizes []float64 }
 
+// leastForNoise is the number of points below which the noise is not told.
+const leastForNoise = 8
+
 // measure takes impedances in Ω at rising frequencies and their reciprocals.
 func (n *noise) measure(z, inverse []complex128) {
-	const least = 8
 	n.sizes = n.sizes[:0]
-	if len(z) < least {
+	if len(z) < leastForNoise {
 		return
 	}
 	n.sizes = slices.Grow(n.sizes, 2*len(z)-6)[:2*len(z)-6]
@@ -40,6 +42,20 @@ func (n *noise) measure(z, inverse []complex128) {
 			a, b = math.Abs(a), math.Abs(b)
 		}
 		n.sizes[2*i], n.sizes[2*i+1] = a*scale, b*scale
+	}
+}
+
+// ofResiduals takes the relative residuals of a fit instead: where it describes
+// the sweep, they hold its noise alone, and differ from ln Z by what is smooth
+// where it doesn't.
+func (n *noise) ofResiduals(rho []complex128) {
+	scale := 1 / math.Sqrt(20)
+	n.sizes = n.sizes[:0]
+	for i := 3; i < len(rho); i++ {
+		a, b, c, d := rho[i], rho[i-1], rho[i-2], rho[i-3]
+		n.sizes = append(n.sizes,
+			scale*math.Abs(real(a)-real(d)+3*(real(c)-real(b))),
+			scale*math.Abs(imag(a)-imag(d)+3*(imag(c)-imag(b))))
 	}
 }
 

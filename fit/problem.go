@@ -117,10 +117,12 @@ func (p *points) pick(index []int) *points {
 }
 
 func newProblem(c *models.Circuit, pts *points, weight Weight, s *Settings) *problem {
+	n := len(c.Parameters())
+	numbers := make([]float64, 2*n)
 	p := &problem{
 		circuit: c, parameters: c.Parameters(), settings: s, points: pts, weight: weight,
 		reference: s.Reference, connection: s.Connection,
-		values: make([]float64, len(c.Parameters())),
+		values: numbers[:n:n], at: numbers[n:n],
 	}
 	p.free = make([]int, 0, len(p.parameters))
 	for i, parameter := range p.parameters {
@@ -299,33 +301,26 @@ func logRatio(q complex128) (a, b float64) {
 	return 0.5 * math.Log(s), math.Atan2(im, re)
 }
 
-// closeToOne reports whether ln q is below 1/128 in both parts, with s = |q|²; then
-// the first terms of the series suffice, see nearLog.
-func closeToOne(re, im, s float64) bool {
-	return s > 1-1./65 && s < 1+1./65 && im < re*(1./128) && im > -re*(1./128)
-}
-
-// nearLog returns artanh u and arctan t as [logRatio] does, for |u|, |t| < 1/128,
-// to a relative 4e-14.
-func nearLog(u, t float64) (a, b float64) {
-	v, w := u*u, t*t
-	return u + u*v*(1./3+v*(1./5)), t - t*w*(1./3-w*(1./5))
-}
-
-// logRatios sets dst to ln(z·inverse), as [logRatio] but faster where that is
-// near zero.
+// logRatios sets dst to ln(z·inverse): where e = z·inverse − 1 is below 1/256
+// by the first terms of
+//
+//	ln(1 + e) = e·(1 − e·(1/2 − e·(1/3 − e/4 + …)))
+//
+// to a relative 1e-10, else by [logRatio].
 func logRatios(dst, z, inverse []complex128) {
+	const small = 1. / 256
 	inverse, dst = inverse[:len(z)], dst[:len(z)]
 	for i, v := range z {
 		q := v * inverse[i]
-		re, im := real(q), imag(q)
-		var a, b float64
-		if s := re*re + im*im; closeToOne(re, im, s) {
-			d := 1 / ((s + 1) * re)
-			a, b = nearLog(((re-1)*(re+1)+im*im)*(re*d), im*((s+1)*d))
-		} else {
-			a, b = logRatio(q)
+		e, f := real(q)-1, imag(q)
+		if e < small && e > -small && f < small && f > -small {
+			a, b := 1./3-e*0.25, f*-0.25
+			a, b = 0.5-(e*a-f*b), -(e*b + f*a)
+			a, b = 1-(e*a-f*b), -(e*b + f*a)
+			dst[i] = complex(e*a-f*b, e*b+f*a)
+			continue
 		}
+		a, b := logRatio(q)
 		dst[i] = complex(a, b)
 	}
 }
@@ -346,10 +341,12 @@ func (p *problem) normal(jtj, jtr, x []float64) (squares float64) {
 	if jtj == nil && relative {
 		p.keep(b)
 		p.at = append(p.at[:0], x...)
+		var re, im float64
 		for _, r := range p.residuals {
-			squares += real(r)*real(r) + imag(r)*imag(r)
+			re += real(r) * real(r)
+			im += imag(r) * imag(r)
 		}
-		return squares
+		return re + im
 	}
 	clear(jtj)
 	clear(jtr)
@@ -379,13 +376,15 @@ func (p *problem) normal(jtj, jtr, x []float64) (squares float64) {
 func (b *block) weigh(inverse []complex128) (squares float64) {
 	z, rho, weight := b.z[:len(inverse)], b.rho[:len(inverse)], b.weight[:len(inverse)]
 	logRatios(rho, z, inverse)
+	var aa, bb float64
 	for i, r := range rho {
 		re, im := real(z[i]), imag(z[i])
 		weight[i] = 1 / (re*re + im*im)
-		squares += real(r)*real(r) + imag(r)*imag(r)
+		aa += real(r) * real(r)
+		bb += imag(r) * imag(r)
 		rho[i] = complex(re*real(r)-im*imag(r), re*imag(r)+im*real(r))
 	}
-	return squares
+	return aa + bb
 }
 
 // weigh is block.weigh for any residual; w is 1, and the columns ∂z/∂x become

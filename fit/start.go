@@ -161,7 +161,9 @@ func (p *problem) box() (lower, upper []float64) {
 	const beyond = 1e7
 	low, high := p.low/beyond, p.high*beyond
 	first, last := 2*math.Pi*p.freq[0], 2*math.Pi*p.freq[len(p.freq)-1]
-	lower, upper = make([]float64, len(p.free)), make([]float64, len(p.free))
+	n := len(p.free)
+	both := make([]float64, 2*n)
+	lower, upper = both[:n:n], both[n:]
 	for k, i := range p.free {
 		var a, b float64
 		switch p.parameters[i].Unit {

@@ -154,6 +154,13 @@ func (a *Analysis) advise(parameter string) error {
 // fitAll fits the circuits. It fails only if none could be fitted.
 func (a *Analysis) fitAll(freq []float64, z []complex128, tried []models.Model, settings *Settings) error {
 	s := settings.resolve()
+	if s.Weight == Relative && !s.Robust && len(s.Start) == 0 && len(tried) > 1 {
+		return a.fitAllBy(race, freq, z, tried, s)
+	}
+	return a.fitAllBy(each, freq, z, tried, s)
+}
+
+func (a *Analysis) fitAllBy(fit func([]*problem) ([]*outcome, error), freq []float64, z []complex128, tried []models.Model, s *Settings) error {
 	var pts *points
 	var first error
 	problems := make([]*problem, len(tried))
@@ -173,10 +180,6 @@ func (a *Analysis) fitAll(freq []float64, z []complex128, tried []models.Model, 
 			c.Reason = "not fitted: " + err.Error()
 		}
 		a.Candidates = append(a.Candidates, c)
-	}
-	fit := each
-	if s.Weight == Relative && !s.Robust && len(s.Start) == 0 && len(tried) > 1 {
-		fit = race
 	}
 	outcomes, err := fit(problems)
 	if pts != nil {

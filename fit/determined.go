@@ -75,7 +75,7 @@ func (r *Result) withoutElement(i int) (probability, cost float64, ok bool) {
 		lower, upper := p.bounds(&rest)
 		x := p.unknowns()
 		clamp(x, lower, upper)
-		settings := p.solver(lower, upper)
+		settings := p.precise(lower, upper)
 		solution, err := p.minimise(x, &settings)
 		if err != nil {
 			return 0, 0, false

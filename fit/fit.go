@@ -201,7 +201,9 @@ func (s *Settings) resolve() *Settings {
 func (p *problem) complete(solution *lm.Result) (*Result, error) {
 	c, s := p.circuit, p.settings
 	if len(p.free) == 0 {
-		return evaluate(p, s, nil, solution), nil
+		r := evaluate(p, s, nil, solution)
+		r.Reason = "all parameters are fixed"
+		return r, nil
 	}
 	p.set(solution.X)
 	if order(c, p.values, s) {
@@ -213,8 +215,17 @@ func (p *problem) complete(solution *lm.Result) (*Result, error) {
 			return nil, err
 		}
 	}
-	p.settle(solution)
-	return evaluate(p, s, solution.X, solution), nil
+	reason := solution.Reason()
+	// A solver that stalled at the noise of the points has converged: in the
+	// flat valley of a parameter that is not determined, the decrease that is
+	// left is lost in the rounding of the cost.
+	if solution.Status == lm.Stalled && p.weight == Relative && p.describes(solution.Cost, len(p.freq)) {
+		solution.Status = lm.CostConvergence
+		reason += "; the residuals are at the noise of the points"
+	}
+	r := evaluate(p, s, solution.X, solution)
+	r.Reason = reason
+	return r, nil
 }
 
 // check finds faults of the settings before anything is computed.
@@ -376,7 +387,7 @@ const (
 // sweep.
 func (p *problem) solve() (*lm.Result, error) {
 	if len(p.free) == 0 {
-		return &lm.Result{Status: lm.GradientConvergence, Reason: "all parameters are fixed"}, nil
+		return &lm.Result{Status: lm.GradientConvergence}, nil
 	}
 	if x := p.given(); x != nil {
 		r, err := p.fromStart(x)
@@ -454,17 +465,7 @@ func (p *problem) leavesNoise(r *lm.Result) bool {
 	defer floats.Put(memory)
 	n := noise{sizes: *memory}
 	n.ofResiduals(p.residuals)
-	return n.explains(r.Cost, len(p.freq))
-}
-
-// settle counts a solution at the noise of the points as converged when the
-// solver stalled: in the flat valley of a parameter that is not determined,
-// the decrease that is left is lost in the rounding of the cost.
-func (p *problem) settle(solution *lm.Result) {
-	if solution.Status == lm.Stalled && p.weight == Relative && p.describes(solution.Cost, len(p.freq)) {
-		solution.Status = lm.CostConvergence
-		solution.Reason += "; the residuals are at the noise of the points"
-	}
+	return !n.below(leastLevel(r.Cost, len(p.freq)))
 }
 
 // better reports whether a solution is to be preferred: one that converged to
@@ -495,12 +496,12 @@ func (p *problem) given() []float64 {
 	return x
 }
 
-// solver returns the settings of a fit on the whole sweep. The gradient
+// precise returns the settings of a fit on the whole sweep. The gradient
 // tolerance is in standard uncertainties of the solution: 1e-7 of them is
 // far below what anybody prints, and above the rounding of the residuals. The
 // cost tolerance ends the way along the flat valley of a parameter that is
 // not determined, where a step changes χ² by less than 1e-6.
-func (p *problem) solver(lower, upper []float64) lm.Settings {
+func (p *problem) precise(lower, upper []float64) lm.Settings {
 	return lm.Settings{UnitScaling: true, MaxStep: maxStep, MaxIterations: polishSteps,
 		GradientTolerance: 1e-6, StepTolerance: 1e-9, CostTolerance: 1e-7, SlowTolerance: 1e-6,
 		Lower: lower, Upper: upper}
@@ -509,7 +510,7 @@ func (p *problem) solver(lower, upper []float64) lm.Settings {
 // polish minimises over the whole sweep: first the relative residual, whose
 // basin is wide, then the one asked for.
 func (p *problem) polish(x, lower, upper []float64, robust bool) (*lm.Result, error) {
-	settings := p.solver(lower, upper)
+	settings := p.precise(lower, upper)
 	wanted := p.weight
 	p.weight = Relative
 	r, err := p.minimise(x, &settings)

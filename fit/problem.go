@@ -30,7 +30,8 @@ type problem struct {
 	free   []int     // indices of the free parameters
 	scale  float64   // of the soft-L1 loss, in units of the residual; 0: none
 
-	held *block // for all evaluations of a solve
+	held   *block     // for all evaluations of a solve
+	solver lm.Problem // made once
 
 	// The last point of which only the cost was asked, which is where a
 	// solve ends, with the model and its relative residuals there.
@@ -55,7 +56,8 @@ type points struct {
 type work struct {
 	grid    models.Grid
 	inverse []complex128 // 1/measured
-	noise   noise        // see describes
+	noise   noise
+	level   float64 // of the noise, see describes; −1: not yet told
 }
 
 // works are those that no sweep needs.
@@ -73,7 +75,7 @@ func (p *points) prepare() *work {
 func (p *points) compute() {
 	w := p.work
 	w.grid.Set(p.freq)
-	w.noise.sizes = w.noise.sizes[:0]
+	w.level = -1
 	w.inverse = slices.Grow(w.inverse[:0], len(p.measured))[:len(p.measured)]
 	for i, v := range p.measured {
 		if squares := real(v)*real(v) + imag(v)*imag(v); squares > safe && squares < 1/safe {
@@ -164,7 +166,10 @@ func (p *problem) minimise(x []float64, settings *lm.Settings) (*lm.Result, erro
 		p.held = nil
 		p.put(b)
 	}()
-	return lm.Solve(p.lm(), x, settings)
+	if p.solver.Residual == nil {
+		p.solver = p.lm()
+	}
+	return lm.Solve(p.solver, x, settings)
 }
 
 // put gives back what block has returned.

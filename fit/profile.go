@@ -50,7 +50,7 @@ func (r *Result) newProfiler() (*profiler, error) {
 		const far = 30
 		q.lower = append(q.lower, -far, -far)
 		q.upper = append(q.upper, far, far)
-		q.settings = p.solver(slices.Clone(q.lower), slices.Clone(q.upper))
+		q.settings = p.precise(slices.Clone(q.lower), slices.Clone(q.upper))
 		clamp(q.x, q.lower, q.upper)
 		s, err := lm.Solve(q.lm, q.x, &q.settings)
 		if err != nil {
@@ -58,7 +58,7 @@ func (r *Result) newProfiler() (*profiler, error) {
 		}
 		q.x, q.cost = s.X[:n+2], s.Cost
 	} else {
-		q.settings = p.solver(slices.Clone(q.lower), slices.Clone(q.upper))
+		q.settings = p.precise(slices.Clone(q.lower), slices.Clone(q.upper))
 	}
 	// An element that is not seen can still fit some of the noise. Values are
 	// then judged against the circuit without it, which is no worse by the F

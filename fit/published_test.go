@@ -58,7 +58,7 @@ func TestProfilePublished(t *testing.T) {
 	lower, upper := []float64{1, 1e-4}, []float64{1e4, 10}
 	q := &profiler{
 		result: &Result{Covariance: covariance}, lm: rate, x: solution.X, cost: solution.Cost,
-		lower: lower, upper: upper, sigma: s, settings: new(problem).solver([]float64{1, 1e-4}, []float64{1e4, 10}),
+		lower: lower, upper: upper, sigma: s, settings: new(problem).precise([]float64{1, 1e-4}, []float64{1e4, 10}),
 	}
 	q.settings.UnitScaling, q.settings.MaxStep = false, 0
 	level := studentQuantile(0.975, nu)

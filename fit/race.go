@@ -61,7 +61,7 @@ func race(problems []*problem) ([]*outcome, error) {
 		}
 		return err
 	}
-	described := false
+	var winner *lm.Result // the first that describes the sweep, with every parameter determined
 	for i, p := range problems {
 		switch {
 		case p == nil:
@@ -74,31 +74,34 @@ func race(problems []*problem) ([]*outcome, error) {
 			continue
 		}
 		r := &runner{search: p.newSearch()}
-		if described {
+		l := leader(runners[:i])
+		if winner != nil {
 			r.solver.MaxIterations = briefSteps
 		}
-		r.from(leader(runners[:i]))
+		nested := r.from(l)
 		runners[i] = r
-		if len(r.best) == 0 {
+		if !nested {
 			r.first()
 		}
 		if !r.search.atNoise() {
 			continue
 		}
-		solution, err := r.polish(described)
+		solution, err := r.polish(winner)
 		if err != nil {
 			return nil, err
 		}
 		if r.atNoise = p.describes(solution.Cost, len(p.freq)); !r.atNoise {
 			continue
 		}
-		if !described && !solution.Status.Converged() {
+		if winner == nil && !solution.Status.Converged() {
 			solution, err = p.solveFrom(r.search)
 		}
 		if err := finish(i, solution, err); err != nil {
 			return nil, err
 		}
-		described = described || outcomes[i].sound
+		if winner == nil && outcomes[i].sound {
+			winner = solution
+		}
 	}
 	for i, r := range runners {
 		if r == nil || outcomes[i] != nil {
@@ -106,9 +109,9 @@ func race(problems []*problem) ([]*outcome, error) {
 		}
 		var solution *lm.Result
 		var err error
-		if described {
+		if winner != nil {
 			r.within(runners[i+1:])
-			solution, err = r.polish(true)
+			solution, err = r.polish(winner)
 		}
 		if solution == nil {
 			solution, err = problems[i].solveFrom(r.search)
@@ -119,9 +122,6 @@ func race(problems []*problem) ([]*outcome, error) {
 	}
 	return outcomes, nil
 }
-
-// briefSteps bounds the steps of a solve in a race that has a winner.
-const briefSteps = 10
 
 // runner is a search that takes part in a race.
 type runner struct {
@@ -146,42 +146,51 @@ func leader(simpler []*runner) *runner {
 	return last
 }
 
-// from makes a first attempt from the best minimum of a simpler circuit, if
-// all of that circuit's parameters are among this one's. Where that describes
-// the sweep to its noise, the elements that this circuit has besides can only
-// be small, and are drawn so.
-func (r *runner) from(simpler *runner) {
-	if simpler == nil || len(simpler.best) == 0 || len(simpler.whole.parameters) >= len(r.whole.parameters) {
-		return
+// from makes an attempt from the best minimum of a simpler circuit: with its
+// values of the parameters that this one has, too, and draws of the others.
+// Where the simpler circuit describes the sweep to its noise, the elements that
+// this circuit has besides can only be small; how small, the nearest of the
+// draws tells. It reports whether all of the simpler one's parameters are among
+// this one's.
+func (r *runner) from(simpler *runner) bool {
+	if simpler == nil || len(simpler.best) == 0 || len(simpler.whole.parameters) >= len(r.whole.parameters) && !simpler.atNoise {
+		return false
 	}
-	at := make([]int, len(simpler.whole.parameters)) // in this circuit
 	added := make([]bool, len(r.whole.parameters))
+	kept := make([]float64, len(r.whole.parameters))
 	for i := range added {
 		added[i] = true
 	}
-	for i, p := range simpler.whole.parameters {
-		k, ok := r.whole.circuit.Index(p.Name)
-		if !ok {
-			return
-		}
-		at[i], added[k] = k, false
-	}
 	simpler.whole.set(simpler.best[0].x)
-	const draws = 8
+	shared := 0
+	for i, p := range simpler.whole.parameters {
+		if k, ok := r.whole.circuit.Index(p.Name); ok {
+			kept[k], added[k] = simpler.whole.values[i], false
+			shared++
+		}
+	}
+	all := shared == len(simpler.whole.parameters)
+	if shared == 0 || !all && !simpler.atNoise {
+		return false
+	}
+	const draws, weakness = 5, 3
 	r.solve(r.nearest(draws, 1, func(values []float64) {
 		r.sampler.draw(r.whole.circuit, values)
-		for i, k := range at {
-			values[k] = simpler.whole.values[i]
+		for k, v := range kept {
+			if !added[k] {
+				values[k] = v
+			}
 		}
 		if simpler.atNoise {
-			weaken(r.whole.circuit.Root(), added, values)
+			weaken(r.whole.circuit.Root(), added, values, weakness)
 		}
 	})[0].x)
+	return all
 }
 
 // first makes a first attempt from the nearest of a few draws.
 func (r *runner) first() {
-	draws := min(8*len(r.whole.free), drawsPerRound)
+	draws := min(6*len(r.whole.free), drawsPerRound)
 	for _, start := range r.nearest(draws, 1, r.draw) {
 		r.solve(start.x)
 	}
@@ -212,23 +221,38 @@ func (r *runner) within(larger []*runner) {
 }
 
 // polish goes from the best minimum on the thinned sweep to that on the whole;
-// in brief, with few steps, and where the thinned sweep is not described, for
-// the cost to three digits alone. It returns nil if there is no minimum.
-func (r *runner) polish(brief bool) (*lm.Result, error) {
+// nil if there is none. In a race that has a winner, a circuit that does not
+// describe the thinned sweep is fitted for the first digits of its cost, and
+// one that does goes a few steps, and on to its end only if that is in sight or
+// worth it.
+func (r *runner) polish(winner *lm.Result) (*lm.Result, error) {
 	if len(r.best) == 0 {
 		return nil, nil
 	}
-	p := r.whole
-	settings := p.solver(r.search.solver.Lower, r.search.solver.Upper)
-	switch {
-	case !brief:
-	case !r.best[0].converged:
-		settings.MaxIterations = 2 // it will not converge here either
-	case !r.search.atNoise():
-		settings.MaxIterations = briefSteps
-		settings.GradientTolerance, settings.CostTolerance, settings.SlowTolerance = 3e-2, 1e-3, 1e-3
-	default:
-		settings.MaxIterations = briefSteps
+	p, best := r.whole, r.best[0]
+	settings := p.precise(r.search.solver.Lower, r.search.solver.Upper)
+	if winner == nil {
+		return p.minimise(best.x, &settings)
 	}
-	return p.minimise(r.best[0].x, &settings)
+	brief := settings
+	brief.MaxIterations = fewSteps
+	if !r.search.atNoise() {
+		brief.CostTolerance, brief.SlowTolerance = 1e-2, 1e-2
+	} else if !best.converged {
+		brief.MaxIterations = 2
+	}
+	solution, err := p.minimise(best.x, &brief)
+	if err != nil || solution.Status.Converged() || !(solution.Cost < worthwhileGain*winner.Cost) {
+		return solution, err
+	}
+	return p.minimise(solution.X, &settings)
 }
+
+// In a race that has a winner, a solve on the thinned sweep is bounded by
+// briefSteps, one on the whole sweep by fewSteps unless it lowers the cost below
+// this share of the winner's.
+const (
+	briefSteps     = 16
+	fewSteps       = 4
+	worthwhileGain = 0.99
+)

@@ -19,6 +19,14 @@ func roundingSquares(z []complex128) float64 {
 	if len(z) == 0 {
 		return 0
 	}
+	polar, cartesian := true, true // as far as a few points tell, which is mostly no
+	for _, v := range z[:min(len(z), 4)] {
+		polar = polar && short(abs(v), 1e-12) && short(180/math.Pi*math.Atan2(imag(v), real(v)), 1e-10)
+		cartesian = cartesian && short(real(v), 1e-12) && short(imag(v), 1e-12)
+	}
+	if !polar && !cartesian {
+		return 0
+	}
 	first, second := make([]float64, len(z)), make([]float64, len(z))
 	for i, v := range z {
 		first[i], second[i] = abs(v), 180/math.Pi*math.Atan2(imag(v), real(v))
@@ -61,23 +69,17 @@ func lastPlaces(values []float64, tol float64) []float64 {
 	if largest == 0 {
 		return nil
 	}
-	isMultiple := func(v, unit float64) bool {
-		return math.Abs(v-unit*math.Round(v/unit)) <= tol*math.Abs(v)
-	}
 	digits, places := minDigits, minDigits
-	unit := func(size float64, digits int) float64 {
-		return math.Pow(10, math.Floor(math.Log10(size))+1-float64(digits))
-	}
 	for _, v := range values {
 		if v == 0 {
 			continue
 		}
-		for !isMultiple(v, unit(math.Abs(v), digits)) {
+		for !isMultiple(v, unit(math.Abs(v), digits), tol) {
 			if digits++; digits > maxDigits {
 				return nil
 			}
 		}
-		for places <= maxDigits+1 && !isMultiple(v, unit(largest, places)) {
+		for places <= maxDigits+1 && !isMultiple(v, unit(largest, places), tol) {
 			places++
 		}
 	}
@@ -91,4 +93,20 @@ func lastPlaces(values []float64, tol float64) []float64 {
 		}
 	}
 	return units
+}
+
+// short reports whether a value has no more than maxDigits significant digits.
+func short(v, tol float64) bool {
+	return v == 0 || isMultiple(v, unit(math.Abs(v), maxDigits), tol)
+}
+
+// isMultiple reports whether v is a multiple of a unit but for a relative error.
+func isMultiple(v, unit, tol float64) bool {
+	return math.Abs(v-unit*math.Round(v/unit)) <= tol*math.Abs(v)
+}
+
+// unit returns the power of ten of the last of so many significant digits of a
+// value.
+func unit(size float64, digits int) float64 {
+	return math.Pow(10, math.Floor(math.Log10(size))+1-float64(digits))
 }

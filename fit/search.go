@@ -89,7 +89,7 @@ func (q *search) solve(x []float64) {
 	} else if len(q.best) == 0 || r.Cost < q.best[0].cost {
 		q.repeats = 0
 	}
-	q.best = keep(q.best, candidate{x: r.X, cost: r.Cost, converged: r.Status.Converged()}, kept)
+	q.best = keep(q.best, candidate{x: r.X, cost: r.Cost, converged: r.Status.Converged() && r.Status != lm.SlowConvergence}, kept)
 }
 
 // starts returns the starts of a round.
@@ -176,37 +176,33 @@ func (p *problem) distance(b *block, x []float64) float64 {
 	return sum
 }
 
-// weakness is the factor by which [weaken] reduces what an element does.
-const weakness = 30
-
 // weaken makes the branches of a circuit all of whose parameters were added
-// show less in its impedance: those in series have less impedance, those in
-// parallel less admittance. It reports whether the node itself is such a
+// show less in its impedance by a factor: those in series have less impedance,
+// those in parallel less admittance. It reports whether the node itself is such a
 // branch.
-func weaken(n *models.Node, added []bool, values []float64) bool {
+func weaken(n *models.Node, added []bool, values []float64, factor float64) bool {
 	if n.Kind == models.Leaf {
 		all := true
 		for _, p := range n.Parameters {
 			all = all && added[p]
 		}
 		if !all && len(n.Parameters) > 1 && added[n.Parameters[1]] {
-			values[n.Parameters[1]] /= weakness // the loss tangent of a capacitor
+			values[n.Parameters[1]] /= factor // the loss tangent of a capacitor
 		} else if !all && added[n.Parameters[0]] {
-			values[n.Parameters[0]] /= weakness // the resistance of a line
+			values[n.Parameters[0]] /= factor // the resistance of a line
 		}
 		return all
 	}
 	all := true
 	var branches []*models.Node
 	for _, child := range n.Children {
-		if weaken(child, added, values) {
+		if weaken(child, added, values, factor) {
 			branches = append(branches, child)
 		} else {
 			all = false
 		}
 	}
 	if !all {
-		factor := float64(weakness)
 		if n.Kind == models.Series {
 			factor = 1 / factor
 		}

@@ -201,7 +201,7 @@ func clamp(x, lower, upper []float64) {
 type candidate struct {
 	x         []float64
 	cost      float64
-	converged bool
+	converged bool // and not along a flat valley
 }
 
 // keep adds a minimum unless it is there already, best first, at most n.

@@ -29,7 +29,7 @@ func evaluate(p *problem, s *Settings, x []float64, solution *lm.Result) *Result
 	r := &Result{
 		Circuit: p.circuit, Weight: p.weight, Robust: s.Robust, Free: p.free,
 		Freq: p.freq, Measured: p.measured,
-		Status: solution.Status, Reason: solution.Reason, Iterations: solution.Iterations,
+		Status: solution.Status, Iterations: solution.Iterations,
 		Evaluations:      solution.ResidualEvaluations + solution.JacobianEvaluations,
 		DegreesOfFreedom: 2*n - len(p.free),
 		problem:          p, x: x, Cost: solution.Cost,
@@ -329,6 +329,9 @@ func normalCovariance(jtj []float64, n int, columns []int) *mat.SymDense {
 // after the other is taken away until the rest can: what the rest then says
 // of the impedance, which is their sum in effect, stays right.
 func regularCovariance(j *mat.Dense, columns []int, variance float64) (covariance *mat.SymDense, rest, vague []int) {
+	if r := lm.Triangle(j); r != nil {
+		j = r // says the same of the columns, in fewer rows
+	}
 	for len(columns) > 0 {
 		rows, _ := j.Dims()
 		part := mat.NewDense(rows, len(columns), nil)

@@ -78,7 +78,7 @@ func BenchmarkSolve(b *testing.B) {
 				}
 			}
 			if !r.Status.Converged() {
-				b.Fatalf("%v: %s", r.Status, r.Reason)
+				b.Fatalf("%v: %s", r.Status, r.Reason())
 			}
 			b.ReportMetric(float64(r.Iterations), "steps")
 			b.ReportMetric(r.X[0], "x0")

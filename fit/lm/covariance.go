@@ -94,6 +94,29 @@ func (s *state) singular(limit float64) error {
 	return e
 }
 
+// Triangle returns R of the QR decomposition of J, n×n; nil if J has no more rows than columns or is not finite. The
+// columns of R are as long as those of J and at the same angles, so that their covariance is the same.
+func Triangle(j *mat.Dense) *mat.Dense {
+	m, n := j.Dims()
+	if m <= n {
+		return nil
+	}
+	w := workspaces.Get().(*Workspace)
+	defer workspaces.Put(w)
+	s := w.prepare(m, n, false)
+	clear(s.r)
+	if s.tri.factorise(j, s.r) >= 0 {
+		return nil
+	}
+	r := mat.NewDense(n, n, nil)
+	for k := range n {
+		for i, v := range s.tri.column(k) {
+			r.Set(i, k, v)
+		}
+	}
+	return r
+}
+
 // NormalCovariance is [Covariance] from JᵀJ, n×n by rows, instead of J: (JᵀJ)⁻¹·s². It is faster and has fewer digits;
 // it returns false where JᵀJ is not finite or not so clearly regular that they suffice for a standard deviation.
 func NormalCovariance(jtj []float64, n int, variance float64) (*mat.SymDense, bool) {

@@ -25,7 +25,7 @@ func ExampleSolve() {
 		return
 	}
 	if !r.Status.Converged() {
-		fmt.Println(r.Status, r.Reason)
+		fmt.Println(r.Status, r.Reason())
 		return
 	}
 	variance := 2 * r.Cost / float64(len(t)-len(r.X))

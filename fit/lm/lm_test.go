@@ -98,7 +98,7 @@ func sameBits(a, b []float64) bool {
 func sameResult(a, b *Result) bool {
 	return sameBits(a.X, b.X) && sameBits(a.Residuals, b.Residuals) && sameBits(a.Gradient, b.Gradient) &&
 		sameBits(a.Jacobian.RawMatrix().Data, b.Jacobian.RawMatrix().Data) && slices.Equal(a.AtBound, b.AtBound) &&
-		math.Float64bits(a.Cost) == math.Float64bits(b.Cost) && a.Status == b.Status && a.Reason == b.Reason &&
+		math.Float64bits(a.Cost) == math.Float64bits(b.Cost) && a.Status == b.Status && a.Reason() == b.Reason() &&
 		a.Iterations == b.Iterations && a.ResidualEvaluations == b.ResidualEvaluations && a.JacobianEvaluations == b.JacobianEvaluations
 }
 
@@ -172,7 +172,7 @@ func TestInvariants(t *testing.T) {
 				t.Errorf("start changed to %v", start)
 			}
 			if !first.Status.Usable() || !first.Status.Converged() && s.MaxIterations == 0 {
-				t.Errorf("%v: %s", first.Status, first.Reason)
+				t.Errorf("%v: %s", first.Status, first.Reason())
 			}
 
 			r := make([]float64, c.p.Size)
@@ -317,7 +317,7 @@ func TestBoundsLinear(t *testing.T) {
 		for _, unit := range []bool{false, true} {
 			got := solve(t, linear(a, y), start, &Settings{Lower: low, Upper: high, UnitScaling: unit})
 			if !got.Status.Converged() {
-				t.Errorf("%v: %s", got.Status, got.Reason)
+				t.Errorf("%v: %s", got.Status, got.Reason())
 			}
 			for k := range n {
 				if !(math.Abs(got.X[k]-want[k]) <= 1e-9*(math.Abs(low[k])+math.Abs(high[k]))) {
@@ -647,7 +647,7 @@ func TestNonFinite(t *testing.T) {
 			t.Errorf("%s: the first step led to %v, expected %v", name, first, c.refused)
 		}
 		if !r.Status.Converged() {
-			t.Errorf("%s: %v, %s", name, r.Status, r.Reason)
+			t.Errorf("%s: %v, %s", name, r.Status, r.Reason())
 		}
 		checkClose(t, name, r.X, want, 1e-9)
 	}
@@ -742,14 +742,14 @@ func TestStatuses(t *testing.T) {
 		{IterationLimit, p, Settings{MaxIterations: 3}, "steps tried 3 >= 3 (MaxIterations)"},
 	} {
 		r := solve(t, c.p, start, &c.s)
-		if r.Status != c.want || !strings.Contains(r.Reason, c.reason) {
-			t.Errorf("%v: %s, want %v: %s", r.Status, r.Reason, c.want, c.reason)
+		if r.Status != c.want || !strings.Contains(r.Reason(), c.reason) {
+			t.Errorf("%v: %s, want %v: %s", r.Status, r.Reason(), c.want, c.reason)
 		}
 		if converged := c.want <= RoundingConvergence; r.Status.Converged() != converged || !r.Status.Usable() {
 			t.Errorf("%v: converged %v, usable %v", c.want, r.Status.Converged(), r.Status.Usable())
 		}
-		if r.Status.Converged() && !strings.Contains(r.Reason, "<=") {
-			t.Errorf("%v: reason %q has no comparison", c.want, r.Reason)
+		if r.Status.Converged() && !strings.Contains(r.Reason(), "<=") {
+			t.Errorf("%v: reason %q has no comparison", c.want, r.Reason())
 		}
 	}
 	for s, text := range map[Status]string{NotRun: "not run", NonFinite: "not finite", -1: "Status(-1)", 99: "Status(99)"} {

@@ -150,7 +150,7 @@ func TestNIST(t *testing.T) {
 						total[i] += n
 					}
 					if !r.Status.Converged() {
-						t.Errorf("%s from start %d: %v: %s", p.name, start+1, r.Status, r.Reason)
+						t.Errorf("%s from start %d: %v: %s", p.name, start+1, r.Status, r.Reason())
 					}
 					for i, want := range []float64{c.parameters, c.deviations, c.rss} {
 						if p.name == exactFit && i > 0 {

@@ -59,12 +59,16 @@ type Result struct {
 	AtBound []bool // X_j is equal to its lower or upper bound, n
 
 	Status Status
-	Reason string // Status in words, with the measured value and its threshold
+	// Measured is the value that ended the solve, Limit its threshold; see Reason.
+	Measured, Limit float64
 
 	Iterations          int // steps tried, the refused ones included
 	ResidualEvaluations int // those for differences included
 	JacobianEvaluations int
 }
+
+// Reason returns the Status in words, with the measured value and its threshold.
+func (r *Result) Reason() string { return reason(r.Status, r.Measured, r.Limit) }
 
 // NonFiniteError says which residual, or which element of the Jacobian, is not a finite number at the start.
 type NonFiniteError struct {
@@ -113,7 +117,7 @@ func Solve(p Problem, start []float64, settings *Settings) (*Result, error) {
 	s.begin(start)
 	if err := s.evaluate(); err != nil {
 		s.settings, s.problem = Settings{}, Problem{}
-		return &Result{Status: NonFinite, Reason: err.Error(), ResidualEvaluations: s.residuals, JacobianEvaluations: s.jacobians}, err
+		return &Result{Status: NonFinite, ResidualEvaluations: s.residuals, JacobianEvaluations: s.jacobians}, err
 	}
 	s.radius = o.InitialRadius
 	for s.status == NotRun {
@@ -461,7 +465,8 @@ func (s *state) result() *Result {
 		AtBound:             make([]bool, n),
 		Cost:                s.cost,
 		Status:              s.status,
-		Reason:              reason(s.status, s.measured, s.limit),
+		Measured:            s.measured,
+		Limit:               s.limit,
 		Iterations:          s.iterations,
 		ResidualEvaluations: s.residuals,
 		JacobianEvaluations: s.jacobians,

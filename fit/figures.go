@@ -123,16 +123,29 @@ func (r *Result) variance(derivative func(k int) float64) (scatter, meter float6
 	if len(r.Free) == 0 {
 		return 0, 0
 	}
-	var memory [8]float64
-	g := mat.NewVecDense(len(r.Free), slices.Grow(memory[:0], len(r.Free))[:len(r.Free)])
-	for c, k := range r.Free {
-		g.SetVec(c, derivative(k))
+	var memory [12]float64
+	g := memory[:0]
+	for _, k := range r.Free {
+		g = append(g, derivative(k))
 	}
-	scatter = mat.Inner(g, r.Covariance, g)
+	scatter = quadratic(g, r.Covariance)
 	if r.MeterCovariance != nil {
-		meter = mat.Inner(g, r.MeterCovariance, g)
+		meter = quadratic(g, r.MeterCovariance)
 	}
 	return max(scatter, 0), max(meter, 0)
+}
+
+// quadratic returns gᵀ·C·g. Every figure at every frequency asks for one.
+func quadratic(g []float64, c *mat.SymDense) (sum float64) {
+	raw := c.RawSymmetric()
+	for i, gi := range g {
+		row := raw.Data[i*raw.Stride : i*raw.Stride+raw.N]
+		sum += gi * gi * row[i]
+		for j := i + 1; j < raw.N; j++ {
+			sum += 2 * gi * g[j] * row[j]
+		}
+	}
+	return sum
 }
 
 // measuredAt interpolates the sweep in ln f: its resistance linearly, its

@@ -195,9 +195,13 @@ func (a *Analysis) structure(freq []float64, z []complex128, s *Settings) {
 	try := func(kind models.Kind) {
 		free := *s
 		free.Fixed, free.Start, free.Bounds = nil, nil, nil
-		for _, m := range models.OfKind(kind) {
-			if other, err := Fit(freq, z, m.Circuit, &free); err == nil {
-				consider(m.Name, other.RMSRelative, other.aicc(other.Cost, 0))
+		others := Analysis{Kind: kind}
+		if others.fitAll(freq, z, models.OfKind(kind), &free) != nil {
+			return
+		}
+		for _, c := range others.Candidates {
+			if c.Result != nil {
+				consider(c.Name, c.Result.RMSRelative, c.Result.aicc(c.Result.Cost, 0))
 			}
 		}
 	}

@@ -36,7 +36,7 @@ type Resonance struct {
 // interval is halved, at most maxHalvings times, while Z turns or changes by
 // more than steepestTurn in it.
 const (
-	pointsPerDecade = 60
+	pointsPerDecade = 20
 	steepestTurn    = 0.3
 	maxHalvings     = 48
 )

@@ -259,13 +259,22 @@ func New(s Sweep, a *fit.Analysis, o Options) *Fit {
 	}
 	values := r.Figures(at)
 	f.Figures = make([]Figure, 0, len(values))
+	// The numbers of all figures in one piece of memory: there are hundreds.
+	numbers := make([]float64, 0, 3*len(values))
+	kept := func(v float64) *float64 {
+		if math.IsNaN(v) || math.IsInf(v, 0) {
+			return nil
+		}
+		numbers = append(numbers, v)
+		return &numbers[len(numbers)-1]
+	}
 	for _, v := range values {
-		if finite(v.Value) == nil {
+		if math.IsNaN(v.Value) || math.IsInf(v.Value, 0) {
 			continue
 		}
 		figure := Figure{
 			Name: v.Figure, AtHz: v.At, Value: v.Value, Unit: v.Figure.Unit(),
-			Low95: finite(v.Low95), High95: finite(v.High95), Measured: finite(v.Measured),
+			Low95: kept(v.Low95), High95: kept(v.High95), Measured: kept(v.Measured),
 		}
 		if o.AccuracyStated && !math.IsNaN(v.Resolution) && restsOnESR(v.Figure) {
 			below := v.BelowResolution

@@ -94,7 +94,7 @@ func (q *search) solve(x []float64) {
 
 // starts returns the starts of a round.
 func (q *search) starts() []candidate {
-	draws := drawsPerRound
+	draws := min(drawsPerRound, 4*len(q.whole.free))
 	if q.whole.given() != nil {
 		draws = 1
 	}

@@ -76,8 +76,8 @@ func (c *Circuit) Resonances(values []float64, from, to float64) []Resonance {
 	}
 	grid := c.resonanceGrid(values, from, to)
 	last := probe.at(grid[0])
-	block := make([]point, BlockSize)
-	for freq := range slices.Chunk(grid[1:], BlockSize) {
+	block := make([]point, probed)
+	for freq := range slices.Chunk(grid[1:], probed) {
 		probe.evaluate(block, freq)
 		for _, next := range block[:len(freq)] {
 			search(last, next, maxHalvings)
@@ -92,6 +92,9 @@ type point struct {
 	f     float64
 	z, dz complex128
 }
+
+// probed is the number of frequencies that a probe evaluates together.
+const probed = 32
 
 // probe evaluates a circuit at a few frequencies after the other.
 type probe struct {
@@ -109,12 +112,14 @@ func newProbe(c *Circuit, values []float64) *probe {
 		evaluator: c.NewEvaluator([]float64{1}),
 		values:    values,
 		weights:   c.frequencyWeights(values),
-		z:         make([]complex128, BlockSize),
+		z:         make([]complex128, probed),
 		columns:   make([][]complex128, n),
 		window:    make([][]complex128, n),
 	}
-	for k := range p.columns {
-		p.columns[k] = make([]complex128, BlockSize)
+	for k, w := range p.weights {
+		if w != 0 {
+			p.columns[k] = make([]complex128, probed)
+		}
 	}
 	return p
 }

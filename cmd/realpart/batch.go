@@ -27,8 +27,9 @@ type fitted struct {
 	input    int           // the index of its input
 	held     *held         // where --json-out holds it from an earlier run
 
-	line    []byte // the record in JSON, where an output wants it
+	line    []byte // the record in JSON, where an output wants it; until it is written
 	lineErr error
+	memory  *[]byte // that of line
 }
 
 // usualLine is the room for a line of JSON; most take some 13 kB.
@@ -38,10 +39,19 @@ const usualLine = 16 << 10
 // fits are made, in parallel: what is done in order is writing alone.
 func (b *batch) encoded(r fitted) fitted {
 	if b.streaming || b.store != nil && r.held == nil {
-		r.line, r.lineErr = report.AppendJSON(make([]byte, 0, usualLine), r.record)
+		memory := lines.Get().(*[]byte)
+		*memory, r.lineErr = report.AppendJSON((*memory)[:0], r.record)
+		r.memory = memory
+		r.line = *memory
 	}
 	return r
 }
+
+// lines is the memory of lines that are written.
+var lines = sync.Pool{New: func() any {
+	line := make([]byte, 0, usualLine)
+	return &line
+}}
 
 // batch fits all sweeps of the inputs and emits them in the order of the
 // inputs. A bad input never stops the rest: failures are told on standard
@@ -191,6 +201,9 @@ func (b *batch) lot(l lot, total int) error {
 
 // take hands a result on, and notes its failure.
 func (b *batch) take(r fitted) error {
+	if r.memory != nil {
+		defer lines.Put(r.memory)
+	}
 	if r.lineErr != nil {
 		return r.lineErr
 	}

@@ -465,7 +465,7 @@ func (p *problem) leavesNoise(r *lm.Result) bool {
 	defer floats.Put(memory)
 	n := noise{sizes: *memory}
 	n.ofResiduals(p.residuals)
-	return !n.below(leastLevel(r.Cost, len(p.freq)))
+	return n.explains(r.Cost, len(p.freq))
 }
 
 // better reports whether a solution is to be preferred: one that converged to

@@ -4,8 +4,6 @@ import (
 	"math"
 	"slices"
 	"sync"
-
-	"realpart/fit/residual"
 )
 
 // noise tells how well a smooth sweep could be described at all: it holds the
@@ -61,48 +59,31 @@ func (n *noise) ofResiduals(rho []complex128) {
 	}
 }
 
-// level is the estimated standard deviation, from the median of the sizes over
-// that of normal data, so that wild points don't count; 0 if it is not told. It
-// reorders the sizes.
-func (n *noise) level() float64 {
-	if len(n.sizes) == 0 {
-		return 0
-	}
-	return 1.482602218505602 * residual.Median(n.sizes) // 1/Φ⁻¹(3/4)
-}
-
-// below reports whether the level is below a limit, which is a matter of
-// counting and cheaper than the level.
-func (n *noise) below(limit float64) bool {
-	limit /= 1.482602218505602
-	under := 0
+// explains reports whether a cost ½Σr² of the relative residual over so many
+// points is no more than noise makes: level² a point, give or take a relative
+// 1/√points. The level is the median of the sizes over that of normal data, so
+// that wild points don't count; on which side of a limit it lies is a matter of
+// counting.
+func (n *noise) explains(cost float64, points int) bool {
+	limit := math.Sqrt(cost / (float64(points) * (1 + 5/math.Sqrt(float64(points)))))
+	limit /= 1.482602218505602 // 1/Φ⁻¹(3/4)
+	above := 0
 	for _, v := range n.sizes {
-		if v < limit {
-			under++
+		if v >= limit {
+			above++
 		}
 	}
-	return 2*under > len(n.sizes)
-}
-
-// explains reports whether a cost ½Σr² of the relative residual over so many
-// points is no more than noise of a level makes, level² a point give or take a
-// relative 1/√points.
-func explains(level, cost float64, points int) bool { return level >= leastLevel(cost, points) }
-
-// leastLevel is the level of noise that explains a cost.
-func leastLevel(cost float64, points int) float64 {
-	return math.Sqrt(cost / (float64(points) * (1 + 5/math.Sqrt(float64(points)))))
+	return len(n.sizes) > 0 && 2*above >= len(n.sizes)
 }
 
 // describes reports whether a cost over so many points of the sweep is
-// explained by its noise, see [explains].
+// explained by its noise, see [noise.explains].
 func (p *points) describes(cost float64, points int) bool {
 	w := p.prepare()
-	if w.level < 0 {
+	if len(w.noise.sizes) == 0 {
 		w.noise.measure(p.measured, w.inverse)
-		w.level = w.noise.level()
 	}
-	return explains(w.level, cost, points)
+	return w.noise.explains(cost, points)
 }
 
 // floats is memory for numbers that nobody keeps.

@@ -56,8 +56,7 @@ type points struct {
 type work struct {
 	grid    models.Grid
 	inverse []complex128 // 1/measured
-	noise   noise
-	level   float64 // of the noise, see describes; −1: not yet told
+	noise   noise        // see describes
 }
 
 // works are those that no sweep needs.
@@ -75,7 +74,7 @@ func (p *points) prepare() *work {
 func (p *points) compute() {
 	w := p.work
 	w.grid.Set(p.freq)
-	w.level = -1
+	w.noise.sizes = w.noise.sizes[:0]
 	w.inverse = slices.Grow(w.inverse[:0], len(p.measured))[:len(p.measured)]
 	for i, v := range p.measured {
 		if squares := real(v)*real(v) + imag(v)*imag(v); squares > safe && squares < 1/safe {

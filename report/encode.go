@@ -66,6 +66,9 @@ func AppendJSON(b []byte, f *Fit) ([]byte, error) {
 type encoder struct {
 	b   []byte
 	err error // the first
+
+	atHz      float64 // of the last figure
+	frequency []byte  // its digits
 }
 
 func (e *encoder) sweep(s *Sweep) {
@@ -135,7 +138,15 @@ func (e *encoder) resonance(r *Resonance) {
 func (e *encoder) figure(v *Figure) {
 	e.begin('{')
 	e.text("name", string(v.Name))
-	e.number("at_hz", v.AtHz)
+	e.name("at_hz")
+	// All figures of a frequency follow one another.
+	if len(e.frequency) == 0 || v.AtHz != e.atHz {
+		start := len(e.b)
+		e.digits(v.AtHz)
+		e.atHz, e.frequency = v.AtHz, append(e.frequency[:0], e.b[start:]...)
+	} else {
+		e.b = append(e.b, e.frequency...)
+	}
 	e.number("value", v.Value)
 	e.text("unit", v.Unit)
 	e.optional("low95", v.Low95)

@@ -130,14 +130,15 @@ type batch struct {
 // A batch of manySweeps or more gets slackBytes of slack.
 const (
 	manySweeps = 32
-	slackBytes = 16 << 20
+	slackBytes = 8 << 20
 )
 
 // expect prepares for a number of sweeps. The garbage collector runs when the
 // heap has grown by as much as is in use; that is 3 MB here for any number of
 // sweeps, each of which leaves a tenth of it, so that every seventh part of the
 // time went into collections. A block that counts as in use lets it run every
-// 16 MB more. Nothing is ever written to the block, so that it takes addresses
+// 8 MB more; with 16 MB the first touch of each page costs more than the
+// collections that it saves. Nothing is ever written to the block, so that it takes addresses
 // and no memory. (A higher percentage of growth would do the same for a small
 // heap but let the large one of a big file grow by several times its size; and
 // for a few sweeps the block costs more than it saves.)

@@ -59,6 +59,7 @@ func TestChoice(t *testing.T) {
 	}
 	slices.Sort(rows)
 	t.Logf("confusion table, %d cases:\n%s", cases, strings.Join(rows, "\n"))
+	t.Logf("true circuit chosen in %d of %d", right, cases)
 	if share := float64(right) / cases; !(share >= 0.98) {
 		t.Errorf("true circuit chosen in %.1f %% of cases, want at least 98 %%", 100*share)
 	}

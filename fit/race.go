@@ -114,6 +114,7 @@ func race(problems []*problem) ([]*outcome, error) {
 			solution, err = r.polish(winner)
 		}
 		if solution == nil {
+			r.repeats = 0 // the attempts from simpler circuits lead to the same minima
 			solution, err = problems[i].solveFrom(r.search)
 		}
 		if err := finish(i, solution, err); err != nil {
@@ -252,7 +253,7 @@ func (r *runner) polish(winner *lm.Result) (*lm.Result, error) {
 // briefSteps, one on the whole sweep by fewSteps unless it lowers the cost below
 // this share of the winner's.
 const (
-	briefSteps     = 16
+	briefSteps     = 12
 	fewSteps       = 4
 	worthwhileGain = 0.99
 )

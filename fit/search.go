@@ -94,7 +94,10 @@ func (q *search) solve(x []float64) {
 
 // starts returns the starts of a round.
 func (q *search) starts() []candidate {
-	draws := min(drawsPerRound, 4*len(q.whole.free))
+	draws := drawsPerRound
+	if q.round == 0 { // mostly the last
+		draws = min(draws, 4*len(q.whole.free))
+	}
 	if q.whole.given() != nil {
 		draws = 1
 	}

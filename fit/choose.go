@@ -21,7 +21,7 @@ type Candidate struct {
 	// Name is that of the library; "" for a user's own expression.
 	Name    string
 	Circuit *models.Circuit
-	Result  *Result // nil if the fit was not possible
+	Result  *Result // nil if the fit was not possible; Lag1 and Structured are the chosen one's alone
 	// AICc is Akaike's information criterion with the correction for small
 	// samples (Hurvich and Tsai 1989); smaller is better. NaN without a
 	// result.
@@ -104,6 +104,7 @@ func Analyse(freq []float64, z []complex128, request Request) (*Analysis, error)
 // finish adds to an analysis whose result is chosen what the sweep cannot
 // tell, what was asked for, and the warnings.
 func (a *Analysis) finish(freq []float64, z []complex128, request Request, settings *Settings) (*Analysis, error) {
+	a.Result.structure()
 	a.Result.testElements()
 	if err := a.Result.bound(); err != nil {
 		return nil, err

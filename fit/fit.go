@@ -182,7 +182,11 @@ func Fit(freq []float64, z []complex128, c *models.Circuit, settings *Settings) 
 	if err != nil {
 		return nil, err
 	}
-	return p.complete(solution)
+	r, err := p.complete(solution)
+	if err == nil {
+		r.structure()
+	}
+	return r, err
 }
 
 // resolve returns the settings with the defaults filled in.
@@ -197,7 +201,7 @@ func (s *Settings) resolve() *Settings {
 	return &resolved
 }
 
-// complete makes a result of a solution.
+// complete makes a result of a solution, but for the structure of its residuals.
 func (p *problem) complete(solution *lm.Result) (*Result, error) {
 	c, s := p.circuit, p.settings
 	if len(p.free) == 0 {

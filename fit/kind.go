@@ -31,10 +31,8 @@ func TellKind(freq []float64, z []complex128) (models.Kind, string) {
 	few := max(1, min(5, n/10))
 	first, last := middle(phase[:few]), middle(phase[n-few:])
 	low := abs(z[0])
-	largest, smallest := low, low
-	for _, v := range z {
-		largest, smallest = max(largest, abs(v)), min(smallest, abs(v))
-	}
+	_, most := extremes(z)
+	largest := abs(z[most])
 	series, parallel := turns(freq, phase)
 	ends := fmt.Sprintf("phase %.0f° at the low and %.0f° at the high end", first, last)
 

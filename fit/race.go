@@ -110,7 +110,9 @@ func race(problems []*problem) ([]*outcome, error) {
 		var solution *lm.Result
 		var err error
 		if winner != nil {
-			r.within(runners[i+1:])
+			if len(r.whole.free) > 2 { // with so few the first attempt has found the one minimum
+				r.within(runners[i+1:])
+			}
 			solution, err = r.polish(winner)
 		}
 		if solution == nil {
@@ -176,7 +178,7 @@ func (r *runner) from(simpler *runner) bool {
 	}
 	const draws, weakness = 5, 3
 	r.solve(r.nearest(draws, 1, func(values []float64) {
-		r.sampler.draw(r.whole.circuit, values)
+		r.sampler.draw(values)
 		for k, v := range kept {
 			if !added[k] {
 				values[k] = v

@@ -33,7 +33,7 @@ func (p *problem) newSearch() *search {
 	lower, upper := p.bounds(s)
 	f := p.features(s.Robust)
 	q := &search{
-		whole: p, thinned: newProblem(p.circuit, f.points, Relative, s), settings: s, sampler: newSampler(f, s.Seed),
+		whole: p, thinned: newProblem(p.circuit, f.points, Relative, s), settings: s, sampler: newSampler(f, p.circuit, s.Seed),
 		solver: p.searcher(lower, upper),
 	}
 	if s.Robust {
@@ -106,7 +106,7 @@ func (q *search) starts() []candidate {
 
 // draw fills values at random, the user's own kept.
 func (q *search) draw(values []float64) {
-	q.sampler.draw(q.whole.circuit, values)
+	q.sampler.draw(values)
 	for _, i := range q.whole.free {
 		if given, ok := q.settings.Start[q.whole.parameters[i].Name]; ok {
 			values[i] = given

@@ -65,10 +65,42 @@ func abs(z complex128) float64 { return math.Hypot(real(z), imag(z)) }
 type sampler struct {
 	*features
 	random *rand.Rand
+	leaves []*models.Node
+	// inductors and capacitors are the parameters of inductances and of
+	// capacitances; siblings gives for each inductor the capacitance beside it,
+	// -1 if there is none.
+	inductors, siblings, capacitors []int
 }
 
-func newSampler(f *features, seed uint64) *sampler {
-	return &sampler{features: f, random: rand.New(rand.NewPCG(seed, 0x5eed))}
+func newSampler(f *features, c *models.Circuit, seed uint64) *sampler {
+	s := &sampler{features: f, random: rand.New(rand.NewPCG(seed, 0x5eed))}
+	s.list(c.Root(), -1)
+	return s
+}
+
+// list adds the leaves of a branch, beside which there is a given capacitance.
+func (s *sampler) list(n *models.Node, beside int) {
+	if n.Kind != models.Leaf {
+		beside = -1
+		for _, child := range n.Children {
+			if child.Kind == models.Leaf && child.Element == models.Capacitor {
+				beside = child.Parameters[0]
+			}
+		}
+		for _, child := range n.Children {
+			s.list(child, beside)
+		}
+		return
+	}
+	s.leaves = append(s.leaves, n)
+	switch n.Element {
+	case models.Inductor:
+		s.inductors, s.siblings = append(s.inductors, n.Parameters[0]), append(s.siblings, beside)
+	case models.Capacitor, models.LossCapacitor:
+		s.capacitors = append(s.capacitors, n.Parameters[0])
+	case models.RCLine:
+		s.capacitors = append(s.capacitors, n.Parameters[1])
+	}
 }
 
 // spread returns a factor exp(N(0, σ)).
@@ -81,27 +113,8 @@ func (s *sampler) anchor() (omega float64, z, y complex128) {
 }
 
 // draw fills values (in the order of the circuit's parameters) at random.
-func (s *sampler) draw(c *models.Circuit, values []float64) {
-	var inductors, capacitors []int
-	siblings := map[int]int{} // of an inductance: the capacitance beside it
-	var walk func(n *models.Node)
-	walk = func(n *models.Node) {
-		l, c := -1, -1
-		for _, child := range n.Children {
-			walk(child)
-			if child.Kind == models.Leaf && child.Element == models.Inductor {
-				l = child.Parameters[0]
-			}
-			if child.Kind == models.Leaf && child.Element == models.Capacitor {
-				c = child.Parameters[0]
-			}
-		}
-		if l >= 0 && c >= 0 {
-			siblings[l] = c
-		}
-		if n.Kind != models.Leaf {
-			return
-		}
+func (s *sampler) draw(values []float64) {
+	for _, n := range s.leaves {
 		p := n.Parameters[0]
 		omega, z, y := s.anchor()
 		switch n.Element {
@@ -109,10 +122,8 @@ func (s *sampler) draw(c *models.Circuit, values []float64) {
 			values[p] = [...]float64{abs(z), math.Abs(real(z)), 1 / math.Abs(real(y))}[s.random.IntN(3)]
 		case models.Inductor:
 			values[p] = [...]float64{abs(z), math.Abs(imag(z)), 1 / math.Abs(imag(y))}[s.random.IntN(3)] / omega
-			inductors = append(inductors, p)
 		case models.Capacitor:
 			values[p] = [...]float64{abs(y), math.Abs(imag(y)), 1 / math.Abs(imag(z))}[s.random.IntN(3)] / omega
-			capacitors = append(capacitors, p)
 		case models.Skin:
 			values[p] = [...]float64{abs(z), math.Sqrt2 * math.Abs(real(z))}[s.random.IntN(2)] / math.Sqrt(omega)
 		case models.LossCapacitor:
@@ -122,7 +133,6 @@ func (s *sampler) draw(c *models.Circuit, values []float64) {
 				tand = math.Pow(10, -4+3.5*s.random.Float64())
 			}
 			values[n.Parameters[1]] = tand
-			capacitors = append(capacitors, p)
 		case models.ConstantPhase:
 			exponent := 0.3 + 0.65*s.random.Float64()
 			values[p] = abs(y) / math.Pow(omega, exponent)
@@ -130,18 +140,16 @@ func (s *sampler) draw(c *models.Circuit, values []float64) {
 		case models.RCLine:
 			values[p] = 3 * math.Abs(real(z)) * s.spread(0.5)
 			values[n.Parameters[1]] = abs(y) / omega
-			capacitors = append(capacitors, n.Parameters[1])
 		}
 		values[p] *= s.spread(0.5)
 	}
-	walk(c.Root())
-	for _, l := range inductors {
-		if len(capacitors) == 0 || s.random.IntN(2) == 0 {
+	for i, l := range s.inductors {
+		if len(s.capacitors) == 0 || s.random.IntN(2) == 0 {
 			continue
 		}
-		partner := capacitors[s.random.IntN(len(capacitors))]
+		partner := s.capacitors[s.random.IntN(len(s.capacitors))]
 		omega := 0.0
-		if sibling, ok := siblings[l]; ok && s.random.IntN(2) == 0 {
+		if sibling := s.siblings[i]; sibling >= 0 && s.random.IntN(2) == 0 {
 			// the two of a section resonate somewhere in the sweep
 			partner = sibling
 			omega, _, _ = s.anchor()

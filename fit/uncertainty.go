@@ -23,7 +23,8 @@ const (
 	determinedExponent = 0.2
 )
 
-// evaluate makes a result of a solution: uncertainties, residuals, structure.
+// evaluate makes a result of a solution: uncertainties and residuals, but not
+// their structure.
 func evaluate(p *problem, s *Settings, x []float64, solution *lm.Result) *Result {
 	n := len(p.freq)
 	r := &Result{
@@ -41,13 +42,8 @@ func evaluate(p *problem, s *Settings, x []float64, solution *lm.Result) *Result
 	r.Model, r.Residuals = p.modelAt(x)
 	p.set(x)
 	sum, largest, at := 0.0, 0.0, 0
-	parts := borrow(2 * n)
-	defer floats.Put(parts)
-	re, im := (*parts)[:n], (*parts)[n:]
 	for i, rho := range r.Residuals {
-		a, b := real(rho), imag(rho)
-		re[i], im[i] = a, b
-		squares := a*a + b*b
+		squares := real(rho)*real(rho) + imag(rho)*imag(rho)
 		sum += squares
 		if squares > largest {
 			largest, at = squares, i
@@ -57,7 +53,6 @@ func evaluate(p *problem, s *Settings, x []float64, solution *lm.Result) *Result
 		r.MaxRelative, r.MaxAtHz = math.Sqrt(largest), p.freq[at]
 	}
 	r.RMSRelative = math.Sqrt(sum / float64(n))
-	r.structure(re, im)
 	r.Parameters = make([]Parameter, 0, len(p.parameters))
 	for i, parameter := range p.parameters {
 		_, fixed := s.Fixed[parameter.Name]
@@ -80,7 +75,14 @@ func evaluate(p *problem, s *Settings, x []float64, solution *lm.Result) *Result
 // structure fills Lag1 and Structured. Residuals count as structured when
 // real or imaginary part has fewer runs of one sign than chance gives at a
 // level of 0.1 %.
-func (r *Result) structure(re, im []float64) {
+func (r *Result) structure() {
+	n := len(r.Residuals)
+	parts := borrow(2 * n)
+	defer floats.Put(parts)
+	re, im := (*parts)[:n], (*parts)[n:]
+	for i, rho := range r.Residuals {
+		re[i], im[i] = real(rho), imag(rho)
+	}
 	lagRe, lagIm := residual.Lag1(re), residual.Lag1(im)
 	switch {
 	case math.IsNaN(lagRe):

@@ -54,4 +54,4 @@ echo
 echo "Accuracy, with the same program:"
 (cd "$here/../.." && go test ./fit/lm -run 'TestNIST$' -v | grep -E 'least|^ok' | sed 's/^ *[a-z_]*.go:[0-9]*: /NIST StRD digits (parameters, deviations, sum of squares), steps: /'
   PARTS=${PARTS:-100} go test ./fit -run 'TestRecovery$|TestChoice$|TestCoverage$|TestRaceMissesNothing$' -v |
-    grep -E 'covered|missed|chosen in|taken for|^ok|FAIL' | sed 's/^ *//')
+    grep -E 'covered in|of [0-9]+ missed|circuit chosen in|taken for|^ok|FAIL' | sed 's/^ *[a-z_]*.go:[0-9]*: //')

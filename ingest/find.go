@@ -60,6 +60,7 @@ func Find(paths []string) ([]Input, error) {
 			continue
 		}
 		lot := folderName(p)
+		out = slices.Grow(out, len(files))
 		for _, f := range joinTwins(files) {
 			out = append(out, Input{Path: f, Display: f, Lot: lot})
 		}
@@ -77,8 +78,7 @@ func folderName(p string) string {
 
 // below lists the sweep files of a folder in byte order.
 func below(folder string) ([]string, error) {
-	type entry struct{ slash, path string }
-	var found []entry
+	var found []string
 	// Walking the resolved folder lets a link be given by name.
 	root := folder
 	if r, err := filepath.EvalSymlinks(folder); err == nil {
@@ -100,22 +100,22 @@ func below(folder string) ([]string, error) {
 		case !d.Type().IsRegular():
 			return nil
 		}
-		rel, err := filepath.Rel(root, path)
-		if err != nil {
-			return err
+		if root != folder {
+			rel, err := filepath.Rel(root, path)
+			if err != nil {
+				return err
+			}
+			path = filepath.Join(folder, rel)
 		}
-		found = append(found, entry{filepath.ToSlash(rel), filepath.Join(folder, rel)})
+		found = append(found, filepath.Clean(path))
 		return nil
 	})
 	if err != nil {
 		return nil, err
 	}
-	slices.SortFunc(found, func(a, b entry) int { return strings.Compare(a.slash, b.slash) })
-	out := make([]string, len(found))
-	for i, e := range found {
-		out[i] = e.path
-	}
-	return out, nil
+	// All begin with the folder, so that what comes after it decides.
+	slices.SortFunc(found, func(a, b string) int { return strings.Compare(filepath.ToSlash(a), filepath.ToSlash(b)) })
+	return found, nil
 }
 
 // Open reads the sweeps of a file, or of standard input for "-". The path may

@@ -139,6 +139,9 @@ func joinTwins(files []string) []string {
 			byKey[key] = append(byKey[key], i)
 		}
 	}
+	if len(byKey) == 0 {
+		return files
+	}
 	skip := map[int]bool{}
 	out := make([]string, 0, len(files))
 	for i, f := range files {

@@ -1,6 +1,10 @@
 package fit
 
-import "realpart/fit/lm"
+import (
+	"fmt"
+
+	"realpart/fit/lm"
+)
 
 // outcome is a circuit's fit to a sweep.
 type outcome struct {
@@ -55,13 +59,17 @@ func each(problems []*problem) ([]*outcome, error) {
 func race(problems []*problem) ([]*outcome, error) {
 	runners := make([]*runner, len(problems))
 	outcomes := make([]*outcome, len(problems))
+	var winner *lm.Result // the first that describes the sweep, with every parameter determined
+	var first *problem    // whose it is
 	finish := func(i int, solution *lm.Result, err error) error {
-		if err == nil {
-			outcomes[i], err = problems[i].outcome(solution)
+		if err != nil {
+			return err
+		}
+		if outcomes[i], err = problems[i].outcome(solution); err == nil && winner != nil && !solution.Status.Converged() {
+			outcomes[i].reason = fmt.Sprintf("not followed to its end, as %s describes the sweep to its noise", first.circuit)
 		}
 		return err
 	}
-	var winner *lm.Result // the first that describes the sweep, with every parameter determined
 	for i, p := range problems {
 		switch {
 		case p == nil:
@@ -100,7 +108,7 @@ func race(problems []*problem) ([]*outcome, error) {
 			return nil, err
 		}
 		if winner == nil && outcomes[i].sound {
-			winner = solution
+			winner, first = solution, p
 		}
 	}
 	for i, r := range runners {

@@ -44,6 +44,32 @@ func each(problems []*problem) ([]*outcome, error) {
 	return outcomes, nil
 }
 
+// glance fits several circuits to one sweep with little effort: to see whether
+// one describes it much better than what there is. A nil problem has a nil
+// outcome.
+func glance(problems []*problem) ([]*outcome, error) {
+	outcomes := make([]*outcome, len(problems))
+	for i, p := range problems {
+		if p == nil || len(p.free) == 0 {
+			continue
+		}
+		const rounds, repeats = 2, 2
+		q := p.newSearch()
+		q.run(true, rounds, repeats)
+		if len(q.best) == 0 {
+			continue
+		}
+		solution, err := p.polish(q.best[0].x, q.solver.Lower, q.solver.Upper, p.settings.Robust)
+		if err == nil {
+			outcomes[i], err = p.outcome(solution)
+		}
+		if err != nil {
+			return nil, err
+		}
+	}
+	return outcomes, nil
+}
+
 // race fits several circuits to one sweep, from the simplest on, for a choice
 // among them. Each starts from what a simpler one has found, too.
 //

@@ -196,7 +196,7 @@ func (a *Analysis) structure(freq []float64, z []complex128, s *Settings) {
 		free := *s
 		free.Fixed, free.Start, free.Bounds = nil, nil, nil
 		others := Analysis{Kind: kind}
-		if others.fitAll(freq, z, models.OfKind(kind), &free) != nil {
+		if others.fitAllBy(glance, freq, z, models.OfKind(kind), free.resolve()) != nil {
 			return
 		}
 		for _, c := range others.Candidates {

@@ -139,7 +139,10 @@ func (a *Analysis) advise(parameter string) error {
 		})
 		if with >= 0 {
 			c := a.Candidates[with]
-			r = c.Result
+			if r = c.Result; r.givenUp != nil {
+				r.uncertainty(r.problem.settings, r.givenUp)
+				r.givenUp = nil
+			}
 			if err := r.bound(); err != nil {
 				return err
 			}

@@ -120,6 +120,9 @@ type Result struct {
 	problem *problem
 	x       []float64
 	tested  bool // by testElements
+	// givenUp is the solution of a circuit that a race gave up; its
+	// uncertainties wait for whoever asks.
+	givenUp *lm.Result
 	// extremes holds unknowns at the limits of profiled parameters: other
 	// circuits that the sweep allows, by which figures take their share of
 	// what is not determined.
@@ -229,6 +232,7 @@ func (p *problem) complete(solution *lm.Result) (*Result, error) {
 	}
 	r := evaluate(p, s, solution.X, solution)
 	r.Reason = reason
+	r.uncertainty(s, solution)
 	return r, nil
 }
 

@@ -88,11 +88,15 @@ func race(problems []*problem) ([]*outcome, error) {
 	var winner *lm.Result // the first that describes the sweep, with every parameter determined
 	var first *problem    // whose it is
 	finish := func(i int, solution *lm.Result, err error) error {
-		if err != nil {
-			return err
-		}
-		if outcomes[i], err = problems[i].outcome(solution); err == nil && winner != nil && !solution.Status.Converged() {
-			outcomes[i].reason = fmt.Sprintf("not followed to its end, as %s describes the sweep to its noise", first.circuit)
+		switch {
+		case err != nil:
+		case winner != nil && !solution.Status.Converged():
+			r := evaluate(problems[i], problems[i].settings, solution.X, solution)
+			r.Reason = solution.Reason()
+			r.givenUp = solution
+			outcomes[i] = &outcome{result: r, reason: fmt.Sprintf("not followed to its end, as %s describes the sweep to its noise", first.circuit)}
+		default:
+			outcomes[i], err = problems[i].outcome(solution)
 		}
 		return err
 	}

@@ -23,8 +23,8 @@ const (
 	determinedExponent = 0.2
 )
 
-// evaluate makes a result of a solution: uncertainties and residuals, but not
-// their structure.
+// evaluate makes a result of a solution, but for its uncertainties and the
+// structure of its residuals.
 func evaluate(p *problem, s *Settings, x []float64, solution *lm.Result) *Result {
 	n := len(p.freq)
 	r := &Result{
@@ -65,9 +65,6 @@ func evaluate(p *problem, s *Settings, x []float64, solution *lm.Result) *Result
 		if solution.AtBound != nil {
 			r.Parameters[i].AtBound = solution.AtBound[k]
 		}
-	}
-	if len(p.free) > 0 {
-		r.uncertainty(s, solution)
 	}
 	return r
 }

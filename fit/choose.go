@@ -21,7 +21,10 @@ type Candidate struct {
 	// Name is that of the library; "" for a user's own expression.
 	Name    string
 	Circuit *models.Circuit
-	Result  *Result // nil if the fit was not possible; Lag1 and Structured are the chosen one's alone
+	// Result is nil if the fit was not possible. Lag1 and Structured are the
+	// chosen one's alone. The results of one analysis share the sweep: they are
+	// not for use by several goroutines at once.
+	Result *Result
 	// AICc is Akaike's information criterion with the correction for small
 	// samples (Hurvich and Tsai 1989); smaller is better. NaN without a
 	// result.
@@ -158,7 +161,9 @@ func (a *Analysis) advise(parameter string) error {
 // fitAll fits the circuits. It fails only if none could be fitted.
 func (a *Analysis) fitAll(freq []float64, z []complex128, tried []models.Model, settings *Settings) error {
 	s := settings.resolve()
-	if s.Weight == Relative && !s.Robust && len(s.Start) == 0 && len(tried) > 1 {
+	// With a stated accuracy any circuit inside it may be chosen, however far
+	// behind the best it is: none may be fitted in brief.
+	if s.Weight == Relative && !s.Robust && len(s.Start) == 0 && s.Accuracy == nil && len(tried) > 1 {
 		return a.fitAllBy(race, freq, z, tried, s)
 	}
 	return a.fitAllBy(each, freq, z, tried, s)

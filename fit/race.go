@@ -2,6 +2,7 @@ package fit
 
 import (
 	"fmt"
+	"slices"
 
 	"realpart/fit/lm"
 )
@@ -161,7 +162,28 @@ func race(problems []*problem) ([]*outcome, error) {
 			return nil, err
 		}
 	}
+	for i, o := range outcomes {
+		if o != nil && o.result.givenUp != nil {
+			o.noWorseThan(outcomes[:i])
+		}
+	}
 	return outcomes, nil
+}
+
+// noWorseThan gives a circuit that was given up the cost of one that it
+// contains where that is lower: it could have reached it with what it has
+// besides vanished. The choice of a lot adds such numbers up.
+func (o *outcome) noWorseThan(simpler []*outcome) {
+	r := o.result
+	for _, other := range simpler {
+		if other == nil || !(other.result.Cost < r.Cost) || slices.ContainsFunc(other.result.Parameters, func(p Parameter) bool {
+			_, ok := r.Circuit.Index(p.Name)
+			return !ok
+		}) {
+			continue
+		}
+		r.Cost, r.RMSRelative = other.result.Cost, other.result.RMSRelative
+	}
 }
 
 // runner is a search that takes part in a race.
@@ -283,7 +305,7 @@ func (r *runner) polish(winner *lm.Result) (*lm.Result, error) {
 		brief.MaxIterations = 2
 	}
 	solution, err := p.minimise(best.x, &brief)
-	if err != nil || solution.Status.Converged() || !(solution.Cost < worthwhileGain*winner.Cost) {
+	if err != nil || solution.Status.Converged() || !(solution.Cost < (1-2/float64(len(p.freq)))*winner.Cost) {
 		return solution, err
 	}
 	return p.minimise(solution.X, &settings)
@@ -291,9 +313,8 @@ func (r *runner) polish(winner *lm.Result) (*lm.Result, error) {
 
 // In a race that has a winner, a solve on the thinned sweep is bounded by
 // briefSteps, one on the whole sweep by fewSteps unless it lowers the cost below
-// this share of the winner's.
+// the winner's by so much that AICc falls by 4.
 const (
-	briefSteps     = 12
-	fewSteps       = 4
-	worthwhileGain = 0.99
+	briefSteps = 12
+	fewSteps   = 4
 )

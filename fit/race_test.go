@@ -81,3 +81,46 @@ func TestRaceMissesNothing(t *testing.T) {
 		t.Errorf("in %d of %d cases the race chose a circuit that is worse", missed, cases)
 	}
 }
+
+// With a stated accuracy a circuit far behind the best may be chosen: its values
+// are those of a fit that asks for it.
+func TestChoiceInsideAccuracyIsFitted(t *testing.T) {
+	p := simulatePart(rand.New(rand.NewPCG(0, 41)), "ind-core", 101, 1e-4)
+	s := &Settings{Accuracy: func(_, _ float64) (float64, float64, bool) { return 0.2, 0.2, true }}
+	a, err := Analyse(p.freq, p.z, Request{Settings: s})
+	if err != nil {
+		t.Fatal(err)
+	}
+	b, err := Fit(p.freq, p.z, a.Result.Circuit, s)
+	if err != nil {
+		t.Fatal(err)
+	}
+	for i, q := range a.Result.Parameters {
+		if want := b.Parameters[i].Value; !(math.Abs(q.Value/want-1) <= 1e-4) {
+			t.Errorf("%s = %v, a fit of %s gives %v", q.Name, q.Value, b.Circuit, want)
+		}
+	}
+}
+
+// A circuit that contains another is never told to be clearly worse.
+func TestRaceKeepsNestedOrder(t *testing.T) {
+	p := simulatePart(rand.New(rand.NewPCG(0, 1234)), "cap-ideal", 51, 3e-3)
+	a, err := Analyse(p.freq, p.z, Request{Kind: models.CapacitorPart})
+	if err != nil {
+		t.Fatal(err)
+	}
+	for _, c := range a.Candidates[1:] {
+		if d := c.AICc - a.Candidates[0].AICc; !(d <= 15) { // 2 a parameter, and the correction
+			t.Errorf("%s: AICc %+.1f against %s, which it contains", c.Name, d, a.Candidates[0].Name)
+		}
+	}
+}
+
+// A column without effect at the start of a sweep is no reason to stop.
+func TestConfusionOverTheWholeSweep(t *testing.T) {
+	p := simulatePart(rand.New(rand.NewPCG(2, 1)), "bead", 101, 1e-3)
+	m, _ := models.Lookup("bead-two")
+	if _, err := Analyse(p.freq, p.z, Request{Circuit: m.Circuit, Name: m.Name}); err != nil {
+		t.Fatal(err)
+	}
+}

@@ -146,7 +146,7 @@ func (r *Result) confusedWith(column int) (name, where string) {
 	}
 	const few = 4
 	switch {
-	case below == n:
+	case below == n || above == 0:
 		where = "anywhere in this sweep"
 	case below >= n-above && below > few:
 		where = "below " + quantity.Format(r.Freq[below], "Hz", 2)

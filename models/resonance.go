@@ -36,7 +36,8 @@ type Resonance struct {
 // interval is halved, at most maxHalvings times, while Z turns or changes by
 // more than steepestTurn in it.
 const (
-	pointsPerDecade = 20
+	pointsPerDecade = 60
+	fewPerDecade    = 20 // enough for one inductance, with which there are few resonances
 	steepestTurn    = 0.3
 	maxHalvings     = 48
 )
@@ -236,14 +237,18 @@ func mayTouch(a, b point) bool {
 
 // resonanceGrid returns rising frequencies from `from` to `to`.
 func (c *Circuit) resonanceGrid(values []float64, from, to float64) []float64 {
-	n := max(2, int(math.Ceil(pointsPerDecade*math.Log10(to/from)))+1)
+	inductances := reactiveSums(c, values, "H")
+	density := float64(pointsPerDecade)
+	if len(inductances) < 2 {
+		density = fewPerDecade
+	}
+	n := max(2, int(math.Ceil(density*math.Log10(to/from)))+1)
 	grid := make([]float64, 0, n)
 	step := math.Pow(to/from, 1/float64(n-1))
 	for f := from; len(grid) < n-1; f *= step {
 		grid = append(grid, f)
 	}
 	grid = append(grid, to)
-	inductances := reactiveSums(c, values, "H")
 	capacitances := reactiveSums(c, values, "F")
 	for _, l := range inductances {
 		for _, cap := range capacitances {

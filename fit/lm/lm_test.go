@@ -889,3 +889,12 @@ func TestCovariance(t *testing.T) {
 		}
 	}
 }
+
+// TestNormalFromZero: the first radius is ‖r‖ with Normal, too.
+func TestNormalFromZero(t *testing.T) {
+	p := linear(mat.NewDense(4, 2, []float64{1, 0, 0, 1, 1, 1, 1, -1}), []float64{1, 2, 3, -1})
+	want := solve(t, p, []float64{0, 0}, nil)
+	p.Normal = normalOf(p, 2)
+	got := solve(t, p, []float64{0, 0}, nil)
+	checkClose(t, "x", got.X, want.X, 1e-9)
+}

@@ -50,8 +50,8 @@ type Problem struct {
 type Result struct {
 	X         []float64  // the best point, n
 	Cost      float64    // ½‖r(X)‖²
-	Residuals []float64  // r(X), m; nil for a problem with Normal
-	Jacobian  *mat.Dense // J(X), m×n; nil for a problem with Normal
+	Residuals []float64  // r(X), m; nil where Normal is not
+	Jacobian  *mat.Dense // J(X), m×n; nil where Normal is not
 	Gradient  []float64  // Jᵀr at X, n
 	// Normal is JᵀJ at X by rows, n×n, for a problem with Normal, else nil. If the solve ended with CostConvergence it and
 	// the Gradient are those of the point before the last step.
@@ -289,7 +289,7 @@ func (s *state) firstRadius() float64 {
 		length = math.Hypot(length, s.scale[k]*x)
 	}
 	if length == 0 {
-		return norm(s.r)
+		return math.Sqrt(2 * s.cost) // ‖r‖
 	}
 	return length
 }

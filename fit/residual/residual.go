@@ -84,17 +84,17 @@ func Runs(r []float64) (z, p float64) {
 // MAD returns 1.4826 times the median absolute deviation from the median: the standard deviation of normal data, estimated so
 // that up to half of the values may be wild. It returns NaN for no values. r is not changed.
 func MAD(r []float64) float64 {
-	m := Median(slices.Clone(r))
+	m := median(slices.Clone(r))
 	d := make([]float64, len(r))
 	for i, v := range r {
 		d[i] = math.Abs(v - m)
 	}
 	// 1.4826 = 1/Φ⁻¹(3/4).
-	return 1.482602218505602 * Median(d)
+	return 1.482602218505602 * median(d)
 }
 
-// Median returns the middle of r, which it reorders; NaN for no values.
-func Median(r []float64) float64 {
+// median returns the middle of r, which it reorders; NaN for no values.
+func median(r []float64) float64 {
 	if len(r) == 0 || slices.ContainsFunc(r, math.IsNaN) {
 		return math.NaN()
 	}

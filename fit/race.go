@@ -26,42 +26,34 @@ func (p *problem) outcome(solution *lm.Result) (*outcome, error) {
 	return o, nil
 }
 
-// each fits several circuits to one sweep, each on its own. A nil problem has a
-// nil outcome.
+// each fits several circuits to one sweep, each on its own. A nil problem, and
+// one without a solution, has a nil outcome.
 func each(problems []*problem) ([]*outcome, error) {
+	return oneByOne(problems, (*problem).solve)
+}
+
+// glance is each with little effort: to see whether a circuit describes the
+// sweep much better than what there is.
+func glance(problems []*problem) ([]*outcome, error) {
+	return oneByOne(problems, func(p *problem) (*lm.Result, error) {
+		const rounds, repeats = 2, 2
+		q := p.newSearch()
+		q.run(true, rounds, repeats)
+		if len(q.best) == 0 {
+			return nil, nil
+		}
+		return p.polish(q.best[0].x, q.solver.Lower, q.solver.Upper, p.settings.Robust)
+	})
+}
+
+func oneByOne(problems []*problem, solve func(p *problem) (*lm.Result, error)) ([]*outcome, error) {
 	outcomes := make([]*outcome, len(problems))
 	for i, p := range problems {
 		if p == nil {
 			continue
 		}
-		solution, err := p.solve()
-		if err == nil {
-			outcomes[i], err = p.outcome(solution)
-		}
-		if err != nil {
-			return nil, err
-		}
-	}
-	return outcomes, nil
-}
-
-// glance fits several circuits to one sweep with little effort: to see whether
-// one describes it much better than what there is. A nil problem has a nil
-// outcome.
-func glance(problems []*problem) ([]*outcome, error) {
-	outcomes := make([]*outcome, len(problems))
-	for i, p := range problems {
-		if p == nil || len(p.free) == 0 {
-			continue
-		}
-		const rounds, repeats = 2, 2
-		q := p.newSearch()
-		q.run(true, rounds, repeats)
-		if len(q.best) == 0 {
-			continue
-		}
-		solution, err := p.polish(q.best[0].x, q.solver.Lower, q.solver.Upper, p.settings.Robust)
-		if err == nil {
+		solution, err := solve(p)
+		if err == nil && solution != nil {
 			outcomes[i], err = p.outcome(solution)
 		}
 		if err != nil {
@@ -212,9 +204,9 @@ func leader(simpler []*runner) *runner {
 // from makes an attempt from the best minimum of a simpler circuit: with its
 // values of the parameters that this one has, too, and draws of the others.
 // Where the simpler circuit describes the sweep to its noise, the elements that
-// this circuit has besides can only be small; how small, the nearest of the
-// draws tells. It reports whether all of the simpler one's parameters are among
-// this one's.
+// this circuit has besides can only be small: they are drawn somewhat small and
+// come down from there, since from far below they hardly move. It reports
+// whether all of the simpler one's parameters are among this one's.
 func (r *runner) from(simpler *runner) bool {
 	if simpler == nil || len(simpler.best) == 0 || len(simpler.whole.parameters) >= len(r.whole.parameters) && !simpler.atNoise {
 		return false

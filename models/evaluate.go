@@ -321,12 +321,8 @@ func (p Parameter) CheckValue(v float64) error {
 // with w = 1 for L and C, also of the RC line, ½ for K, n for Q, n for the C
 // of a loss capacitor, and 0 for R.
 func (c *Circuit) FrequencyDerivative(derivatives []complex128, values []float64) complex128 {
-	return weighted(derivatives, c.frequencyWeights(values))
-}
-
-func weighted(derivatives []complex128, weights []float64) complex128 {
 	var re, im float64
-	for k, w := range weights {
+	for k, w := range c.frequencyWeights(values) {
 		if w != 0 {
 			re += w * real(derivatives[k])
 			im += w * imag(derivatives[k])
